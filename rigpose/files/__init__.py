@@ -1,0 +1,1 @@
+"""Rig files, shot files and CSV: everything that crosses the door of the program."""

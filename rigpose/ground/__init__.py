@@ -1,0 +1,1 @@
+"""Errors, tolerances, budgets and the words for results: what every layer above stands on."""

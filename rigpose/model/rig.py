@@ -1,0 +1,181 @@
+"""The rig as plain, immutable data: what a rig file says once copies and sizes are expanded.
+
+Knows nothing of solving. Lengths are in the rig's own unit, angles in degrees,
+counter-clockwise positive. Joints are named by strings here; `lower` makes arrays of them.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from functools import cached_property
+from hashlib import sha256
+from typing import Literal
+
+Pair = tuple[str, str]
+Span = tuple[float, float]
+Coordinates = tuple[float, ...]
+
+METRES = {"m": 1.0, "cm": 0.01, "mm": 0.001, "in": 0.0254, "ft": 0.3048}
+"""One unit in metres; inch and foot are the international ones (exact since 1959)."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Part:
+    """What every part has. ``layer``, ``skin`` and ``note`` are carried along untouched."""
+
+    name: str
+    note: str = ""
+    layer: float = 0.0
+    skin: str = ""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Joint(Part):
+    """A point; ``at`` is its place at rest as written, None where the file gives none."""
+
+    at: Coordinates | None = None
+    pin: bool = False
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Bone(Part):
+    """A rigid length between two joints; ``play`` is slack for this bone, in the rig's unit."""
+
+    ends: Pair
+    length: float
+    play: float = 0.0
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Plate(Part):
+    """A rigid body; ``shape`` holds its joints' places in a frame of its own, handed."""
+
+    joints: tuple[str, ...]
+    shape: tuple[Coordinates, ...]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Rail(Part):
+    """A straight line on which ``joint`` slides, on the ground or along two joints.
+
+    On the ground ``through`` and ``direction`` (unit length) are set; ``along`` is set for a
+    moving slot. Its value is the way from ``through``, or from the first joint of ``along``.
+    """
+
+    joint: str
+    through: Coordinates | None = None
+    direction: Coordinates | None = None
+    along: Pair | None = None
+    range: Span | None = None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Ram(Part):
+    """A bone whose length is driven, or free between the two ends of ``range``."""
+
+    ends: Pair
+    range: Span | None = None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Crank(Part):
+    """An angle that may be driven: from ``base`` (None: the ground's x axis) to ``line``.
+
+    Both are directed pairs of joints. ``turns`` and ``about`` are kept for people. The value is
+    the counter-clockwise angle in degrees minus ``zero``; "rest" counts from the rest pose.
+    """
+
+    turns: str
+    line: Pair
+    base: Pair | None = None
+    about: str | None = None
+    zero: float | Literal["rest"] = 0.0
+    range: Span | None = None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Limit(Part):
+    """Allowed counter-clockwise turn from the first line to the second, in degrees.
+
+    Lines are directed pairs, both seen from ``at`` outwards; ``either`` makes it unsigned.
+    """
+
+    first: Pair
+    second: Pair
+    at: str
+    range: Span
+    either: bool = False
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Tie(Part):
+    """A linear condition on drive values: sum of factor times value equals ``equals``."""
+
+    sum: tuple[tuple[str, float], ...]
+    equals: float = 0.0
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Frozen(Part):
+    """A rigid group of bones that keeps the shape that ``at`` shows, never its mirror image."""
+
+    bones: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Stand:
+    """Where a plane rig stands in the scene: an origin and two unit vectors at a right angle."""
+
+    origin: tuple[float, float, float] = (0.0, 0.0, 0.0)
+    x: tuple[float, float, float] = (1.0, 0.0, 0.0)
+    y: tuple[float, float, float] = (0.0, 1.0, 0.0)
+
+
+@dataclass(frozen=True)
+class Rig:
+    """A whole rig. Build it with `load_rig` or `make_rig`; both check everything."""
+
+    name: str
+    dim: int
+    joints: tuple[Joint, ...]
+    bones: tuple[Bone, ...] = ()
+    plates: tuple[Plate, ...] = ()
+    rails: tuple[Rail, ...] = ()
+    rams: tuple[Ram, ...] = ()
+    cranks: tuple[Crank, ...] = ()
+    limits: tuple[Limit, ...] = ()
+    ties: tuple[Tie, ...] = ()
+    frozen: tuple[Frozen, ...] = ()
+    branches: Mapping[str, Mapping[str, str]] = field(default_factory=dict)
+    names: Mapping[str, str] = field(default_factory=dict)
+    unit: str = "m"
+    slack: float = 1e-6
+    close: float = 1e-6
+    plane: Stand = field(default_factory=Stand)
+    up: str = "y"
+    note: str = ""
+    source: str = ""
+    studio: Mapping[str, object] = field(default_factory=dict)
+
+    @cached_property
+    def joint_names(self) -> tuple[str, ...]:
+        """The joints' names in the file's order."""
+        return tuple(j.name for j in self.joints)
+
+    @cached_property
+    def index(self) -> Mapping[str, int]:
+        """Joint name to its place in the order."""
+        return {name: k for k, name in enumerate(self.joint_names)}
+
+    @cached_property
+    def drive_names(self) -> tuple[str, ...]:
+        """Cranks, then rams, then rails: whatever may be driven, or read off as a gauge."""
+        return tuple(p.name for p in (*self.cranks, *self.rams, *self.rails))
+
+    @cached_property
+    def fingerprint(self) -> str:
+        """A hash of everything that decides poses; names of people's notes don't count."""
+        parts = (self.dim, self.joints, self.bones, self.plates, self.rails, self.rams,
+                 self.cranks, self.limits, self.ties, self.frozen, self.unit)
+        return sha256(repr(parts).encode()).hexdigest()[:16]

@@ -1,0 +1,1 @@
+"""Shots: channels over frames, rows of poses, baking and its events."""

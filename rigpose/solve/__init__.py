@@ -1,0 +1,1 @@
+"""Rest pose, freedoms, the plan, and the search for every branch."""
