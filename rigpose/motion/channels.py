@@ -99,7 +99,7 @@ def _told(shot: Shot) -> Iterator[tuple[tuple[str, str, int], float, float, int]
 
 def _ease_along(stops: Stops, at: Floats) -> Floats:
     """One channel's values, (n_frames,)."""
-    when, value, ease = (np.array(column) for column in zip(*stops, strict=True))
+    when, value, ease = np.array(stops, dtype=np.float64).T
     before = np.clip(np.searchsorted(when, at, side="right") - 1, 0, len(when) - 1)
     after = np.minimum(before + 1, len(when) - 1)
     span = when[after] - when[before]
@@ -111,7 +111,8 @@ def _ease_along(stops: Stops, at: Floats) -> Floats:
     low, high = value[before], value[after]
     # The clip takes away the last rounding, so that no value passes its own keys.
     eased = low + (high - low) * share
-    return np.clip(eased, np.minimum(low, high), np.maximum(low, high)).astype(np.float64)
+    held: Floats = np.clip(eased, np.minimum(low, high), np.maximum(low, high))
+    return held
 
 
 def _sealed(values: Floats) -> Floats:
