@@ -25,9 +25,9 @@ class Part:
     """What every part has. ``layer``, ``skin`` and ``note`` are carried along untouched."""
 
     name: str
-    note: str = ""
-    layer: float = 0.0
-    skin: str = ""
+    note: str = field(default="", repr=False)
+    layer: float = field(default=0.0, repr=False)
+    skin: str = field(default="", repr=False)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -84,6 +84,7 @@ class Crank(Part):
 
     Both are directed pairs of joints. ``turns`` and ``about`` are kept for people. The value is
     the counter-clockwise angle in degrees minus ``zero``; "rest" counts from the rest pose.
+    ``base_part`` names the part that carries ``base``.
     """
 
     turns: str
@@ -92,6 +93,7 @@ class Crank(Part):
     about: str | None = None
     zero: float | Literal["rest"] = 0.0
     range: Span | None = None
+    base_part: str = field(default="ground", repr=False)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -99,6 +101,7 @@ class Limit(Part):
     """Allowed counter-clockwise turn from the first line to the second, in degrees.
 
     Lines are directed pairs, both seen from ``at`` outwards; ``either`` makes it unsigned.
+    ``first_part`` and ``second_part`` name the parts that carry the lines.
     """
 
     first: Pair
@@ -106,6 +109,8 @@ class Limit(Part):
     at: str
     range: Span
     either: bool = False
+    first_part: str = field(default="", repr=False)
+    second_part: str = field(default="", repr=False)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -158,6 +163,10 @@ class Rig:
     source: str = ""
     studio: Mapping[str, object] = field(default_factory=dict)
 
+    def __hash__(self) -> int:
+        # Cheap on purpose: caches ask for it often, and equality decides in the end.
+        return hash((self.name, self.source, len(self.joints), len(self.bones)))
+
     @cached_property
     def joint_names(self) -> tuple[str, ...]:
         """The joints' names in the file's order."""
@@ -175,7 +184,10 @@ class Rig:
 
     @cached_property
     def fingerprint(self) -> str:
-        """A hash of everything that decides poses; names of people's notes don't count."""
+        """A hash of everything that decides poses; notes, layers and skins don't count.
+
+        It stands on the parts' repr, from which what decides no pose is left out.
+        """
         parts = (self.dim, self.joints, self.bones, self.plates, self.rails, self.rams,
                  self.cranks, self.limits, self.ties, self.frozen, self.unit)
         return sha256(repr(parts).encode()).hexdigest()[:16]

@@ -1,0 +1,65 @@
+"""One part of a document into its typed description, with every fault of it noted."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from functools import cache
+from typing import TypeVar
+
+import msgspec
+
+from rigpose.model.names import KeyPath, shown
+from rigpose.model.notes import Notes
+
+SpecT = TypeVar("SpecT", bound=msgspec.Struct)
+
+
+def decode(notes: Notes, path: KeyPath, raw: object, spec: type[SpecT]) -> SpecT | None:
+    """The description of ``raw``, or None after noting all that is wrong with it."""
+    try:
+        return msgspec.convert(raw, spec)
+    except msgspec.ValidationError:
+        _explain(notes, path, raw, spec)
+        return None
+
+
+@cache
+def _fields(spec: type[msgspec.Struct]) -> Mapping[str, msgspec.structs.FieldInfo]:
+    return {f.encode_name: f for f in msgspec.structs.fields(spec)}
+
+
+@cache
+def _form(spec: type[msgspec.Struct]) -> str:
+    return (spec.__doc__ or "").split(";")[0].strip()
+
+
+@cache
+def _wanted(spec: type[msgspec.Struct], key: str) -> str:
+    """What a key must be, for people: the first part of its description in the schema."""
+    kind = _fields(spec)[key].type
+    texts = [m.description for m in getattr(kind, "__metadata__", ()) if m.description]
+    return str(texts[0]).split(";", maxsplit=1)[0].rstrip(".") if texts else "of another kind"
+
+
+def _explain(notes: Notes, path: KeyPath, raw: object, spec: type[msgspec.Struct]) -> None:
+    """msgspec stops at the first fault; go through the keys one by one and note each."""
+    if not isinstance(raw, dict):
+        notes.add(path, f"must be {_form(spec)}", shown(raw))
+        return
+    fields = _fields(spec)
+    for key in raw:
+        if key not in fields:
+            notes.unknown((*path, key), "key", key, fields)
+        elif not _fits(raw[key], fields[key].type):
+            notes.add((*path, key), f"must be {_wanted(spec, key)}", shown(raw[key]))
+    for key, field in fields.items():
+        if field.required and key not in raw:
+            notes.add(path, f"needs the key `{key}`", "", f"`{key}` is {_wanted(spec, key)}")
+
+
+def _fits(value: object, kind: object) -> bool:
+    try:
+        msgspec.convert(value, kind)
+    except msgspec.ValidationError:
+        return False
+    return True
