@@ -169,9 +169,9 @@ class _Parser:
             rule = f"arithmetic has at most {DEEPEST} brackets inside one another"
             raise _bad(rule, shown(self.text), "split it over several [sizes]")
         value = self.sum()
-        self.depth -= 1
         if not self.next_sign(")"):
             raise self.unexpected()
+        self.depth -= 1
         return value
 
     def unexpected(self) -> BadInput:
@@ -181,5 +181,6 @@ class _Parser:
             mend = "a sign + - * / is missing before it, or something else too many"
             return _bad(rule, shown(self.text), mend)
         rule = "the arithmetic ends too early"
-        mend = "close the bracket" if self.depth else "a number or size is missing at its end"
+        open_end = not self.tokens or self.tokens[-1].text in tuple("+-*/(")
+        mend = "a number or size is missing at its end" if open_end else "close the bracket"
         return _bad(rule, shown(self.text), mend)

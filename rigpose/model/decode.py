@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from functools import cache
-from typing import TypeVar
+from typing import TypeVar, get_args
 
 import msgspec
 
@@ -51,10 +51,22 @@ def _explain(notes: Notes, path: KeyPath, raw: object, spec: type[msgspec.Struct
         if key not in fields:
             notes.unknown((*path, key), "key", key, fields)
         elif not _fits(raw[key], fields[key].type):
-            notes.add((*path, key), f"must be {_wanted(spec, key)}", shown(raw[key]))
+            inner = _inner(fields[key].type)
+            if inner is not None and isinstance(raw[key], dict):
+                _explain(notes, (*path, key), raw[key], inner)
+            else:
+                form = _wanted(spec, key) if inner is None else _form(inner)
+                notes.add((*path, key), f"must be {form}", shown(raw[key]))
     for key, field in fields.items():
         if field.required and key not in raw:
             notes.add(path, f"needs the key `{key}`", "", f"`{key}` is {_wanted(spec, key)}")
+
+
+def _inner(kind: object) -> type[msgspec.Struct] | None:
+    """The struct inside an optional or annotated type, if there is one."""
+    if isinstance(kind, type):
+        return kind if issubclass(kind, msgspec.Struct) else None
+    return next((s for s in map(_inner, get_args(kind)) if s is not None), None)
 
 
 def _fits(value: object, kind: object) -> bool:

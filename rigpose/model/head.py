@@ -132,6 +132,6 @@ def unit_vector(bench: Bench, path: KeyPath, vector: Coordinates | None) -> Coor
     # Divided by the largest first: squares of very large or small numbers would run over.
     scaled = vector if 0.5 <= largest <= 1 else tuple(c / largest for c in vector)
     length = math.hypot(*scaled)
-    if abs(length - 1) <= 1e-15:
+    if abs(length - 1) <= 4e-15:
         return scaled
     return tuple(c / length for c in scaled)

@@ -1,0 +1,148 @@
+"""Which points and values a step reads and writes."""
+
+from __future__ import annotations
+
+from functools import singledispatch
+
+from rigpose.model.equations import Equations
+from rigpose.solve.plan import (
+    Aim,
+    Carry,
+    Check,
+    Circle,
+    Cluster,
+    Gauge,
+    Given,
+    Heading,
+    Line,
+    Meet,
+    Orient,
+    Point,
+    Seat,
+    Shift,
+    Slide,
+    Step,
+    Swing,
+    Tied,
+)
+
+Local = tuple[float, float] | Point
+
+
+def _points(*local: Local) -> set[Point]:
+    return {p for p in local if isinstance(p, int)}
+
+
+def _heading(heading: Heading | None) -> set[Point]:
+    return set(heading.base) if heading and heading.base else set()
+
+
+def _curve(curve: Circle | Line) -> set[Point]:
+    if isinstance(curve, Circle):
+        return {curve.centre, *(curve.radius.points or ())}
+    return set(curve.points) | _heading(curve.heading)
+
+
+@singledispatch
+def reads(step: Step) -> set[Point]:
+    """Points that a step reads."""
+    return set()
+
+
+@reads.register
+def _(step: Meet) -> set[Point]:
+    return _curve(step.first) | _curve(step.second)
+
+
+@reads.register
+def _(step: Carry) -> set[Point]:
+    return {*step.placed, *_points(*step.local, *step.base)}
+
+
+@reads.register
+def _(step: Aim) -> set[Point]:
+    return {step.pivot, *_heading(step.heading),
+            *_points(*step.local, step.pivot_local, *step.line)}
+
+
+@reads.register
+def _(step: Swing) -> set[Point]:
+    return {step.pivot, step.through, *_points(*step.local, step.pivot_local, *step.slot)}
+
+
+@reads.register
+def _(step: Slide) -> set[Point]:
+    return set(step.line)
+
+
+@reads.register
+def _(step: Seat) -> set[Point]:
+    return _points(*step.local)
+
+
+@reads.register
+def _(step: Shift) -> set[Point]:
+    return {step.point, step.minus, step.plus}
+
+
+@reads.register
+def _(step: Orient) -> set[Point]:
+    return {*_heading(step.heading), *_points(*step.local, *step.line)}
+
+
+@reads.register
+def _(step: Check) -> set[Point]:
+    return set(step.points)
+
+
+def writes(step: Step) -> tuple[Point, ...]:
+    """Points that a step writes."""
+    if isinstance(step, Cluster):
+        return step.joints
+    if isinstance(step, (Given, Meet, Slide, Shift)):
+        return (step.dst,)
+    if isinstance(step, (Carry, Aim, Swing, Seat, Orient)):
+        return step.dst
+    return ()
+
+
+def values_read(step: Step, eqs: Equations) -> set[int]:
+    """Value numbers that a step reads."""
+    found: set[int] = set()
+    if isinstance(step, Meet):
+        for curve in (step.first, step.second):
+            if isinstance(curve, Circle):
+                found.add(curve.radius.value)
+            else:
+                found.add(curve.value)
+                found.add(curve.heading.value if curve.heading else -1)
+    elif isinstance(step, (Aim, Orient)):
+        found.add(step.heading.value)
+    elif isinstance(step, Slide):
+        found.add(step.value)
+    elif isinstance(step, Tied):
+        found |= {int(v) for v in eqs.ties[step.tie].nonzero()[0]} - {step.value}
+    elif isinstance(step, Check):
+        found |= _check_values(step, eqs)
+    return found - {-1}
+
+
+def _check_values(step: Check, eqs: Equations) -> set[int]:
+    if step.kind == "distance":
+        return {int(eqs.distances.value[step.index])}
+    if step.kind in ("way", "angle"):
+        table = eqs.lines if step.kind == "way" else eqs.angles
+        return {int(table.value[step.index])}
+    if step.kind == "tie":
+        return {int(v) for v in eqs.ties[step.index].nonzero()[0]}
+    return set()
+
+
+def value_written(step: Step) -> int:
+    """The value number that a step settles, -1 for none."""
+    return step.value if isinstance(step, (Gauge, Tied)) else -1
+
+
+def has_choice(step: Step) -> bool:
+    """Whether a step has more than one way."""
+    return isinstance(step, Cluster) or (isinstance(step, (Meet, Swing)) and step.bit >= 0)

@@ -1,0 +1,240 @@
+"""A plan: the order in which joints are placed for one set of known names, without any number
+of a frame. Planning is in `planner`, running in `run`.
+
+Points are numbered: ground places of joints have the joints' own numbers, places in the frames
+of floating bodies and helper points follow. Every step names the points it reads and writes.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from functools import cached_property
+
+from rigpose.model.equations import Equations
+from rigpose.model.system import System
+
+Point = int
+
+
+@dataclass(frozen=True, slots=True)
+class Length:
+    """A length: a constant, the value of a ram, or the gap between two points of a frame."""
+
+    constant: float = 0.0
+    value: int = -1
+    points: tuple[Point, Point] | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Heading:
+    """A direction: ``sign * (value + zero)`` turned from the ground's x axis or from a line."""
+
+    value: int
+    zero: float
+    sign: float
+    base: tuple[Point, Point] | None
+
+
+@dataclass(frozen=True, slots=True)
+class Line:
+    """A straight line. One of: constant, through two points, one coordinate given as a target
+    (``axis`` of ``joint``), square to a rail at a driven way, or from a point with a heading."""
+
+    kind: str
+    through: tuple[float, ...] = ()
+    direction: tuple[float, ...] = ()
+    points: tuple[Point, ...] = ()
+    joint: int = -1
+    axis: int = -1
+    value: int = -1
+    heading: Heading | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Circle:
+    """All places at a given length from a placed point."""
+
+    centre: Point
+    radius: Length
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Step:
+    """What every step has: the parts of the file behind it, for messages."""
+
+    parts: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class Given(Step):
+    """A joint all of whose coordinates are targets."""
+
+    dst: Point
+    joint: int
+
+
+@dataclass(frozen=True, slots=True)
+class Meet(Step):
+    """A joint where two curves meet; ``bit`` is the number of its choice (-1: one way only)."""
+
+    dst: Point
+    first: Circle | Line
+    second: Circle | Line
+    bit: int = -1
+
+
+@dataclass(frozen=True, slots=True)
+class Carry(Step):
+    """Joints of a body that has two placed points; ``local`` are places or points of a frame."""
+
+    dst: tuple[Point, ...]
+    local: tuple[tuple[float, float] | Point, ...]
+    placed: tuple[Point, Point]
+    base: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
+
+
+@dataclass(frozen=True, slots=True)
+class Aim(Step):
+    """Joints of a body with one placed point and a line of known heading."""
+
+    dst: tuple[Point, ...]
+    local: tuple[tuple[float, float] | Point, ...]
+    pivot: Point
+    pivot_local: tuple[float, float] | Point
+    line: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
+    heading: Heading
+
+
+@dataclass(frozen=True, slots=True)
+class Swing(Step):
+    """Joints of a body with one placed point, turned until its slot passes a placed point."""
+
+    dst: tuple[Point, ...]
+    local: tuple[tuple[float, float] | Point, ...]
+    pivot: Point
+    pivot_local: tuple[float, float] | Point
+    slot: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
+    through: Point
+    bit: int
+
+
+@dataclass(frozen=True, slots=True)
+class Slide(Step):
+    """A joint at a driven way along a carried line."""
+
+    dst: Point
+    line: tuple[Point, Point]
+    value: int
+
+
+@dataclass(frozen=True, slots=True)
+class Seat(Step):
+    """Fixes the frame of a floating group: the joints of its first body at their own places."""
+
+    dst: tuple[Point, ...]
+    local: tuple[tuple[float, float] | Point, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Shift(Step):
+    """Helper point: a placed point moved by what a known heading makes of two local places."""
+
+    dst: Point
+    point: Point
+    minus: Point
+    plus: Point
+
+
+@dataclass(frozen=True, slots=True)
+class Orient(Step):
+    """Helper points: the places of a body turned to a known heading, about an origin of its own."""
+
+    dst: tuple[Point, ...]
+    local: tuple[tuple[float, float] | Point, ...]
+    line: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
+    heading: Heading
+
+
+@dataclass(frozen=True, slots=True)
+class Gauge(Step):
+    """Reads a value off placed joints, because a tie needs it."""
+
+    value: int
+
+
+@dataclass(frozen=True, slots=True)
+class Tied(Step):
+    """A value from a tie all of whose other values are known."""
+
+    value: int
+    tie: int
+
+
+@dataclass(frozen=True, slots=True)
+class Check(Step):
+    """A condition that the places already fix: prunes.
+
+    kind : distance, body, rail, way, angle, tie, target (equations, within slack), or ram, track,
+    fence, hand (inequalities). ``index`` is the row in the equations.
+    """
+
+    kind: str
+    index: int
+    points: tuple[Point, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Cluster(Step):
+    """Joints that only several equations together can place; solved by Newton from many starts.
+
+    ``rows`` are row numbers of ``system``, ``square`` an independent choice
+    of them, ``around`` the placed joints that they touch, ``bit`` its number among the choices.
+    """
+
+    system: System = field(compare=False)
+    joints: tuple[int, ...]
+    around: tuple[int, ...]
+    rows: tuple[int, ...]
+    square: tuple[int, ...]
+    bit: int
+
+
+@dataclass(frozen=True)
+class Group:
+    """Steps that share unknowns: their branches are listed by themselves."""
+
+    steps: tuple[Step, ...]
+    joints: tuple[int, ...]
+    bits: int
+    binary: bool
+
+
+@dataclass(frozen=True)
+class Plan:
+    """The order for one set of known names.
+
+    base : steps that depend on known things only; groups : independent of one another
+    loose : joints that still move; redundant : parts that only check
+    singular : parts of meetings that are dead centres at rest and close by
+    unreachable : targets along which their joint cannot move
+    """
+
+    eqs: Equations
+    drives: tuple[str, ...]
+    targets: tuple[tuple[int, int], ...]
+    base: tuple[Step, ...]
+    groups: tuple[Group, ...]
+    loose: tuple[int, ...]
+    redundant: tuple[str, ...]
+    points: int
+    notes: tuple[str, ...] = field(default=())
+
+    @cached_property
+    def bits(self) -> int:
+        """How many choices all groups have together."""
+        return sum(g.bits for g in self.groups)
+
+    @cached_property
+    def clusters(self) -> tuple[Cluster, ...]:
+        """Blocks of several joints."""
+        return tuple(s for g in self.groups for s in g.steps if isinstance(s, Cluster))

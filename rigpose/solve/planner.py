@@ -1,0 +1,319 @@
+"""Finds the order in which joints can be placed for one set of known names.
+
+Ground first, joint by joint; where that stops, floating parts that are rigid in themselves are
+condensed to one body; bodies of known heading are shifted onto their curves; what is left is
+split into the smallest blocks that must be solved together (Dulmage and Mendelsohn 1958;
+Ait-Aoudia, Jegou and Michelucci 1993) with independence measured at the rest pose and close by.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field, replace
+from functools import lru_cache
+from itertools import count
+
+import numpy as np
+
+from rigpose.model.equations import GROUND, Array, Equations
+from rigpose.model.rig import Rig
+from rigpose.model.system import System
+from rigpose.solve.blocks import smallest_block
+from rigpose.solve.checks import check_key, checks_for
+from rigpose.solve.flow import reads, writes
+from rigpose.solve.grouping import grouped
+from rigpose.solve.growth import Growth
+from rigpose.solve.net import Net, Solid
+from rigpose.solve.nearby import nearby
+from rigpose.solve.plan import (
+    Circle,
+    Cluster,
+    Gauge,
+    Heading,
+    Line,
+    Meet,
+    Orient,
+    Plan,
+    Shift,
+    Step,
+    Tied,
+)
+from rigpose.solve.rest import Rest, find_rest
+from rigpose.solve.values import joints_of_value
+
+
+@dataclass
+class Planner:
+    """State of one planning run."""
+
+    eqs: Equations
+    drives: frozenset[int]
+    targets: frozenset[tuple[int, int]]
+    poses: Array
+    points: count[int] = field(init=False)
+    net: Net = field(init=False)
+    ground: Growth = field(init=False)
+    settled_ties: set[int] = field(default_factory=set)
+
+    def __post_init__(self) -> None:
+        self.points = count(self.eqs.n)
+        self.net = Net(self.eqs)
+        self.ground = Growth(self.net, self.poses, set(self.drives), self.points.__next__,
+                             targets=self.targets)
+
+    def run(self) -> tuple[list[Step], tuple[int, ...]]:
+        """Steps in order and the joints that stay loose."""
+        ground = self.ground
+        self._ties()
+        ground.begin_ground()
+        for k in range(len(self.eqs.angles.names)):
+            if int(self.eqs.angles.value[k]) in ground.known:
+                ground._push(0, k, "crank")
+        while True:
+            ground.run()
+            if self._ties() or self._condense() or self._orient() or self._cluster():
+                continue
+            break
+        loose = tuple(j for j in range(self.eqs.n) if j not in ground.place)
+        return ground.steps, loose
+
+    # -- ties -----------------------------------------------------------------------------------
+
+    def _ties(self) -> bool:
+        """Values that a tie settles because all its others are known or can be read off."""
+        moved = False
+        again = True
+        while again:
+            again = False
+            for t, row in enumerate(self.eqs.ties):
+                if t in self.settled_ties:
+                    continue
+                values = [int(v) for v in np.flatnonzero(row)]
+                open_ones = [v for v in values if v not in self.ground.known]
+                readable = [v for v in open_ones if self._readable(v)]
+                if len(open_ones) - len(readable) == 1:
+                    last = next(v for v in open_ones if v not in readable)
+                    self._settle(t, readable, last)
+                    moved = again = True
+        return moved
+
+    def _settle(self, t: int, readable: list[int], last: int) -> None:
+        name = self.eqs.tie_names[t]
+        for v in readable:
+            self.ground.steps.append(Gauge(value=v, parts=(self.eqs.values[v],)))
+        self.ground.steps.append(Tied(value=last, tie=t, parts=(name,)))
+        self.settled_ties.add(t)
+        self.ground.learn(last)
+
+    def _readable(self, value: int) -> bool:
+        return all(j in self.ground.place for j in joints_of_value(self.eqs, value))
+
+    # -- floating bodies --------------------------------------------------------------------------
+
+    def _condense(self) -> bool:
+        """Merge floating parts that place each other into bodies; True if any was made."""
+        made = False
+        placed = self.ground.place
+        for number, solid in self._seeds():
+            if number is not None and not any(
+                number in self.net.solids_on[j] for j in solid.local
+            ):
+                continue
+            if number is None and solid.uses & self.net.absorbed:
+                continue
+            if sum(j in placed for j in solid.local) > 1:
+                continue
+            grown = self._grow_from(number, solid)
+            if grown is not None:
+                self.ground.adopt(self.net.merge(grown))
+                made = True
+        return made
+
+    def _seeds(self) -> list[tuple[int | None, Solid]]:
+        found: list[tuple[int | None, Solid]] = list(enumerate(self.net.solids))
+        d = self.eqs.distances
+        for k in range(len(d.names)):
+            a, b = map(int, d.ends[k])
+            if d.value[k] < 0 and not (a in self.ground.place and b in self.ground.place):
+                found.append((None, self.net.bone(k)))
+        return found
+
+    def _grow_from(self, number: int | None, solid: Solid) -> Solid | None:
+        # Rigid groups have at least one more joint that two parts of them hold; look for one
+        # candidate before growing, so that long chains stay cheap.
+        frame = Growth(self.net, self.poses, set(self.ground.known), self.points.__next__,
+                       ground=False)
+        frame.seat(number, solid)
+        frame.run()
+        if len(frame.place) == len(solid.local):
+            return None
+        uses = set(frame.used)
+        for n in frame.held:
+            inside = self.net.solids[n].local
+            if all(j in frame.place for j in inside):
+                uses.add(("solid", n))
+                uses |= self.net.solids[n].uses
+        checks = tuple(checks_for(self.eqs, self.net, frame, frozenset(uses)))
+        uses |= {check_key(self.eqs, c) for c in checks}
+        return Solid(solid.name, dict(frame.place), frozenset(uses), (*frame.steps, *checks))
+
+    # -- bodies of known heading ------------------------------------------------------------------
+
+    def _orient(self) -> bool:
+        """A body without a placed joint whose heading is known: its curves act on one joint."""
+        angles, ground = self.eqs.angles, self.ground
+        for k in range(len(angles.names)):
+            value = int(angles.value[k])
+            if value not in ground.known or ("value", value) in ground.used:
+                continue
+            for back in (False, True):
+                a, b = map(int, angles.base[k] if back else angles.line[k])
+                heading = ground._heading(k, back) if a != GROUND else None
+                carrier = ground._carrier(a, b, placed=0) if heading else None
+                if heading and carrier and self._shift(k, carrier, heading, (a, b)):
+                    return True
+        return False
+
+    def _shift(self, k: int, carrier: tuple[int | None, Solid], heading: Heading,
+               pair: tuple[int, int]) -> bool:
+        number, solid = carrier
+        ground = self.ground
+        loci = [(j, locus) for j in solid.local for locus in ground.loci[j]]
+        if len(loci) < 2:
+            return False
+        joints = list(solid.local)
+        helper = {j: next(self.points) for j in joints}
+        first = joints[0]
+        steps: list[Step] = [Orient(
+            dst=tuple(helper.values()), local=tuple(solid.local.values()),
+            line=(solid.local[pair[0]], solid.local[pair[1]]),
+            heading=heading, parts=(self.eqs.angles.names[k], solid.name))]
+        moved = []
+        for j, locus in loci:
+            curve = locus.curve
+            if isinstance(curve, Circle):
+                point = next(self.points)
+                steps.append(Shift(dst=point, point=curve.centre, minus=helper[j],
+                                   plus=helper[first], parts=(locus.part,)))
+                moved.append(replace(locus, curve=Circle(point, curve.radius)))
+            elif j == first:
+                moved.append(locus)
+            elif curve.kind == "fixed":
+                moved.append(replace(locus, curve=Line(
+                    "shifted", curve.through, curve.direction, points=(helper[j], helper[first]))))
+        pair_found = ground._best_pair(moved)
+        if pair_found is None:
+            return False
+        one, two = pair_found
+        curves = sorted((one.curve, two.curve), key=lambda c: isinstance(c, Circle))
+        bit = -1 if all(isinstance(c, Line) for c in curves) else 0
+        steps.append(Meet(dst=first, first=curves[0], second=curves[1], bit=bit,
+                          parts=(one.part, two.part)))
+        rest = [j for j in joints if j != first]
+        steps += [Shift(dst=j, point=first, minus=helper[first], plus=helper[j],
+                        parts=(solid.name,)) for j in rest]
+        ground.used |= {("value", int(self.eqs.angles.value[k])), one.uses, two.uses}
+        ground.used |= solid.uses if number is None else set()
+        ground.steps += steps
+        ground._hold(number, joints)
+        for j in joints:
+            ground.place[j] = j
+        for j in joints:
+            ground._arrived(j)
+        return True
+
+    # -- blocks -------------------------------------------------------------------------------------
+
+    def _cluster(self) -> bool:
+        """The smallest block of joints that the rows between them and placed joints fix."""
+        ground = self.ground
+        known = frozenset(ground.known)
+        system = System(self.eqs, known, tuple(sorted(self.targets)))
+        block = smallest_block(system, self.poses, frozenset(ground.place))
+        if block is None:
+            return False
+        names = tuple(dict.fromkeys(system.row_names[r] for r in block.square))
+        ground.steps.append(Cluster(system=system, joints=block.joints, rows=block.rows, square=block.square,
+                                    around=block.around, bit=0, parts=names))
+        for number, solid in enumerate(self.net.solids):
+            inside = [j for j in solid.local if j in block.joints or j in ground.place]
+            if any(j in block.joints for j in solid.local):
+                ground._hold(number, inside)
+        held = set(names)
+        for k, name in enumerate(self.eqs.distances.names):
+            if name in held and set(map(int, self.eqs.distances.ends[k])) & set(block.joints):
+                ground.used.add(("distance", k))
+        for k, name in enumerate(self.eqs.lines.names):
+            if name in held:
+                ground.used |= {("rail", k), ("value", int(self.eqs.lines.value[k]))}
+        for k, name in enumerate(self.eqs.angles.names):
+            if name in held:
+                ground.used.add(("value", int(self.eqs.angles.value[k])))
+        ground.used |= {("target", j * self.eqs.dim + a) for j, a in self.targets
+                        if j in block.joints}
+        for j in block.joints:
+            ground.place[j] = j
+        for j in block.joints:
+            ground._arrived(j)
+        return True
+
+
+def make_plan(
+    rest: Rest, drives: frozenset[int], targets: frozenset[tuple[int, int]]
+) -> Plan:
+    """Plan for value numbers and (joint, axis) pairs that will be known."""
+    eqs = rest.equations
+    poses = nearby(rest)
+    planner = Planner(eqs, drives, targets, poses)
+    steps, loose = planner.run()
+    ground = planner.ground
+    used = set(ground.used)
+    used |= {("tie", t) for t in planner.settled_ties}
+    for number, solid in enumerate(planner.net.solids):
+        if ground.held[number] >= set(solid.local):
+            used |= solid.uses
+            used.add(("solid", number))
+    steps = _with_solids(planner, steps)
+    checks = list(checks_for(eqs, planner.net, ground, frozenset(used)))
+    base, groups = grouped(eqs, steps, checks)
+    rigid = ("distance", "body", "rail", "way", "angle", "target", "tie")
+    redundant = tuple(dict.fromkeys(
+        c.parts[0] for c in checks if c.kind in rigid and c.parts))
+    return Plan(eqs=eqs, drives=tuple(eqs.values[v] for v in sorted(drives)),
+                targets=tuple(sorted(targets)), base=base, groups=groups, loose=loose,
+                redundant=redundant, points=next(planner.points))
+
+
+def _with_solids(planner: Planner, steps: list[Step]) -> list[Step]:
+    """Put the steps that make a group's own frame before the first step that uses it."""
+    makers = {p: solid for solid in planner.net.solids for s in solid.steps for p in writes(s)}
+    done: set[int] = set()
+    out: list[Step] = []
+
+    def need(step: Step) -> None:
+        for p in reads(step):
+            solid = makers.get(p)
+            if solid is not None and id(solid) not in done:
+                done.add(id(solid))
+                for inner in solid.steps:
+                    need(inner)
+                    out.append(inner)
+
+    for step in steps:
+        need(step)
+        out.append(step)
+    return out
+
+
+@lru_cache(maxsize=256)
+def plan_for(
+    rig: Rig, drives: frozenset[str], targets: frozenset[tuple[str, int]]
+) -> Plan:
+    """The cached plan for drive names and (joint name, axis) pairs."""
+    rest = find_rest(rig)
+    eqs = rest.equations
+    return make_plan(
+        rest,
+        frozenset(eqs.value_index[d] for d in drives),
+        frozenset((rig.index[j], axis) for j, axis in targets),
+    )
+

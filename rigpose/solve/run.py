@@ -1,0 +1,377 @@
+"""Runs the steps of a plan on arrays over branches and frames.
+
+Each step is a function of the table; a step with two ways either doubles the branches (dead ones
+are dropped at once) or takes the way that ``ways`` names for each branch and frame.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from functools import singledispatch
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rigpose.kernels.meet import Array, circle_circle, cross, dot, line_circle, line_line, perp, turn
+from rigpose.model.gauges import measure
+from rigpose.solve.measure import check_passes
+from rigpose.solve.newton import cluster_branches, cluster_follow
+from rigpose.solve.plan import (
+    Aim,
+    Carry,
+    Check,
+    Circle,
+    Cluster,
+    Gauge,
+    Given,
+    Heading,
+    Length,
+    Line,
+    Meet,
+    Orient,
+    Point,
+    Seat,
+    Shift,
+    Slide,
+    Step,
+    Swing,
+    Tied,
+)
+from rigpose.solve.table import Table
+
+Ways = Mapping[int, Array] | None
+"""For every choice ``(B or 1, F or 1)`` of +1 and -1; None tries both."""
+CAREFUL = 1e-7
+
+
+def run_steps(steps: Sequence[Step], table: Table, ways: Ways) -> None:
+    """Run steps in order; the table holds the result."""
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+        for number, step in enumerate(steps):
+            execute(step, table, ways, number)
+            if table.branches == 0:
+                return
+
+
+@singledispatch
+def execute(step: Step, table: Table, ways: Ways, number: int) -> None:
+    """Run one step."""
+    raise TypeError(f"no way to run {type(step).__name__}")
+
+
+def _local(table: Table, local: tuple[float, float] | Point) -> Array:
+    if isinstance(local, tuple):
+        return np.array(local).reshape(2, 1, 1)
+    return table.point(local)
+
+
+def _length(table: Table, length: Length) -> Array | float:
+    if length.points is not None:
+        d = table.point(length.points[1]) - table.point(length.points[0])
+        return np.sqrt(dot(d, d))
+    if length.value >= 0:
+        return table.value(length.value)
+    return length.constant
+
+
+def _heading(table: Table, heading: Heading) -> Array:
+    """Unit vectors ``(2, B, F)``."""
+    angle = heading.sign * (table.value(heading.value) + heading.zero)
+    u = np.stack([np.cos(angle), np.sin(angle)])
+    if heading.base is None:
+        return u
+    e = table.point(heading.base[1]) - table.point(heading.base[0])
+    e = e / np.sqrt(dot(e, e))
+    return np.stack(np.broadcast_arrays(
+        u[0] * e[0] - u[1] * e[1], u[0] * e[1] + u[1] * e[0]))
+
+
+def _line(table: Table, line: Line) -> tuple[Array, Array]:
+    """A point and a unit direction."""
+    if line.kind == "points":
+        p, q = (table.point(k) for k in line.points)
+        e = q - p
+        return p, e / np.sqrt(dot(e, e))
+    if line.kind == "axis":
+        given = table.inputs.targets[line.joint, line.axis][None]
+        p = np.zeros((2, *given.shape))
+        p[line.axis] = given
+        return p, np.array([1.0 - (line.axis == 0), float(line.axis == 0)]).reshape(2, 1, 1)
+    if line.kind == "ray":
+        return table.point(line.points[0]), _heading(table, line.heading)  # type: ignore[arg-type]
+    p = np.array(line.through).reshape(2, 1, 1)
+    d = np.array(line.direction).reshape(2, 1, 1)
+    if line.kind == "across":
+        return p + d * table.value(line.value), perp(d)
+    if line.kind == "shifted":
+        return p + table.point(line.points[1]) - table.point(line.points[0]), d
+    return p, d
+
+
+@execute.register
+def _(step: Given, table: Table, ways: Ways, number: int) -> None:
+    table.put(step.dst, np.stack(
+        [table.inputs.targets[step.joint, axis][None] for axis in range(2)]))
+
+
+@execute.register
+def _(step: Meet, table: Table, ways: Ways, number: int) -> None:
+    first, second = step.first, step.second
+    if isinstance(first, Circle) and isinstance(second, Circle):
+        r1, r2 = _length(table, first.radius), _length(table, second.radius)
+        c1, c2 = table.point(first.centre), table.point(second.centre)
+        crossing = circle_circle(c1, r1, c2, r2)
+        choose(step.dst, step.bit, crossing, table, ways, number,
+               (first.centre, second.centre), lambda: _circle_rate(c1, r1, c2, r2))
+    elif isinstance(first, Line) and isinstance(second, Circle):
+        p, d = _line(table, first)
+        radius, centre = _length(table, second.radius), table.point(second.centre)
+        crossing = line_circle(p, d, centre, radius)
+        choose(step.dst, step.bit, crossing, table, ways, number,
+               (second.centre, *first.points), lambda: (2.0 / radius, radius))
+    elif isinstance(first, Line) and isinstance(second, Line):
+        point, sine = line_line(*_line(table, first), *_line(table, second))
+        bound = _parents(table, (*first.points, *second.points)) / sine if table.careful else 0.0
+        table.put(step.dst, point, bound)
+        table.kill(np.isfinite(point[0]), number)
+        table.narrow(sine)
+
+
+def _circle_rate(
+    c1: Array, r1: Array | float, c2: Array, r2: Array | float
+) -> tuple[Array | float, Array | float]:
+    """How fast the squared sine and the squared height change with the centres' places."""
+    d = c2 - c1
+    return 2 * np.sqrt(dot(d, d)) / (r1 * r2), np.minimum(r1, r2)
+
+
+def _parents(table: Table, points: Sequence[Point]) -> Array | float:
+    total: Array | float = table.rounding
+    for p in points:
+        total = total + table.bound(p)
+    return total
+
+
+def choose(  # noqa: PLR0917
+    dst: Point, bit: int, crossing: tuple[Array, Array, Array, Array], table: Table, ways: Ways,
+    number: int, parents: Sequence[Point], rate: object,
+) -> None:
+    """Take one way or both at a crossing; touching ones within their error bound hold both."""
+    base, side, sine2, sine = crossing
+    bound: Array | float = 0.0
+    if table.careful:
+        per_place, radius = rate()  # type: ignore[operator]
+        delta = _parents(table, parents)
+        allowed = per_place * delta + 4 * table.rounding
+        touch = (sine2 < 0) & (sine2 >= -allowed)
+        if touch.any():
+            side = np.where(touch, 0.0, side)
+            sine = np.where(touch, 0.0, sine)
+            sine2 = np.where(touch, 0.0, sine2)
+        bound = np.minimum(delta / np.maximum(sine, 1e-300), np.sqrt(2 * radius * delta))
+        table.sine_bounds.append(np.broadcast_to(allowed, sine2.shape))
+    else:
+        near = np.abs(sine2) < CAREFUL
+        if near.any():
+            columns = near.any(axis=0)
+            table.flagged = columns if table.flagged is None else table.flagged | columns
+    if ways is not None:
+        place = base + side * ways[bit]
+        table.sines.append(sine2)
+        table.kill(sine2 >= 0, number)
+        table.narrow(sine)
+        table.put(dst, place, bound)
+        return
+    both(dst, base, side, sine2, sine, table, number, bound)
+
+
+def both(  # noqa: PLR0917
+    dst: Point, base: Array, side: Array, sine2: Array, sine: Array, table: Table, number: int,
+    bound: Array | float,
+) -> None:
+    """Double the branches."""
+    b = table.branches
+    shape = (2, b, base.shape[2])
+    place = np.empty((2, 2 * b, shape[2]))
+    np.add(base, side, out=place[:, :b])
+    np.subtract(base, side, out=place[:, b:])
+    table.sines.append(sine2)
+    table.kill(sine2 >= 0, number)
+    table.narrow(sine)
+    index = np.concatenate([np.arange(b), np.arange(b)])
+    sign = np.repeat(np.array([1, -1], dtype=np.int8), b)
+    alive = np.broadcast_to(table.alive, (b, table.inputs.frames)).any(axis=1)  # type: ignore[arg-type]
+    if not alive.all():
+        keep = np.flatnonzero(np.concatenate([alive, alive]))
+        index, sign, place = index[keep], sign[keep], place[:, keep]
+        if isinstance(bound, np.ndarray):
+            bound = np.broadcast_to(bound, (b, bound.shape[-1]))[index]
+    elif isinstance(bound, np.ndarray) and bound.shape[0] != 1:
+        bound = bound[index]
+    _widen(table, b)
+    table.renumber(index)
+    table.codes.append(sign)
+    table.put(dst, place, bound)
+
+
+def _widen(table: Table, b: int) -> None:
+    """Tables with a branch axis of one are spread where branches differ from now on."""
+    frames = table.inputs.frames
+    if table.alive is not None:
+        table.alive = np.broadcast_to(table.alive, (b, table.alive.shape[-1]))
+    if table.margin is not None:
+        table.margin = np.broadcast_to(table.margin, (b, table.margin.shape[-1]))
+    if table.killer is not None:
+        table.killer = np.broadcast_to(table.killer, (b, frames))
+    table.sines = [np.broadcast_to(s, (b, s.shape[-1])) for s in table.sines]
+    table.codes = [np.broadcast_to(c, (b,)) for c in table.codes]
+
+
+def _spin(step: Carry | Aim | Swing, table: Table, cos: Array, sin: Array, pivot: Array,
+          local: Array, bound: Array | float) -> None:
+    """Place all joints of a body turned by (cos, sin) about a placed point."""
+    for dst, place in zip(step.dst, step.local, strict=True):
+        w = _local(table, place) - local
+        out = np.empty((2, *np.broadcast_shapes(cos.shape, pivot.shape[1:], w.shape[1:])))
+        np.multiply(cos, w[0], out=out[0])
+        out[0] -= sin * w[1]
+        np.multiply(sin, w[0], out=out[1])
+        out[1] += cos * w[1]
+        out += pivot
+        table.put(dst, out, bound)
+
+
+@execute.register
+def _(step: Carry, table: Table, ways: Ways, number: int) -> None:
+    p, q = (table.point(k) for k in step.placed)
+    a, b = (_local(table, k) for k in step.base)
+    e, w = q - p, b - a
+    scale = 1.0 / dot(w, w)
+    # Turned by placed / local as complex numbers; the length of the base is a check elsewhere.
+    cos, sin = dot(w, e) * scale, cross(w, e) * scale
+    long = 1.0 / np.sqrt(cos * cos + sin * sin)
+    bound = _parents(table, step.placed) * 2.0 if table.careful else 0.0
+    _spin(step, table, cos * long, sin * long, p, a, bound)
+
+
+@execute.register
+def _(step: Aim, table: Table, ways: Ways, number: int) -> None:
+    u = _heading(table, step.heading)
+    a, b = (_local(table, k) for k in step.line)
+    e = b - a
+    e = e / np.sqrt(dot(e, e))
+    pivot = table.point(step.pivot)
+    bound = _parents(table, (step.pivot, *(step.heading.base or ()))) if table.careful else 0.0
+    _spin(step, table, dot(e, u), cross(e, u), pivot, _local(table, step.pivot_local), bound)
+
+
+@execute.register
+def _(step: Swing, table: Table, ways: Ways, number: int) -> None:
+    a, b = (_local(table, k) for k in step.slot)
+    pivot, c = table.point(step.pivot), _local(table, step.pivot_local)
+    e = b - a
+    normal = perp(e / np.sqrt(dot(e, e)))
+    w = table.point(step.through) - pivot
+    offset = dot(normal, a - c)
+    crossing = turn(dot(normal, w), cross(normal, w), offset)
+    long = np.sqrt(dot(w, w))
+    helper = -1 - number
+    choose(helper, step.bit, crossing, table, ways, number, (step.pivot, step.through),
+           lambda: (2.0 / long, 1.0))
+    heading = table.point(helper)
+    pivot, c = table.point(step.pivot), _local(table, step.pivot_local)
+    arms = [np.sqrt(dot(v, v)) for v in (_local(table, k) - c for k in step.local)]
+    reach = np.max(np.stack(np.broadcast_arrays(*arms)), axis=0)
+    w = table.point(step.through) - pivot
+    # The slot's offset turns the body by its change over the way along the slot.
+    along = np.sqrt(np.maximum(dot(w, w) - _slot_offset(table, step) ** 2, 0.0))
+    table.narrow(np.minimum(along / reach, 1.0))
+    _spin(step, table, heading[0], heading[1], pivot, c, table.bound(helper))
+
+
+def _slot_offset(table: Table, step: Swing) -> Array:
+    a, b = (_local(table, k) for k in step.slot)
+    e = b - a
+    return cross(e / np.sqrt(dot(e, e)), _local(table, step.pivot_local) - a)
+
+
+@execute.register
+def _(step: Slide, table: Table, ways: Ways, number: int) -> None:
+    p, q = (table.point(k) for k in step.line)
+    e = q - p
+    table.put(step.dst, p + e * (table.value(step.value) / np.sqrt(dot(e, e))),
+              _parents(table, step.line) if table.careful else 0.0)
+
+
+@execute.register
+def _(step: Seat, table: Table, ways: Ways, number: int) -> None:
+    for dst, place in zip(step.dst, step.local, strict=True):
+        table.put(dst, _local(table, place))
+
+
+@execute.register
+def _(step: Shift, table: Table, ways: Ways, number: int) -> None:
+    place = table.point(step.point) + table.point(step.plus) - table.point(step.minus)
+    table.put(step.dst, place, _parents(table, (step.point,)) if table.careful else 0.0)
+
+
+@execute.register
+def _(step: Orient, table: Table, ways: Ways, number: int) -> None:
+    u = _heading(table, step.heading)
+    a, b = (_local(table, k) for k in step.line)
+    e = b - a
+    e = e / np.sqrt(dot(e, e))
+    cos, sin = dot(e, u), cross(e, u)
+    for dst, place in zip(step.dst, step.local, strict=True):
+        w = _local(table, place) - a
+        table.put(dst, np.stack(np.broadcast_arrays(
+            cos * w[0] - sin * w[1], sin * w[0] + cos * w[1])))
+
+
+@execute.register
+def _(step: Gauge, table: Table, ways: Ways, number: int) -> None:
+    from rigpose.solve.values import joints_of_value
+
+    eqs = table.eqs
+    joints = joints_of_value(eqs, step.value)
+    arrays = np.broadcast_arrays(*(table.point(j) for j in joints))
+    b, f = arrays[0].shape[1:]
+    x = np.zeros((b * f, eqs.n, 2))
+    for j, array in zip(joints, arrays, strict=True):
+        x[:, j] = array.reshape(2, -1).T
+    value = measure(eqs, x, np.array([step.value]))[:, 0].reshape(b, f)
+    if step.value in table.hints:
+        hint = table.hints[step.value]
+        value = hint + np.remainder(value - hint + np.pi, 2 * np.pi) - np.pi
+    elif table.consecutive:
+        value = np.unwrap(value, axis=1)
+    table.put_value(step.value, value)
+
+
+@execute.register
+def _(step: Tied, table: Table, ways: Ways, number: int) -> None:
+    row = table.eqs.ties[step.tie]
+    total: Array | float = float(table.eqs.tie_equals[step.tie])
+    for v in np.flatnonzero(row):
+        if v != step.value:
+            total = total - row[v] * table.value(int(v))
+    table.put_value(step.value, np.asarray(total / row[step.value]))
+
+
+@execute.register
+def _(step: Check, table: Table, ways: Ways, number: int) -> None:
+    ok = check_passes(step, table)
+    table.kill(ok, number)
+    if ways is None and ok.shape[0] > 1 and table.alive is not None:
+        alive: NDArray[np.bool_] = table.alive.any(axis=1)
+        if not alive.all():
+            _widen(table, table.branches)
+            table.renumber(np.flatnonzero(np.broadcast_to(alive, (table.branches,))))
+
+
+@execute.register
+def _(step: Cluster, table: Table, ways: Ways, number: int) -> None:
+    if ways is None:
+        cluster_branches(step, table, number)
+    else:
+        cluster_follow(step, table, number)

@@ -1,0 +1,197 @@
+"""Branch and prune for one group of a plan, over all frames at once.
+
+The first run takes every crossing at its word. Frames in which some crossing is close to a dead
+centre are run again with error bounds carried along, and what rounding has left is polished.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rigpose.ground.budget import Budget
+from rigpose.ground.words import Found, weaker
+from rigpose.model.equations import Array
+from rigpose.solve.plan import Group, Plan
+from rigpose.solve.polish import polish
+from rigpose.solve.rest import Rest
+from rigpose.solve.run import Ways, run_steps
+from rigpose.solve.table import Inputs, Table
+
+Mask = NDArray[np.bool_]
+
+
+@dataclass
+class Cells:
+    """Poses of one group: ``codes (B, bits)`` tells the branches, ``places`` holds for every
+    joint of the group ``(2, B or 1, F)``, ``alive`` and ``margin`` are ``(B, F)``; ``sines``
+    are the squared sines of every choice ``(B or 1, F)``."""
+
+    group: Group
+    codes: NDArray[np.int16]
+    places: list[Array]
+    alive: Mask
+    margin: Array
+    sines: list[Array]
+    found: Found = Found.COMPLETE
+
+    @property
+    def branches(self) -> int:
+        """How many."""
+        return len(self.codes)
+
+
+@dataclass(frozen=True)
+class Context:
+    """What every run of one plan shares."""
+
+    rest: Rest
+    plan: Plan
+    budget: Budget = Budget()
+
+    def table(self, inputs: Inputs, careful: bool) -> Table:
+        """An empty table with the pins in."""
+        tol, reach = self.rest.tolerances, self.rest.reach
+        table = Table(self.plan.eqs, inputs, careful, tol.slack, reach, tol.rounding * reach,
+                      close=tol.close, budget=self.budget)
+        for j in np.flatnonzero(self.plan.eqs.pinned):
+            table.put(int(j), self.plan.eqs.at[j].reshape(2, 1, 1))
+        return table
+
+
+def base_table(context: Context, inputs: Inputs, careful: bool, **more: object) -> Table:
+    """The steps that depend on known things only."""
+    table = context.table(inputs, careful)
+    for name, value in more.items():
+        setattr(table, name, value)
+    run_steps(context.plan.base, table, None)
+    return table
+
+
+def _group_table(base: Table, rows: int | None) -> Table:
+    """A table for one group that starts from the base's points."""
+    table = Table(base.eqs, base.inputs, base.careful, base.slack, base.reach, base.rounding,
+                  close=base.close, hints=base.hints, consecutive=base.consecutive,
+                  guess=base.guess, budget=base.budget)
+    table.points, table.values = dict(base.points), dict(base.values)
+    table.level_of, table.bounds = dict(base.level_of), dict(base.bounds)
+    table.bound_level = dict(base.bound_level)
+    table.alive, table.margin = base.alive, base.margin
+    table.killer = base.killer
+    if rows is not None:
+        table.branches = rows
+    return table
+
+
+def _cells(group: Group, table: Table) -> Cells:
+    frames = table.inputs.frames
+    shape = (table.branches, frames)
+    codes = [np.broadcast_to(c, shape[:1]) for c in table.codes]
+    alive = np.ones(shape, dtype=bool) if table.alive is None else table.alive
+    margin = np.ones(shape) if table.margin is None else table.margin
+    missing = [j for j in group.joints if j not in table.points]
+    if missing:
+        nothing = np.full((2, table.branches, frames), np.nan)
+        for j in missing:
+            table.put(j, nothing)
+    return Cells(
+        group,
+        np.array(codes, dtype=np.int16).reshape(len(codes), table.branches).T,
+        [table.point(j) for j in group.joints],
+        np.broadcast_to(alive, shape), np.broadcast_to(margin, shape),
+        table.sines, table.found,
+    )
+
+
+def run_group(
+    context: Context, group: Group, base: Table, ways: Ways = None, rows: int | None = None
+) -> tuple[Cells, Table]:
+    """One run, fast or careful as the base table is."""
+    table = _group_table(base, rows)
+    run_steps(group.steps, table, ways)
+    return _cells(group, table), table
+
+
+def search(
+    context: Context, group: Group, inputs: Inputs, ways: Ways = None, rows: int | None = None,
+    **more: object,
+) -> Cells:
+    """All branches of a group over the inputs' frames (or the rows that ``ways`` names)."""
+    base = base_table(context, inputs, False, **more)
+    cells, table = run_group(context, group, base, ways, rows)
+    flagged = table.flagged
+    if base.flagged is not None:
+        flagged = base.flagged if flagged is None else flagged | base.flagged
+    if flagged is None or not flagged.any():
+        return cells
+    return _again(context, group, inputs, ways, rows, cells, np.flatnonzero(flagged), more)
+
+
+def _part(array: Array, columns: NDArray[np.intp]) -> Array:
+    return array if array.shape[-1] == 1 else array[..., columns]
+
+
+def _again(  # noqa: PLR0917
+    context: Context, group: Group, inputs: Inputs, ways: Ways, rows: int | None, cells: Cells,
+    columns: NDArray[np.intp], more: dict[str, object],
+) -> Cells:
+    """Run the frames near dead centres with error bounds, polish them and put them in."""
+    some = inputs.part(columns)
+    base = base_table(context, some, True, **more)
+    mine = None if ways is None else {k: _part(v, columns) for k, v in ways.items()}
+    careful, table = run_group(context, group, base, mine, rows)
+    polish(context.rest, context.plan, careful, base, some)
+    if ways is not None:
+        return _put(cells, careful, columns, np.arange(len(cells.codes)))
+    return _merge(cells, careful, columns)
+
+
+def _full(array: Array, shape: tuple[int, ...]) -> Array:
+    """A writable copy of the given shape."""
+    return np.array(np.broadcast_to(array, shape))
+
+
+def _put(cells: Cells, careful: Cells, columns: NDArray[np.intp], rows: NDArray[np.intp]) -> Cells:
+    b, f = cells.alive.shape
+    at = np.ix_(rows, columns)
+    places = []
+    for mine, theirs in zip(cells.places, careful.places, strict=True):
+        full = _full(mine, (2, b, f))
+        full[:, at[0], at[1]] = np.broadcast_to(theirs, (2, len(rows), len(columns)))
+        places.append(full)
+    alive, margin = _full(cells.alive, (b, f)), _full(cells.margin, (b, f))
+    alive[at], margin[at] = careful.alive, careful.margin
+    sines = []
+    for mine, theirs in zip(cells.sines, careful.sines, strict=True):
+        full = _full(mine, (b, f))
+        full[at] = np.broadcast_to(theirs, (len(rows), len(columns)))
+        sines.append(full)
+    return Cells(cells.group, cells.codes, places, alive, margin, sines,
+                 weaker(cells.found, careful.found))
+
+
+def _merge(cells: Cells, careful: Cells, columns: NDArray[np.intp]) -> Cells:
+    """Branches of both runs by their codes; those of one run are dead in the other's frames."""
+    b, f = cells.alive.shape
+    everything = np.concatenate([cells.codes, careful.codes])
+    if not len(everything):
+        return cells
+    codes, where = np.unique(everything, axis=0, return_inverse=True)
+    mine, theirs = where.ravel()[:b], where.ravel()[b:]
+    n = len(codes)
+
+    def grown(array: Array, fill: float | bool) -> Array:
+        lead = array.shape[:-2]
+        out = np.full((*lead, n, f), fill, dtype=array.dtype)
+        out[..., mine, :] = np.broadcast_to(array, (*lead, b, f))
+        out[..., columns] = fill
+        return out
+
+    wide = Cells(
+        cells.group, codes, [grown(p, np.nan) for p in cells.places],
+        grown(cells.alive, False), grown(cells.margin, np.nan),
+        [grown(np.broadcast_to(s, (b, f)), np.nan) for s in cells.sines], cells.found,
+    )
+    return _put(wide, careful, columns, theirs)
