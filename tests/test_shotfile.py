@@ -202,7 +202,7 @@ def test_everything_wrong_is_told_at_once(folder: Path) -> None:
         "[[keys]]\nframe = 2\ndrive = { swing = true }\n")
     lines = refusal(folder, text).splitlines()
     assert [line.partition(": ")[0] for line in lines] == [
-        "q010.shot.toml:3", "q010.shot.toml:5", "gate.toml:5", "q010.shot.toml:6",
+        "q010.shot.toml:3", "q010.shot.toml:5", "gate.toml:6", "q010.shot.toml:6",
         "q010.shot.toml:8", "q010.shot.toml:11", "q010.shot.toml:14"]
     assert 'frmaes: there is no key of this name; got "frmaes"; did you mean "frames"?' in lines[1]
 

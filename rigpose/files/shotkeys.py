@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
@@ -11,7 +12,7 @@ from rigpose.model.arithmetic import read_number
 from rigpose.model.decode import decode
 from rigpose.model.names import KeyPath, shown
 from rigpose.model.notes import Notes
-from rigpose.model.rig import Rig, Span
+from rigpose.model.rig import Drive, Rig, Span
 from rigpose.motion.shot import Key
 
 
@@ -31,7 +32,7 @@ class Desk:
             self.notes.refused(path, bad)
             return None
         # NaN stands for a size that was refused, and noted, before.
-        return None if number != number else number
+        return None if math.isnan(number) else number
 
     def numbers(self, path: KeyPath, values: object, count: int) -> tuple[float, ...] | None:
         """So many finite numbers, or None after noting what is wrong."""
@@ -110,7 +111,7 @@ def _drive(desk: Desk, path: KeyPath, name: str, raw: object) -> float | None:
 
 
 def _span(rig: Rig, name: str) -> Span | None:
-    drives = (*rig.cranks, *rig.rams, *rig.rails)
+    drives: tuple[Drive, ...] = (*rig.cranks, *rig.rams, *rig.rails)
     return next(drive.range for drive in drives if drive.name == name)
 
 

@@ -12,9 +12,11 @@ from rigpose.model.arithmetic import read_number
 from rigpose.model.names import KeyPath, name_fault, shown
 from rigpose.model.notes import Notes
 from rigpose.model.rig import (
+    Body,
     Bone,
     Coordinates,
     Crank,
+    Drive,
     Frozen,
     Joint,
     Limit,
@@ -27,9 +29,6 @@ from rigpose.model.rig import (
     Tie,
 )
 from rigpose.model.spec import PartSpec
-
-Body = Bone | Plate | Ram
-Drive = Crank | Ram | Rail
 
 
 class Common(TypedDict):

@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from typing import Literal
 
-from rigpose.model.bench import Bench, Body, joints_of
+from rigpose.model.bench import Bench, joints_of
 from rigpose.model.bodies import GROUND, Table
 from rigpose.model.decode import decode
 from rigpose.model.head import unit_vector
 from rigpose.model.names import KeyPath, shown
-from rigpose.model.rig import Coordinates, Crank, Limit, Pair, Plate, Rail, Span, Tie
+from rigpose.model.rig import Body, Coordinates, Crank, Limit, Pair, Plate, Rail, Span, Tie
 from rigpose.model.spec import CrankSpec, LimitSpec, RailSpec, TieSpec
 
 WHOLE_TURN = 360.0

@@ -19,7 +19,7 @@ from rigpose.model.equations import (
     Ints,
     Lines,
 )
-from rigpose.model.rig import Limit, Rig
+from rigpose.model.rig import Bone, Drive, Limit, Ram, Rig
 
 
 def _frame(rig: Rig) -> tuple[float, Array, Array]:
@@ -31,7 +31,7 @@ def _frame(rig: Rig) -> tuple[float, Array, Array]:
     known = at[~np.isnan(at[:, 0])]
     lengths = [b.length for b in rig.bones] or [1.0]
     extent = float(np.linalg.norm(np.ptp(known, axis=0))) if len(known) else 0.0
-    scale = max(extent, max(lengths))
+    scale = max(extent, *lengths)
     pins = np.array([j.at for j in rig.joints if j.pin and j.at is not None])
     middle = pins if len(pins) else known
     origin = (middle.min(axis=0) + middle.max(axis=0)) / 2 if len(middle) else np.zeros(rig.dim)
@@ -49,7 +49,7 @@ def _ints(rows: list[tuple[int, ...]], width: int) -> Ints:
 
 def _distances(rig: Rig, scale: float, value: dict[str, int]) -> Distances:
     at = rig.index
-    parts = (*rig.bones, *rig.rams)
+    parts: tuple[Bone | Ram, ...] = (*rig.bones, *rig.rams)
     nb = len(rig.bones)
     return Distances(
         names=tuple(p.name for p in parts),
@@ -107,7 +107,8 @@ def _fences(limits: tuple[Limit, ...], at: dict[str, int]) -> Fences:
 def _spans(rig: Rig, scale: float) -> tuple[Array, Array]:
     """Allowed ranges ``(v, 2)`` and the factor ``(v,)`` that takes file values to scaled ones."""
     span, unit = [], []
-    for part in (*rig.cranks, *rig.rams, *rig.rails):
+    drives: tuple[Drive, ...] = (*rig.cranks, *rig.rams, *rig.rails)
+    for part in drives:
         factor = np.pi / 180 if part in rig.cranks else 1 / scale
         low, high = part.range or (-np.inf, np.inf)
         unit.append(factor)

@@ -96,6 +96,10 @@ class Crank(Part):
     base_part: str = field(default="ground", repr=False)
 
 
+Body = Bone | Plate | Ram
+Drive = Crank | Ram | Rail
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Limit(Part):
     """Allowed counter-clockwise turn from the first line to the second, in degrees.

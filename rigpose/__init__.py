@@ -1,0 +1,1 @@
+"""Poses mechanical linkages for keyframed shots: every assembly, every length kept."""
