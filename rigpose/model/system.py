@@ -23,7 +23,7 @@ Family = tuple[Array, Ints, Array]
 def _columns(joints: Ints, dim: int) -> Ints:
     """Columns ``(m, w * dim)`` of the coordinates of joints ``(m, w)``."""
     wide = joints[..., None] * dim + np.arange(dim)
-    return wide.reshape(len(joints), -1)
+    return wide.reshape(len(joints), joints.shape[1] * dim)
 
 
 @dataclass(frozen=True)

@@ -235,6 +235,12 @@ class Plan:
         return sum(g.bits for g in self.groups)
 
     @cached_property
+    def reads_values(self) -> bool:
+        """Whether some value is read off placed joints on the way."""
+        steps = (*self.base, *(s for g in self.groups for s in g.steps))
+        return any(isinstance(s, Gauge) for s in steps)
+
+    @cached_property
     def clusters(self) -> tuple[Cluster, ...]:
         """Blocks of several joints."""
         return tuple(s for g in self.groups for s in g.steps if isinstance(s, Cluster))

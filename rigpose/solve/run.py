@@ -38,16 +38,17 @@ from rigpose.solve.plan import (
     Tied,
 )
 from rigpose.solve.table import Table
+from rigpose.solve.values import joints_of_value
 
 Ways = Mapping[int, Array] | None
 """For every choice ``(B or 1, F or 1)`` of +1 and -1; None tries both."""
 CAREFUL = 1e-7
 
 
-def run_steps(steps: Sequence[Step], table: Table, ways: Ways) -> None:
-    """Run steps in order; the table holds the result."""
+def run_steps(steps: Sequence[Step], table: Table, ways: Ways, first: int = 0) -> None:
+    """Run steps in order, numbered from ``first``; the table holds the result."""
     with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-        for number, step in enumerate(steps):
+        for number, step in enumerate(steps, first):
             execute(step, table, ways, number)
             if table.branches == 0:
                 return
@@ -176,7 +177,12 @@ def choose(  # noqa: PLR0917
             columns = near.any(axis=0)
             table.flagged = columns if table.flagged is None else table.flagged | columns
     if ways is not None:
-        place = base + side * ways[bit]
+        way = ways[bit]
+        if table.guess is not None and dst >= 0 and dst < table.eqs.n:
+            # Followed frame by frame: the side that continues the motion.
+            away = table.guess[:, dst].T[:, :, None] - base
+            way = np.where(dot(away, side) < 0, -1.0, 1.0)
+        place = base + side * way
         table.sines.append(sine2)
         table.kill(sine2 >= 0, number)
         table.narrow(sine)
@@ -330,8 +336,6 @@ def _(step: Orient, table: Table, ways: Ways, number: int) -> None:
 
 @execute.register
 def _(step: Gauge, table: Table, ways: Ways, number: int) -> None:
-    from rigpose.solve.values import joints_of_value
-
     eqs = table.eqs
     joints = joints_of_value(eqs, step.value)
     arrays = np.broadcast_arrays(*(table.point(j) for j in joints))
@@ -340,12 +344,32 @@ def _(step: Gauge, table: Table, ways: Ways, number: int) -> None:
     for j, array in zip(joints, arrays, strict=True):
         x[:, j] = array.reshape(2, -1).T
     value = measure(eqs, x, np.array([step.value]))[:, 0].reshape(b, f)
-    if step.value in table.hints:
-        hint = table.hints[step.value]
-        value = hint + np.remainder(value - hint + np.pi, 2 * np.pi) - np.pi
-    elif table.consecutive:
-        value = np.unwrap(value, axis=1)
+    if step.value in table.eqs.angles.value:
+        value = _unwrapped(table, step.value, value)
     table.put_value(step.value, value)
+
+
+def _unwrapped(table: Table, number: int, value: Array) -> Array:
+    """Angles that go on from one frame to the next, or lie next to the hint."""
+    hint = table.hints.get(number)
+    if table.consecutive and value.shape[1] > 1:
+        value = _unrolled(value)
+        hint = None if hint is None else hint[:, :1]
+    if hint is None:
+        return value
+    first = value[:, :1] if hint.shape[1] == 1 else value
+    shifted: Array = value + 2 * np.pi * np.rint((hint - first) / (2 * np.pi))
+    return shifted
+
+
+def _unrolled(value: Array) -> Array:
+    """Angles without jumps along the frames; frames without a pose are passed over."""
+    last = np.maximum.accumulate(np.where(np.isnan(value), 0, np.arange(value.shape[1])), axis=1)
+    filled = np.take_along_axis(value, last, axis=1)
+    turns = np.nan_to_num(np.rint(np.diff(filled, axis=1) / (2 * np.pi)))
+    out = value.copy()
+    out[:, 1:] -= 2 * np.pi * np.cumsum(turns, axis=1)
+    return out
 
 
 @execute.register

@@ -6,7 +6,7 @@ centre are run again with error bounds carried along, and what rounding has left
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -27,7 +27,7 @@ Mask = NDArray[np.bool_]
 class Cells:
     """Poses of one group: ``codes (B, bits)`` tells the branches, ``places`` holds for every
     joint of the group ``(2, B or 1, F)``, ``alive`` and ``margin`` are ``(B, F)``; ``sines``
-    are the squared sines of every choice ``(B or 1, F)``."""
+    are the squared sines of every choice ``(B or 1, F)``; ``values`` those read off on the way."""
 
     group: Group
     codes: NDArray[np.int16]
@@ -36,6 +36,7 @@ class Cells:
     margin: Array
     sines: list[Array]
     found: Found = Found.COMPLETE
+    values: dict[int, Array] = field(default_factory=dict)
 
     @property
     def branches(self) -> int:
@@ -70,7 +71,7 @@ def base_table(context: Context, inputs: Inputs, careful: bool, **more: object) 
     return table
 
 
-def _group_table(base: Table, rows: int | None) -> Table:
+def group_table(base: Table, rows: int | None) -> Table:
     """A table for one group that starts from the base's points."""
     table = Table(base.eqs, base.inputs, base.careful, base.slack, base.reach, base.rounding,
                   close=base.close, hints=base.hints, consecutive=base.consecutive,
@@ -85,7 +86,8 @@ def _group_table(base: Table, rows: int | None) -> Table:
     return table
 
 
-def _cells(group: Group, table: Table) -> Cells:
+def cells_of(group: Group, table: Table) -> Cells:
+    """What a run has found."""
     frames = table.inputs.frames
     shape = (table.branches, frames)
     codes = [np.broadcast_to(c, shape[:1]) for c in table.codes]
@@ -101,7 +103,7 @@ def _cells(group: Group, table: Table) -> Cells:
         np.array(codes, dtype=np.int16).reshape(len(codes), table.branches).T,
         [table.point(j) for j in group.joints],
         np.broadcast_to(alive, shape), np.broadcast_to(margin, shape),
-        table.sines, table.found,
+        table.sines, table.found, {v: table.value(v) for v in table.values},
     )
 
 
@@ -109,9 +111,9 @@ def run_group(
     context: Context, group: Group, base: Table, ways: Ways = None, rows: int | None = None
 ) -> tuple[Cells, Table]:
     """One run, fast or careful as the base table is."""
-    table = _group_table(base, rows)
-    run_steps(group.steps, table, ways)
-    return _cells(group, table), table
+    table = group_table(base, rows)
+    run_steps(group.steps, table, ways, len(context.plan.base))
+    return cells_of(group, table), table
 
 
 def search(
@@ -126,6 +128,9 @@ def search(
         flagged = base.flagged if flagged is None else flagged | base.flagged
     if flagged is None or not flagged.any():
         return cells
+    if context.plan.reads_values:
+        # Values read off frame by frame go on from one frame to the next: run all of them.
+        flagged = np.ones_like(flagged)
     return _again(context, group, inputs, ways, rows, cells, np.flatnonzero(flagged), more)
 
 
@@ -141,8 +146,10 @@ def _again(  # noqa: PLR0917
     some = inputs.part(columns)
     base = base_table(context, some, True, **more)
     mine = None if ways is None else {k: _part(v, columns) for k, v in ways.items()}
-    careful, table = run_group(context, group, base, mine, rows)
+    careful, _ = run_group(context, group, base, mine, rows)
     polish(context.rest, context.plan, careful, base, some)
+    if len(columns) == inputs.frames:
+        return careful
     if ways is not None:
         return _put(cells, careful, columns, np.arange(len(cells.codes)))
     return _merge(cells, careful, columns)
@@ -168,8 +175,8 @@ def _put(cells: Cells, careful: Cells, columns: NDArray[np.intp], rows: NDArray[
         full = _full(mine, (b, f))
         full[at] = np.broadcast_to(theirs, (len(rows), len(columns)))
         sines.append(full)
-    return Cells(cells.group, cells.codes, places, alive, margin, sines,
-                 weaker(cells.found, careful.found))
+    return replace(cells, places=places, alive=alive, margin=margin, sines=sines,
+                   found=weaker(cells.found, careful.found))
 
 
 def _merge(cells: Cells, careful: Cells, columns: NDArray[np.intp]) -> Cells:
@@ -192,6 +199,6 @@ def _merge(cells: Cells, careful: Cells, columns: NDArray[np.intp]) -> Cells:
     wide = Cells(
         cells.group, codes, [grown(p, np.nan) for p in cells.places],
         grown(cells.alive, False), grown(cells.margin, np.nan),
-        [grown(np.broadcast_to(s, (b, f)), np.nan) for s in cells.sines], cells.found,
+        [grown(np.broadcast_to(s, (b, f)), np.nan) for s in cells.sines], cells.found, cells.values,
     )
     return _put(wide, careful, columns, theirs)

@@ -57,7 +57,7 @@ class Table:
     sines: list[Array] = field(default_factory=list)
     sine_bounds: list[Array | float] = field(default_factory=list)
     flagged: NDArray[np.bool_] | None = None
-    killer: NDArray[np.int16] | None = None
+    killer: NDArray[np.int32] | None = None
     close: float = 1e-6
     hints: dict[int, Array] = field(default_factory=dict)
     consecutive: bool = False
@@ -133,7 +133,7 @@ class Table:
         """Cells that are not ``ok`` die at ``step``."""
         if self.killer is not None:
             dead = ~ok if self.alive is None else self.alive & ~ok
-            self.killer = np.where(dead, np.int16(step), self.killer)
+            self.killer = np.where(dead, np.int32(step), self.killer)
         self.alive = ok if self.alive is None else self.alive & ok
 
     def narrow(self, margin: Array) -> None:

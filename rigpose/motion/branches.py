@@ -1,0 +1,165 @@
+"""Finding branches: from what is known to every row of poses."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rigpose.ground.budget import Budget, Watch, go_on
+from rigpose.ground.words import Found, State, weaker
+from rigpose.model.equations import Array
+from rigpose.model.rig import Rig
+from rigpose.motion.branchset import Branches
+from rigpose.motion.motion import Event
+from rigpose.motion.product import Picks, assembled, base_places, combined, kept
+from rigpose.motion.refusals import refuse_loose, useless_targets
+from rigpose.solve.clock import Clock, sampled
+from rigpose.solve.flow import writes
+from rigpose.solve.knowns import Given, Knowns, Wished, read_knowns
+from rigpose.solve.plan import Cluster, Group, Meet, Plan, Swing
+from rigpose.solve.planner import plan_for
+from rigpose.solve.rest import Rest, find_rest
+from rigpose.solve.rows import Pass, Rows, follow, survey
+from rigpose.solve.search import Context
+from rigpose.solve.stepping import enumerate_rows
+from rigpose.solve.stream import all_cells
+
+
+def find_branches(
+    rig: Rig, drives: Given | None = None, targets: Wished | None = None, *,
+    budget: Budget | None = None, watch: Watch | None = None, mirrors: bool = True,
+) -> Branches:
+    """Every branch that meets the drives and targets, nearest to the rest pose first.
+
+    drives : drive name to one number or (n_frames,), degrees or the rig's unit
+    targets : joint name to (dim,), (n_frames, dim), or a table of axes such as ``{"y": 2.0}``
+    budget : how many branches are held (4,096 unless it says more); ``found`` tells a cut
+    mirrors : False leaves out the later of two mirror images
+
+    Over several frames each branch is a row: a motion that follows the mechanism through dead
+    centres. Raises BadInput for unknown names, values outside ranges, and where something can
+    still move. What can't be reached is a result with no branches.
+    """
+    knowns = read_knowns(rig, drives, targets)
+    rest = find_rest(rig)
+    frames = np.arange(knowns.frames, dtype=np.float64)
+    clock = sampled(rest.equations, knowns)
+    found = branches_on(rest, clock, frames, budget or Budget(), watch)
+    return found if mirrors else without_mirrors(found)
+
+
+def without_mirrors(found: Branches) -> Branches:
+    """The same set with one of each pair of mirror images, the nearer to rest."""
+    keep = [k for k, other in enumerate(found.mirror_of) if other is None or other >= k]
+    return found.take(keep)
+
+
+def plan_of(rest: Rest, knowns: Knowns) -> Plan:
+    """The plan for what is known; raises BadInput where something can still move."""
+    plan = plan_for(rest.rig, knowns.drive_names, knowns.target_names)
+    if plan.loose:
+        refuse_loose(rest, plan, knowns)
+    return plan
+
+
+def branches_on(rest: Rest, clock: Clock, frames: Array, budget: Budget,
+                watch: Watch | None = None) -> Branches:
+    """All branches over a clock's frames; ``frames (n_frames,)`` are their numbers."""
+    plan = plan_of(rest, clock.knowns)
+    context = Context(rest, plan, budget)
+    picks, done = [], Found.COMPLETE
+    for k, group in enumerate(plan.groups):
+        if not go_on(watch, "groups", k, len(plan.groups)):
+            done = Found.STOPPED
+            break
+        rows, cut = group_rows(context, group, clock, budget, watch)
+        done = weaker(done, Found.BUDGET if cut else rows.found)
+        picks.append(kept(rest, rows))
+    base, base_alive = base_places(context, clock)
+    mixed = combined(rest, plan, picks, base, base_alive, budget.poses)
+    if mixed.cut:
+        done = weaker(done, Found.BUDGET)
+    return _made(rest, plan, clock, frames, picks, mixed, base, done)
+
+
+def group_rows(context: Context, group: Group, clock: Clock, budget: Budget,
+               watch: Watch | None) -> tuple[Rows, bool]:
+    """All rows of one group, and whether the budget cut them short."""
+    if clock.count == 1:
+        cells, cut = all_cells(context, group, clock.whole(slice(0, 1)), budget.poses)
+        return Rows(group, cells.codes, cells.places, cells.alive, cells.margin, cells.values,
+                    found=cells.found), cut
+    if not group.binary:
+        return enumerate_rows(context, group, clock, watch), False
+    rows, meets = survey(context, group, clock)
+    if not meets or not len(rows.codes):
+        return rows, False
+    return _with_births(context, group, clock, rows), False
+
+
+def _with_births(context: Context, group: Group, clock: Clock, all_signs: Rows) -> Rows:
+    """Rows followed through dead centres; poses that none of them holds begin rows of their own."""
+    rows = follow(context, group, clock, all_signs.codes)
+    return rows
+
+
+def _made(rest: Rest, plan: Plan, clock: Clock, frames: Array, picks: Sequence[Rows],
+          mixed: Picks, base: Mapping[int, Array], found: Found) -> Branches:
+    eqs = rest.equations
+    positions = assembled(rest, picks, mixed, base, clock.count)
+    state = np.where(mixed.alive, np.uint8(State.MET), np.uint8(State.NONE))
+    groups = tuple(tuple(eqs.rig.joint_names[j] for j in rows.group.joints) for rows in picks)
+    for array in (positions, state, mixed.margin):
+        array.flags.writeable = False
+    return Branches(
+        rig=rest.rig, knowns=clock.knowns, frames=frames, positions=positions, state=state,
+        margin=mixed.margin, found=found, groups=groups, choice=mixed.choice, count=mixed.count,
+        size=rest.size, meets=mixed.meets, values=_read_off(rest, picks, mixed),
+        events=_events(eqs.rig, frames, picks, mixed),
+        notes=useless_targets(rest, plan), redundant=frozenset(plan.redundant))
+
+
+def _read_off(rest: Rest, picks: Sequence[Rows], mixed: Picks) -> dict[str, Array]:
+    eqs = rest.equations
+    out = {}
+    for g, rows in enumerate(picks):
+        for v, array in rows.values.items():
+            wide = array if len(array) == 1 else array[mixed.choice[:, g]]
+            out[eqs.values[v]] = wide / eqs.unit[v]
+    return out
+
+
+def _events(rig: Rig, frames: Array, picks: Sequence[Rows],
+            mixed: Picks) -> tuple[tuple[Event, ...], ...]:
+    if not any(rows.passes for rows in picks):
+        return ()
+    by_row: list[dict[int, list[Event]]] = []
+    for rows in picks:
+        mine: dict[int, list[Event]] = {}
+        choices = choice_steps(rows.group)
+        for p in rows.passes:
+            mine.setdefault(p.row, []).append(_event(rig, frames, choices[p.choice], p))
+        by_row.append(mine)
+    return tuple(
+        tuple(sorted((e for g, mine in enumerate(by_row) for e in mine.get(int(row[g]), [])),
+                     key=lambda e: e.frame))
+        for row in mixed.choice)
+
+
+def choice_steps(group: Group) -> list[Meet | Swing | Cluster]:
+    """The steps with choices, in the order of their numbers."""
+    return [s for s in group.steps
+            if isinstance(s, Cluster) or (isinstance(s, (Meet, Swing)) and s.bit >= 0)]
+
+
+def _event(rig: Rig, frames: Array, step: Meet | Swing | Cluster, p: Pass) -> Event:
+    joints = tuple(rig.joint_names[j] for j in writes(step) if j < len(rig.joints))
+    at = float(np.interp(p.time, np.arange(len(frames)), frames))
+    return Event(at, p.kind, joints, step.parts)
+
+
+def every_row(rows: Rows) -> NDArray[np.intp]:
+    """Numbers of the rows that live at some frame."""
+    return np.flatnonzero(rows.alive.any(axis=1))

@@ -1,0 +1,144 @@
+"""Lengths that can never close: triangle and chain inequalities, with the amounts.
+
+Every pair of joints that a part holds apart by at least so much must be reachable from one
+another along other parts at their longest. Shortest ways over the longest lengths say whether
+(the polygon inequality over every loop at once; Dijkstra 1959 through `scipy.sparse.csgraph`).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from itertools import combinations
+
+import numpy as np
+from scipy.sparse import csr_array
+from scipy.sparse.csgraph import dijkstra
+
+from rigpose.model.equations import Array
+from rigpose.model.rig import Pair, Plate, Rail, Rig
+
+NEVER_ZERO = 1e-300
+"""Stands for a gap of zero, which a sparse graph would take for no edge."""
+
+
+@dataclass(frozen=True)
+class Gap:
+    """``part`` holds ``ends`` at least ``least`` apart; the ``chain`` reaches ``reach`` at most.
+
+    Lengths in the rig's unit; ``short`` is what is missing.
+    """
+
+    part: str
+    ends: Pair
+    least: float
+    chain: tuple[str, ...]
+    reach: float
+
+    @property
+    def short(self) -> float:
+        """By how much the chain is too short."""
+        return self.least - self.reach
+
+
+@dataclass(frozen=True)
+class Reach:
+    """One pair of joints that a part keeps between ``least`` and ``most``."""
+
+    part: str
+    a: int
+    b: int
+    least: float
+    most: float
+
+
+def open_gaps(rig: Rig, tolerance: float) -> tuple[Gap, ...]:
+    """All that can never close by more than ``tolerance`` (rig's unit), widest first."""
+    reaches = list(_reaches(rig))
+    if not reaches:
+        return ()
+    best = _longest_ways(reaches)
+    n = len(rig.joints)
+    ends = np.array(list(best), dtype=np.intp)
+    graph = csr_array(([max(r.most, NEVER_ZERO) for r in best.values()],
+                       (ends[:, 0], ends[:, 1])), shape=(n, n)) if best else csr_array((n, n))
+    held = [r for r in reaches if r.least > 0]
+    sources = np.unique([r.a for r in held])
+    gaps: list[Gap] = []
+    for start in range(0, len(sources), 256):
+        some = sources[start : start + 256]
+        gaps += _short_ones(rig, held, some, graph, best, tolerance)
+    return tuple(sorted(gaps, key=lambda g: -g.short))
+
+
+def _short_ones(
+    rig: Rig, held: list[Reach], sources: Array, graph: csr_array,
+    best: dict[tuple[int, int], Reach], tolerance: float,
+) -> Iterator[Gap]:
+    far, before = dijkstra(graph, directed=False, indices=sources, return_predecessors=True)
+    row = {int(s): k for k, s in enumerate(sources)}
+    for r in held:
+        if r.a in row and far[row[r.a], r.b] < r.least - tolerance:
+            way = _way(before[row[r.a]], r.a, r.b)
+            chain = tuple(best[min(e), max(e)].part for e in way)
+            names = rig.joint_names
+            yield Gap(r.part, (names[r.a], names[r.b]), r.least, chain,
+                      float(far[row[r.a], r.b]))
+
+
+def _way(before: Array, a: int, b: int) -> list[tuple[int, int]]:
+    """The edges of the shortest way from a to b."""
+    way = []
+    while b != a:
+        way.append((int(before[b]), b))
+        b = int(before[b])
+    return way[::-1]
+
+
+def _longest_ways(reaches: list[Reach]) -> dict[tuple[int, int], Reach]:
+    """For each pair of joints the part that keeps them closest together."""
+    best: dict[tuple[int, int], Reach] = {}
+    for r in reaches:
+        key = (min(r.a, r.b), max(r.a, r.b))
+        if np.isfinite(r.most) and (key not in best or r.most < best[key].most):
+            best[key] = r
+    return best
+
+
+def _reaches(rig: Rig) -> Iterator[Reach]:
+    at = rig.index
+    for bone in rig.bones:
+        yield Reach(bone.name, at[bone.ends[0]], at[bone.ends[1]], bone.length, bone.length)
+    for ram in rig.rams:
+        low, high = ram.range or (0.0, np.inf)
+        yield Reach(ram.name, at[ram.ends[0]], at[ram.ends[1]], low, high)
+    for plate in rig.plates:
+        yield from _plate(rig, plate)
+    pins = [j for j in rig.joints if j.pin and j.at is not None]
+    for p, q in combinations(pins, 2):
+        gap = float(np.linalg.norm(np.subtract(p.at, q.at)))  # type: ignore[arg-type]
+        yield Reach("the ground", at[p.name], at[q.name], gap, gap)
+    for rail in rig.rails:
+        if rail.through is not None and rail.direction is not None:
+            for p in pins:
+                if p.name != rail.joint:
+                    least = _from_rail(rail, np.array(p.at))
+                    yield Reach(rail.name, at[p.name], at[rail.joint], least, np.inf)
+
+
+def _plate(rig: Rig, plate: Plate) -> Iterator[Reach]:
+    """All pairs of a plate's joints."""
+    joints = [rig.index[j] for j in plate.joints]
+    shape = np.array(plate.shape)
+    for i, j in combinations(range(len(joints)), 2):
+        gap = float(np.linalg.norm(shape[i] - shape[j]))
+        yield Reach(plate.name, joints[i], joints[j], gap, gap)
+
+
+def _from_rail(rail: Rail, place: Array) -> float:
+    """How far a place lies from a rail on the ground, or from the stretch of its range."""
+    start, way = np.array(rail.through), np.array(rail.direction)
+    along = float((place - start) @ way)
+    if rail.range is not None:
+        along = float(np.clip(along, *rail.range))
+    return float(np.linalg.norm(place - start - along * way))

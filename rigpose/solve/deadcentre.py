@@ -1,0 +1,144 @@
+"""What a row does where the squared height of a crossing comes down to zero.
+
+With g the squared height along the motion, an even zero g ~ s^(2p) has the smooth way h ~ s^p:
+for odd p the row goes over to the other side (passed), for even p it stays (touched). Where g is
+negative between two frames there is no pose for a moment (gap). A low point above zero is nothing.
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rigpose.model.equations import Array
+from rigpose.solve.clock import Clock
+from rigpose.solve.run import run_steps
+from rigpose.solve.screen import Hits
+from rigpose.solve.search import Context, base_table, group_table
+
+if TYPE_CHECKING:
+    from rigpose.solve.rows import Flips, Rows
+
+Ints = NDArray[np.intp]
+Found = list[tuple[int, int, float, str]]
+POINTS = 9
+ROUNDS = 5
+ZERO = 1e-13
+"""Squared sine that counts as zero: rounding of a placing, carried through a long chain."""
+FIT = np.array([-4.0, -3.0, -2.0, -1.0, 1.0, 2.0, 3.0, 4.0])
+
+
+def classify(context: Context, rows: Rows, clock: Clock, flips: Flips, choice: int,
+             hits: Hits) -> Found:
+    """(row, choice, time, kind) of every true dead centre among the low points."""
+    heights = _Heights(context, rows, clock, flips, choice)
+    keep = (hits.low >= 0) & (hits.high <= clock.count - 1)
+    hits = Hits(hits.row[keep], hits.low[keep], hits.high[keep])
+    if not len(hits):
+        return []
+    wide = hits.high - hits.low > 2
+    found = _touching(heights, Hits(hits.row[~wide], hits.low[~wide], hits.high[~wide]))
+    found += _resting(heights, Hits(hits.row[wide], hits.low[wide], hits.high[wide]))
+    return [(row, choice, time, kind) for row, time, kind in found]
+
+
+class _Heights:
+    """Squared heights of one choice at any times of some rows, upstream choices being settled."""
+
+    def __init__(self, context: Context, rows: Rows, clock: Clock, flips: Flips,
+                 choice: int) -> None:
+        self.context, self.rows, self.clock = context, rows, clock
+        self.flips, self.choice = flips, choice
+
+    def __call__(self, rows: Ints, times: Array) -> Array:
+        """``(m, k)`` for rows ``(m,)`` and times ``(m, k)``; NaN where an earlier choice is dead."""
+        m, k = times.shape
+        flat, every = times.ravel(), np.repeat(rows, k)
+        base = base_table(self.context, self.clock.at(flat), True, hints=self._hints(every, flat))
+        table = group_table(base, 1)
+        group = self.rows.group
+        # Earlier choices flip at their own times, not at the next whole frame: several crossings
+        # of one mechanism often come to zero at the same instant.
+        ways = {c: self.flips.at(c, every, flat)[None] for c in range(group.bits)}
+        run_steps(group.steps, table, ways, len(self.context.plan.base))
+        return np.broadcast_to(table.sines[self.choice], (1, m * k)).reshape(m, k)
+
+    def _hints(self, rows: Ints, times: Array) -> dict[int, Array]:
+        frame = np.rint(times).astype(np.intp)
+        return {v: a[np.minimum(rows, len(a) - 1), frame][None]
+                for v, a in self.rows.values.items()}
+
+
+def _touching(heights: _Heights, hits: Hits) -> list[tuple[int, float, str]]:
+    if not len(hits):
+        return []
+    low, high = hits.low.astype(float), hits.high.astype(float)
+    grid = np.linspace(0.0, 1.0, POINTS)
+    centre = (low + high) / 2
+    for _ in range(ROUNDS):
+        times = low[:, None] + (high - low)[:, None] * grid
+        g = heights(hits.row, times)
+        best = np.argmin(np.nan_to_num(np.abs(g), nan=np.inf), axis=1)
+        opened = (g < -ZERO).any(axis=1)
+        centre = times[np.arange(len(times)), best]
+        step = (high - low) / (POINTS - 1)
+        low = np.where(opened, low, centre - step)
+        high = np.where(opened, high, centre + step)
+    return _fitted(heights, hits, centre)
+
+
+def _fitted(heights: _Heights, hits: Hits, centre: Array) -> list[tuple[int, float, str]]:
+    """Order and time of each zero from heights on both sides."""
+    reach = np.minimum(0.08, np.minimum(centre - hits.low, hits.high - centre) / 4)
+    reach = np.maximum(reach, 1e-3)
+    times = centre[:, None] + reach[:, None] * FIT
+    g = heights(hits.row, times)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        left = np.log2(g[:, 0] / g[:, 2]) / 2
+        right = np.log2(g[:, 7] / g[:, 5]) / 2
+    p = np.rint(np.nan_to_num((left + right) / 2, nan=0.0, posinf=0.0, neginf=0.0))
+    signs = np.sign(FIT)
+    with np.errstate(invalid="ignore"):
+        h = signs * g ** (0.5 / np.maximum(p, 1.0))[:, None]
+    zero = _inverse(h, times)
+    zero = np.where(np.abs(zero - centre) < 4 * reach, zero, centre)
+    at = heights(hits.row, zero[:, None])[:, 0]
+    out = []
+    for k, row in enumerate(hits.row):
+        if (g[k] < -ZERO).any() or at[k] < -ZERO:
+            out.append((int(row), float(centre[k]), "gap"))
+        elif at[k] <= 1e3 * ZERO and p[k] >= 1:
+            out.append((int(row), float(zero[k]), "passed" if p[k] % 2 else "touched"))
+    return out
+
+
+def _inverse(h: Array, times: Array) -> Array:
+    """The time at which the interpolating polynomial of times over heights is at zero."""
+    with np.errstate(divide="ignore", invalid="ignore"):
+        total = np.zeros(len(h))
+        for k in range(h.shape[1]):
+            weight = np.ones(len(h))
+            for other in range(h.shape[1]):
+                if other != k:
+                    weight *= -h[:, other] / (h[:, k] - h[:, other])
+            total += weight * times[:, k]
+    return np.nan_to_num(total, nan=-1e300)
+
+
+def _resting(heights: _Heights, hits: Hits) -> list[tuple[int, float, str]]:
+    """A stretch of frames at a dead centre: passed if the knowns go on to the other side."""
+    out = []
+    clock = heights.clock
+    for row, low, high in zip(hits.row, hits.low, hits.high, strict=True):
+        inside = clock.whole(slice(low + 1, low + 2))
+        before, after = clock.whole(slice(low, low + 1)), clock.whole(slice(high, high + 1))
+        dot = sum(float((before.values[v][0] - inside.values[v][0])
+                        * (after.values[v][0] - inside.values[v][0])) for v in inside.values)
+        dot += sum(float((before.targets[t][0] - inside.targets[t][0])
+                         * (after.targets[t][0] - inside.targets[t][0])) for t in inside.targets)
+        at = float(heights(np.array([row]), np.array([[low + 1.0]]))[0, 0])
+        if abs(at) <= 1e3 * ZERO:
+            out.append((int(row), float(high - 1), "passed" if dot < 0 else "touched"))
+    return out

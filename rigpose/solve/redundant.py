@@ -1,0 +1,95 @@
+"""Redundant lengths as sets of which any one could be taken away.
+
+A redundancy is a self-stress: a combination of rows whose slopes cancel (Maxwell 1864; Whiteley
+1996). Of each set the last in the file gives way, bones before all else, and the others hold; so
+the sets are the fundamental circuits of the rows that stay (Oxley 2011, section 1.2).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from rigpose.model.equations import Array, Ints
+from rigpose.model.system import System
+from rigpose.solve.mobility import Motions
+from rigpose.solve.pieces import Cut, unknown
+
+ABSENT = 1e-5
+"""A part that bears less than this fraction of a set's largest stress does not belong to it."""
+DIFFERENT = 1e-6
+
+
+@dataclass(frozen=True)
+class Redundancy:
+    """Parts of which any one could be taken away; the rest would hold the same.
+
+    off : by how much ``last`` departs from closing when the others hold exactly, rig's unit,
+    with sign: what would have to be added to its length
+    """
+
+    parts: tuple[str, ...]
+    last: str
+    off: float
+
+    def __str__(self) -> str:
+        return " | ".join(self.parts)
+
+
+def redundant_sets(system: System, pieces: Cut, found: list[Motions], rest: Array) -> tuple[
+    Redundancy, ...
+]:
+    """All redundant sets; their departures are measured at ``rest (n, dim)``."""
+    residual = system.residual(rest[None], unknown(system, 1))[0]
+    order = {name: k for k, name in enumerate(dict.fromkeys(system.row_names))}
+    sets: list[Redundancy] = []
+    for motion in found:
+        rows = motion.piece.rows
+        for e, circuit in circuits(system, rows, motion.stresses):
+            off = float(circuit @ residual[rows]) * system.eqs.scale
+            sets.append(_named(system, rows, e, circuit, off, order))
+    for r in pieces.fixed:
+        name = system.row_names[r]
+        sets.append(Redundancy((name,), name, -float(residual[r]) * system.eqs.scale))
+    bodies = {b.name for b in system.eqs.bodies}
+    real = (s for s in sets if len(s.parts) > 1 or s.last not in bodies)
+    return tuple(dict.fromkeys(real))
+
+
+def _named(
+    system: System, rows: Ints, e: int, circuit: Array, off: float, order: dict[str, int]
+) -> Redundancy:
+    share = np.abs(circuit) > ABSENT * np.abs(circuit).max()
+    names = sorted({system.row_names[r] for r in rows[share]}, key=order.__getitem__)
+    return Redundancy(tuple(names), system.row_names[rows[e]], off)
+
+
+def giving_way(system: System, rows: Ints) -> Ints:
+    """Positions in ``rows`` in the order in which they would give way."""
+    bones = len(system.dist_rows)
+    return np.array(sorted(range(len(rows)), key=lambda k: (rows[k] >= bones, -rows[k])),
+                    dtype=np.intp)
+
+
+def circuits(system: System, rows: Ints, stresses: Array) -> list[tuple[int, Array]]:
+    """Minimal dependent sets: the row that gives way and the combination ``(m,)``, one there."""
+    count = stresses.shape[1]
+    if not count:
+        return []
+    chosen: list[int] = []
+    span = np.zeros((0, count))
+    scale = np.abs(stresses).max()
+    for k in giving_way(system, rows):
+        row = stresses[k] - (stresses[k] @ span.T) @ span
+        row -= (row @ span.T) @ span
+        long = float(np.linalg.norm(row))
+        if long > DIFFERENT * scale:
+            chosen.append(int(k))
+            span = np.vstack([span, row / long])
+        if len(chosen) == count:
+            break
+    if len(chosen) < count:
+        return []
+    table = stresses @ np.linalg.inv(stresses[chosen])
+    return sorted(((e, table[:, j]) for j, e in enumerate(chosen)), key=lambda pair: pair[0])

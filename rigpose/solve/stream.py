@@ -1,0 +1,110 @@
+"""All branches of a group at one frame, in blocks: breadth-first inside a block of memory,
+depth-first between blocks, so that 2^30 branches stream and never fill the memory."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from copy import copy
+
+import numpy as np
+
+from rigpose.solve.plan import Group
+from rigpose.solve.run import run_steps
+from rigpose.solve.search import Cells, Context, base_table, cells_of, group_table
+from rigpose.solve.polish import polish
+from rigpose.solve.table import Inputs, Table
+
+BLOCK = 1 << 14
+
+
+def stream_cells(context: Context, group: Group, inputs: Inputs) -> Iterator[Cells]:
+    """Blocks of branches, in the order of placing. ``inputs`` hold one frame.
+
+    From the first block in which a crossing comes close to a dead centre on, error bounds are
+    carried along and what rounding has left is polished.
+    """
+    seen = 0
+    for table in _tables(context, group, inputs, False):
+        if table.flagged is not None and table.flagged.any():
+            break
+        yield cells_of(group, table)
+        seen += 1
+    else:
+        return
+    base = base_table(context, inputs, True)
+    for k, table in enumerate(_tables(context, group, inputs, True)):
+        if k >= seen:
+            cells = cells_of(group, table)
+            polish(context.rest, context.plan, cells, base, inputs)
+            yield cells
+
+
+def _tables(context: Context, group: Group, inputs: Inputs, careful: bool) -> Iterator[Table]:
+    base = base_table(context, inputs, careful)
+    if base.alive is not None and not base.alive.any():
+        return
+    for table in _split(context, group, group_table(base, None), 0):
+        if base.flagged is not None:
+            table.flagged = base.flagged
+        yield table
+
+
+def _split(context: Context, group: Group, table: Table, start: int) -> Iterator[Table]:
+    offset = len(context.plan.base)
+    for k in range(start, len(group.steps)):
+        run_steps(group.steps[k:k + 1], table, None, offset + k)
+        if table.branches == 0:
+            return
+        if table.branches > BLOCK and k + 1 < len(group.steps):
+            for a in range(0, table.branches, BLOCK):
+                yield from _split(context, group, part_of(table, a, a + BLOCK), k + 1)
+            return
+    yield table
+
+
+def part_of(table: Table, start: int, stop: int) -> Table:
+    """Some of a table's branches, as a table of its own."""
+    part = copy(table)
+    for name in ("points", "values", "level_of", "bounds", "bound_level"):
+        setattr(part, name, dict(getattr(table, name)))
+    for name in ("maps", "codes", "sines", "sine_bounds"):
+        setattr(part, name, list(getattr(table, name)))
+    part.renumber(np.arange(start, min(stop, table.branches)))
+    return part
+
+
+def all_cells(context: Context, group: Group, inputs: Inputs, most: int) -> tuple[Cells, bool]:
+    """The branches of one frame as one value, at most about ``most``; whether that cut it short."""
+    pieces: list[Cells] = []
+    total = 0
+    for cells in stream_cells(context, group, inputs):
+        pieces.append(cells)
+        total += len(cells.codes)
+        if total > most:
+            return joined(pieces), True
+    return (joined(pieces) if pieces else _none(group)), False
+
+
+def _none(group: Group) -> Cells:
+    return Cells(group, np.zeros((0, group.bits), dtype=np.int16),
+                 [np.zeros((2, 0, 1)) for _ in group.joints], np.zeros((0, 1), dtype=bool),
+                 np.zeros((0, 1)), [])
+
+
+def joined(pieces: list[Cells]) -> Cells:
+    """Blocks put together."""
+    if len(pieces) == 1:
+        return pieces[0]
+    first = pieces[0]
+
+    def whole(arrays: list[np.ndarray], axis: int) -> np.ndarray:
+        wide = [np.broadcast_to(a, (*a.shape[:axis], len(c.codes), *a.shape[axis + 1:]))
+                for a, c in zip(arrays, pieces, strict=True)]
+        return np.concatenate(wide, axis=axis)
+
+    places = [whole([c.places[k] for c in pieces], 1) for k in range(len(first.places))]
+    values = {v: whole([c.values[v] for c in pieces], 0) for v in first.values}
+    found = max((c.found for c in pieces), key=lambda f: list(type(f)).index(f))
+    return Cells(first.group, np.concatenate([c.codes for c in pieces]), places,
+                 np.concatenate([c.alive for c in pieces]),
+                 np.concatenate([c.margin for c in pieces]), [], found, values)
