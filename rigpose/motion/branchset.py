@@ -22,6 +22,10 @@ from rigpose.motion.naming import Names, name_rows, wanted_signs
 from rigpose.solve.knowns import Knowns
 
 
+SOON = 256
+"""Frames within which a row that begins at a dead centre is looked at for its bends."""
+
+
 @dataclass(frozen=True, eq=False)
 class Branches:
     """Branches (rows) over frames, nearest to the rest pose first. All arrays are read-only.
@@ -72,8 +76,18 @@ class Branches:
 
     @cached_property
     def signs(self) -> Signs:
-        """Bends ``(n_branches, n_bends)`` at each row's first frame with a pose."""
-        return measure_bends(self.rig, self.first_poses)
+        """Bends ``(n_branches, n_bends)`` where each row begins.
+
+        A row that begins at a dead centre has those of the first frame in which it has left it.
+        """
+        signs = measure_bends(self.rig, self.first_poses)
+        if len(self.frames) > 1:
+            for row in np.flatnonzero((signs == 0).any(axis=1)):
+                soon = measure_bends(self.rig, self.positions[row, :SOON])
+                clear = np.flatnonzero((np.abs(soon) == 1).all(axis=1))
+                if len(clear):
+                    signs[row] = soon[clear[0]]
+        return signs
 
     @cached_property
     def first_poses(self) -> Array:
@@ -86,7 +100,17 @@ class Branches:
     @cached_property
     def names(self) -> Names:
         """One name a branch: the bends that tell it from the others."""
-        return name_rows(self.rig, self.signs, self.meets)
+        return name_rows(self.rig, self.signs, self.meets, self._moved)
+
+    @property
+    def _moved(self) -> NDArray[np.bool_]:
+        """(n_joints,) whether a joint's own place differs between branches."""
+        some = self.first_poses[:4096]
+        if not len(some):
+            return np.zeros(len(self.joints), dtype=bool)
+        apart = np.ptp(some, axis=0).max(axis=1)
+        moved: NDArray[np.bool_] = apart > 1e-9 * self.size
+        return moved
 
     @cached_property
     def mirror_of(self) -> tuple[int | None, ...]:
@@ -159,7 +183,8 @@ class Branches:
             margin=self.margin[0], name=self.names[0], bends=self.names.bends(0),
             knowns=self.knowns, size=self.size, found=self.found,
             read={n: a[0] for n, a in self.values.items()},
-            events=self.events[0] if self.events else (), redundant=self.redundant)
+            events=self.events[0] if self.events else (), redundant=self.redundant,
+            notes=self.notes)
 
 
 def _some(names: Names) -> str:

@@ -82,6 +82,7 @@ class Motion:
     redundant: frozenset[str] = frozenset()
     fps: Fraction = Fraction(24)
     title: str = ""
+    notes: tuple[str, ...] = ()
 
     def __len__(self) -> int:
         return len(self.frames)
@@ -147,6 +148,7 @@ class Motion:
                  + (f"{missing} without a pose" if missing else "every frame has a pose")]
         lines += [str(s) for s in self.spans]
         lines += [str(p) for p in self.problems]
+        lines += self.notes
         lines += [str(e) for e in self.events[:12]]
         if len(self.events) > 12:
             lines.append(f"and {len(self.events) - 12} more events")

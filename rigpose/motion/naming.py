@@ -54,9 +54,15 @@ class Names(Sequence[str]):
                 for k, b in enumerate(self._bends)}
 
 
-def name_rows(rig: Rig, signs: Signs, meets: NDArray[np.bool_]) -> Names:
-    """Names for rows with bends ``(n_branches, n_bends)``, in the order of the rows."""
+def name_rows(rig: Rig, signs: Signs, meets: NDArray[np.bool_],
+              moved: NDArray[np.bool_]) -> Names:
+    """Names for rows with bends ``(n_branches, n_bends)``, in the order of the rows.
+
+    moved : (n_joints,) whether the joint's own place differs; such joints are told first
+    """
+    bends = bends_of(rig)
     varies = [k for k in range(signs.shape[1]) if len(signs) and np.ptp(signs[:, k])]
+    varies.sort(key=lambda k: not moved[bends[k].joint])
     told, classes = _telling(signs, varies)
     return Names(rig, signs, told, _counts(classes), meets)
 
@@ -98,7 +104,8 @@ def _counts(classes: NDArray[np.int64]) -> NDArray[np.intp]:
     fresh[1:] = ordered[1:] != ordered[:-1]
     start = np.maximum.accumulate(np.where(fresh, np.arange(len(ordered)), 0))
     ends = np.flatnonzero(fresh)
-    lone = np.repeat(np.diff(np.append(ends, len(ordered))) == 1, np.diff(np.append(ends, len(ordered))))
+    length = np.diff(np.append(ends, len(ordered)))
+    lone = np.repeat(length == 1, length)
     count = np.empty(len(classes), dtype=np.intp)
     count[order] = np.where(lone, 0, np.arange(len(ordered)) - start + 1)
     return count

@@ -15,11 +15,13 @@ import numpy as np
 from scipy.sparse import csr_array
 from scipy.sparse.csgraph import dijkstra
 
-from rigpose.model.equations import Array
+from rigpose.model.equations import Array, Ints
 from rigpose.model.rig import Pair, Plate, Rail, Rig
 
 NEVER_ZERO = 1e-300
 """Stands for a gap of zero, which a sparse graph would take for no edge."""
+AT_ONCE = 256
+"""Shortest ways are looked for from so many joints at a time, which bounds the memory."""
 
 
 @dataclass(frozen=True)
@@ -63,30 +65,22 @@ def open_gaps(rig: Rig, tolerance: float) -> tuple[Gap, ...]:
     graph = csr_array(([max(r.most, NEVER_ZERO) for r in best.values()],
                        (ends[:, 0], ends[:, 1])), shape=(n, n)) if best else csr_array((n, n))
     held = [r for r in reaches if r.least > 0]
-    sources = np.unique([r.a for r in held])
+    sources = np.unique(np.array([r.a for r in held], dtype=np.intp))
     gaps: list[Gap] = []
-    for start in range(0, len(sources), 256):
-        some = sources[start : start + 256]
-        gaps += _short_ones(rig, held, some, graph, best, tolerance)
+    for start in range(0, len(sources), AT_ONCE):
+        some = sources[start : start + AT_ONCE]
+        far, before = dijkstra(graph, False, some, True)
+        row = {int(s): k for k, s in enumerate(some)}
+        for r in (r for r in held if r.a in row):
+            if far[row[r.a], r.b] < r.least - tolerance:
+                way = _way(before[row[r.a]], r.a, r.b)
+                chain = tuple(best[min(e), max(e)].part for e in way)
+                pair = (rig.joint_names[r.a], rig.joint_names[r.b])
+                gaps.append(Gap(r.part, pair, r.least, chain, float(far[row[r.a], r.b])))
     return tuple(sorted(gaps, key=lambda g: -g.short))
 
 
-def _short_ones(
-    rig: Rig, held: list[Reach], sources: Array, graph: csr_array,
-    best: dict[tuple[int, int], Reach], tolerance: float,
-) -> Iterator[Gap]:
-    far, before = dijkstra(graph, directed=False, indices=sources, return_predecessors=True)
-    row = {int(s): k for k, s in enumerate(sources)}
-    for r in held:
-        if r.a in row and far[row[r.a], r.b] < r.least - tolerance:
-            way = _way(before[row[r.a]], r.a, r.b)
-            chain = tuple(best[min(e), max(e)].part for e in way)
-            names = rig.joint_names
-            yield Gap(r.part, (names[r.a], names[r.b]), r.least, chain,
-                      float(far[row[r.a], r.b]))
-
-
-def _way(before: Array, a: int, b: int) -> list[tuple[int, int]]:
+def _way(before: Ints, a: int, b: int) -> list[tuple[int, int]]:
     """The edges of the shortest way from a to b."""
     way = []
     while b != a:

@@ -51,7 +51,7 @@ def _group(rig: Rig, group: Frozen, pinned: set[str]) -> int:
 def structural_freedoms(piece: Piece) -> int:
     """Coordinates of a piece that no row can be matched with: no less than this is free."""
     eqs = piece.system.eqs
-    slopes = slopes_at(piece.system, eqs.at)[piece.rows][:, piece.columns]
-    pattern = csr_array(slopes != 0)
+    pattern = csr_array(slopes_at(piece.system, eqs.at)[piece.rows][:, piece.columns])
+    pattern.eliminate_zeros()
     matched = maximum_bipartite_matching(pattern, perm_type="row")
     return len(piece.columns) - int(np.sum(np.asarray(matched) >= 0))

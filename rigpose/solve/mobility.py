@@ -20,12 +20,15 @@ from rigpose.model.equations import Array, Ints
 from rigpose.solve.pieces import Piece
 
 STEP = 1e-3
-"""A trial step as a fraction of the size; longer where slack would hide what it shows."""
+"""A trial step as a fraction of the size, or of four typical lengths where the rig is longer;
+a larger fraction where slack would hide what it shows."""
 ROUNDS = 30
 STILL = 1e-5
 """Newton has ended when it moves less than this fraction of the trial step."""
 KEPT = 0.1
 """A motion is real when at least this fraction of its step is left after assembling."""
+SAME_WAY = 0.95
+"""Cosine above which two steps go the same way; a curved way and its way back differ a little."""
 SEED = 23
 
 
@@ -132,7 +135,7 @@ def _solve(square: Array, right: Array) -> Array:
     if square.shape[-1] == 0:
         return np.zeros_like(right)
     try:
-        return np.linalg.solve(square, right)
+        return np.asarray(np.linalg.solve(square, right), dtype=np.float64)
     except np.linalg.LinAlgError:
         return np.asarray(np.linalg.pinv(square) @ right)
 
@@ -143,7 +146,8 @@ def _truncated(matrix: Array, right: Array, zero: float) -> Array:
         return np.zeros((len(matrix), matrix.shape[2]))
     u, s, vt = np.linalg.svd(matrix, full_matrices=False)
     inverse = np.where(s > zero, 1 / np.where(s > zero, s, 1.0), 0.0)
-    return np.einsum("njk,nj->nk", vt, inverse * np.einsum("nsj,ns->nj", u, right))
+    along = inverse * np.einsum("nsj,ns->nj", u, right)
+    return np.asarray(np.einsum("njk,nj->nk", vt, along))
 
 
 def rank_split(piece: Piece, rest: Array, zero: float, reach: float) -> Split:
@@ -156,7 +160,7 @@ def rank_split(piece: Piece, rest: Array, zero: float, reach: float) -> Split:
     led, lead = np.sort(columns[:rank]), np.sort(columns[rank:])
     rows = qr(jac[:, led].T, mode="r", pivoting=True)[1] if rank else np.arange(m)
     held, spare = np.sort(rows[:rank]), np.sort(rows[rank:])
-    step = max(STEP, 3 * np.sqrt(zero)) * reach
+    step = max(STEP, 3 * np.sqrt(zero)) * piece.length(reach)
     return Split(piece, rest, zero, step, s[::-1], held, spare, led, lead)
 
 
@@ -233,7 +237,7 @@ def _distinct(split: Split, x: Array) -> list[int]:
     way = _directions(split, x)
     chosen: list[int] = []
     for k in range(len(x)):
-        if all(abs(way[k] @ way[c]) < 0.995 for c in chosen):
+        if all(abs(way[k] @ way[c]) < SAME_WAY for c in chosen):
             chosen.append(k)
     return chosen
 

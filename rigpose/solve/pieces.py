@@ -10,6 +10,7 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
+from numpy.typing import NDArray
 from scipy.sparse import csr_array
 from scipy.sparse.csgraph import connected_components
 
@@ -45,6 +46,14 @@ class Piece:
         row[self.rows] = np.arange(len(self.rows))
         column[self.columns] = np.arange(len(self.columns))
         return row, column
+
+    def length(self, reach: float) -> float:
+        """A length that is typical of the piece, at most ``reach``: steps are measured by it."""
+        eqs, dist = self.system.eqs, self.system.dist_rows
+        every = np.concatenate([eqs.distances.length[dist],
+                                [b.distance(*b.joints[list(b.base)]) for b in eqs.bodies]])
+        mine = every[self.rows[self.rows < len(every)]]
+        return min(reach, 4 * float(np.median(mine))) if len(mine) else reach
 
     def both(self, x: Array) -> tuple[Array, Array]:
         """Weighted residuals ``(N, m)`` and Jacobians ``(N, m, c)`` at poses ``(N, n, dim)``."""
@@ -123,7 +132,7 @@ def cut(system: System, x: Array) -> Cut:
 
 
 def _labels(
-    n: int, m: int, row: Ints, joint: Ints, free: Array
+    n: int, m: int, row: Ints, joint: Ints, free: NDArray[np.bool_]
 ) -> tuple[Ints, int]:
     """Component of every joint and row; an entry of a pinned joint connects nothing."""
     keep = free[joint]

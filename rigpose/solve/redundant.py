@@ -42,27 +42,20 @@ def redundant_sets(system: System, pieces: Cut, found: list[Motions], rest: Arra
 ]:
     """All redundant sets; their departures are measured at ``rest (n, dim)``."""
     residual = system.residual(rest[None], unknown(system, 1))[0]
-    order = {name: k for k, name in enumerate(dict.fromkeys(system.row_names))}
     sets: list[Redundancy] = []
     for motion in found:
         rows = motion.piece.rows
         for e, circuit in circuits(system, rows, motion.stresses):
             off = float(circuit @ residual[rows]) * system.eqs.scale
-            sets.append(_named(system, rows, e, circuit, off, order))
+            share = np.abs(circuit) > ABSENT * np.abs(circuit).max()
+            names = tuple(dict.fromkeys(system.row_names[r] for r in rows[share]))
+            sets.append(Redundancy(names, system.row_names[rows[e]], off))
     for r in pieces.fixed:
         name = system.row_names[r]
         sets.append(Redundancy((name,), name, -float(residual[r]) * system.eqs.scale))
     bodies = {b.name for b in system.eqs.bodies}
     real = (s for s in sets if len(s.parts) > 1 or s.last not in bodies)
     return tuple(dict.fromkeys(real))
-
-
-def _named(
-    system: System, rows: Ints, e: int, circuit: Array, off: float, order: dict[str, int]
-) -> Redundancy:
-    share = np.abs(circuit) > ABSENT * np.abs(circuit).max()
-    names = sorted({system.row_names[r] for r in rows[share]}, key=order.__getitem__)
-    return Redundancy(tuple(names), system.row_names[rows[e]], off)
 
 
 def giving_way(system: System, rows: Ints) -> Ints:

@@ -8,7 +8,7 @@ the plan: what one does depends on earlier ones only.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -112,13 +112,17 @@ def survey(context: Context, group: Group, clock: Clock) -> tuple[Rows, bool]:
     return rows, screen.any
 
 
-def follow(context: Context, group: Group, clock: Clock, codes: Codes) -> Rows:
-    """Rows that start with the given signs at the first frame, through dead centres."""
+def follow(context: Context, group: Group, clock: Clock, codes: Codes,
+           values: Mapping[int, Array] | None = None) -> Rows:
+    """Rows that start with the given signs at the first frame, through dead centres.
+
+    values : what was read off at the first frame, where a motion goes on from an earlier one
+    """
     flips = Flips(codes)
     passes: list[Pass] = []
     done: set[int] = set()
     while True:
-        rows, screen = _sweep(context, group, clock, flips)
+        rows, screen = _sweep(context, group, clock, flips, values)
         turned = False
         for choice in range(group.bits):
             if choice in done:
@@ -139,7 +143,8 @@ def follow(context: Context, group: Group, clock: Clock, codes: Codes) -> Rows:
 
 
 def _sweep(context: Context, group: Group, clock: Clock,
-           flips: Flips | None) -> tuple[Rows, Screen]:
+           flips: Flips | None,
+           values: Mapping[int, Array] | None = None) -> tuple[Rows, Screen]:
     """One run over all frames, block by block."""
     screen = Screen(group.bits)
     pieces: list[tuple[int, int, Cells]] = []
@@ -150,7 +155,8 @@ def _sweep(context: Context, group: Group, clock: Clock,
         if flips is None:
             cells = search(context, group, inputs, consecutive=True)
         else:
-            hints = {v: a[:, -1:] for v, a in pieces[-1][2].values.items()} if pieces else {}
+            hints = {v: a[:, -1:] for v, a in pieces[-1][2].values.items()} if pieces else (
+                dict(values or {}))
             cells = search(context, group, inputs, flips.ways(start, stop), len(flips.codes),
                            consecutive=True, hints=hints)
         screen.see(start, cells.sines, cells.codes)

@@ -87,7 +87,7 @@ def _heading(table: Table, heading: Heading) -> Array:
         u[0] * e[0] - u[1] * e[1], u[0] * e[1] + u[1] * e[0]))
 
 
-def _line(table: Table, line: Line) -> tuple[Array, Array]:
+def line_of(table: Table, line: Line) -> tuple[Array, Array]:
     """A point and a unit direction."""
     if line.kind == "points":
         p, q = (table.point(k) for k in line.points)
@@ -125,13 +125,13 @@ def _(step: Meet, table: Table, ways: Ways, number: int) -> None:
         choose(step.dst, step.bit, crossing, table, ways, number,
                (first.centre, second.centre), lambda: _circle_rate(c1, r1, c2, r2))
     elif isinstance(first, Line) and isinstance(second, Circle):
-        p, d = _line(table, first)
+        p, d = line_of(table, first)
         radius, centre = _length(table, second.radius), table.point(second.centre)
         crossing = line_circle(p, d, centre, radius)
         choose(step.dst, step.bit, crossing, table, ways, number,
                (second.centre, *first.points), lambda: (2.0 / radius, radius))
     elif isinstance(first, Line) and isinstance(second, Line):
-        point, sine = line_line(*_line(table, first), *_line(table, second))
+        point, sine = line_line(*line_of(table, first), *line_of(table, second))
         bound = _parents(table, (*first.points, *second.points)) / sine if table.careful else 0.0
         table.put(step.dst, point, bound)
         table.kill(np.isfinite(point[0]), number)

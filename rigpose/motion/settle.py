@@ -1,0 +1,113 @@
+"""One row over the frames of a shot, window by window, so that long shots stream."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rigpose.ground.words import Found
+from rigpose.model.equations import Array
+from rigpose.motion.product import base_places
+from rigpose.solve.clock import Clock
+from rigpose.solve.plan import Group
+from rigpose.solve.rows import Codes, Pass, Rows, follow
+from rigpose.solve.search import Cells, Context
+from rigpose.solve.stepping import walk
+
+WINDOW = 4096
+HALO = 2
+
+
+@dataclass(frozen=True)
+class Begin:
+    """Where one group's row begins: its signs, and its places ``(2, 1, 1)`` for the joints of a
+    group that is followed frame by frame."""
+
+    codes: Codes
+    places: Sequence[Array]
+    values: Mapping[int, Array] = field(default_factory=dict)
+
+
+@dataclass(frozen=True)
+class Piece:
+    """Frames ``start`` … ``stop`` of a row: positions ``(n, n_joints, dim)`` in the rig's frame,
+    ``alive`` and ``margin`` ``(n,)``, values read off by number, and dead centres."""
+
+    start: int
+    stop: int
+    positions: Array
+    alive: NDArray[np.bool_]
+    margin: Array
+    values: Mapping[int, Array]
+    passes: tuple[tuple[int, Pass], ...]
+
+
+def pieces(context: Context, clock: Clock, begins: Sequence[Begin],
+           window: int = WINDOW) -> Iterator[Piece]:
+    """The row that begins with the given signs at frame 0, in pieces of ``window`` frames."""
+    state = list(begins)
+    for start in range(0, clock.count, window):
+        stop = min(start + window, clock.count)
+        low, high = max(start - HALO, 0), min(stop + HALO, clock.count)
+        part = _window(clock, low, high)
+        rows, after = [], []
+        for group, begin in zip(context.plan.groups, state, strict=True):
+            row = _follow(context, group, part, begin)
+            rows.append(row)
+            after.append(_next(row, begin, max(stop - HALO, 0) - low))
+        yield _piece(context, part, rows, low, start, stop)
+        state = after
+
+
+def _window(clock: Clock, low: int, high: int) -> Clock:
+    return Clock(clock.eqs, high - low, clock.knowns.part(slice(low, high)),
+                 lambda times: clock.between(times + low))
+
+
+def _follow(context: Context, group: Group, clock: Clock, begin: Begin) -> Rows:
+    if group.binary:
+        return follow(context, group, clock, begin.codes, begin.values)
+    alive = np.array([[bool(np.isfinite(begin.places[0]).all()) if begin.places else True]])
+    cells = Cells(group, begin.codes, list(begin.places), alive, np.ones((1, 1)), [],
+                  Found.COMPLETE, dict(begin.values))
+    return walk(context, group, clock, cells, 0, 1)
+
+
+def _next(row: Rows, begin: Begin, frame: int) -> Begin:
+    """The state at one frame of a window, from which the next window goes on."""
+    codes = begin.codes.copy()
+    for p in row.passes:
+        if p.kind == "passed" and p.time <= frame:
+            codes[0, p.choice] *= -1
+    places = [p[:, :1, frame:frame + 1] if p.shape[2] > 1 else p for p in row.places]
+    values = {v: a[:, frame:frame + 1] for v, a in row.values.items()}
+    return Begin(codes, places, values)
+
+
+def _piece(context: Context, clock: Clock, rows: Sequence[Rows], low: int, start: int,
+           stop: int) -> Piece:
+    eqs = context.plan.eqs
+    base, base_alive = base_places(context, clock)
+    cut = slice(start - low, stop - low)
+    n = stop - start
+    alive, margin = np.broadcast_to(base_alive[0], (clock.count,))[cut].copy(), np.ones(n)
+    positions = np.full((n, eqs.n, eqs.dim), np.nan)
+    sources = dict(base)
+    values: dict[int, Array] = {}
+    for row in rows:
+        alive &= row.alive[0, cut]
+        margin = np.minimum(margin, np.broadcast_to(row.margin[0], (clock.count,))[cut])
+        sources.update(zip(row.group.joints, row.places, strict=True))
+        values |= {v: a[0, cut] for v, a in row.values.items()}
+    for j, place in sources.items():
+        mine = place[:, 0, cut] if place.shape[2] > 1 else place[:, 0]
+        positions[:, j] = (mine * eqs.scale).T + eqs.origin
+    positions[~alive] = np.nan
+    margin[~alive] = np.nan
+    passes = tuple((g, Pass(p.row, p.choice, p.time + low, p.kind))
+                   for g, row in enumerate(rows) for p in row.passes
+                   if (p.time + low >= start or start == 0) and p.time + low < stop)
+    return Piece(start, stop, positions, alive, margin, values, passes)
