@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 
 import numpy as np
-from numpy.typing import NDArray
 
 from rigpose.ground.budget import Budget, Watch, go_on
 from rigpose.ground.words import Found, State, weaker
@@ -77,11 +76,7 @@ def branches_on(rest: Rest, clock: Clock, frames: Array, budget: Budget,
         rows, cut = group_rows(context, group, clock, budget, watch)
         done = weaker(done, Found.BUDGET if cut else rows.found)
         picks.append(kept(rest, rows))
-    base, base_alive = base_places(context, clock)
-    mixed = combined(rest, plan, picks, base, base_alive, budget.poses)
-    if mixed.cut:
-        done = weaker(done, Found.BUDGET)
-    return _made(rest, plan, clock, frames, picks, mixed, base, done)
+    return made(context, clock, frames, picks, done)
 
 
 def group_rows(context: Context, group: Group, clock: Clock, budget: Budget,
@@ -90,24 +85,23 @@ def group_rows(context: Context, group: Group, clock: Clock, budget: Budget,
     if clock.count == 1:
         cells, cut = all_cells(context, group, clock.whole(slice(0, 1)), budget.poses)
         return Rows(group, cells.codes, cells.places, cells.alive, cells.margin, cells.values,
-                    found=cells.found), cut
+                    found=cells.found, turning=cells.turning), cut
     if not group.binary:
         return enumerate_rows(context, group, clock, watch), False
     rows, meets = survey(context, group, clock)
     if not meets or not len(rows.codes):
         return rows, False
-    return _with_births(context, group, clock, rows), False
+    return follow(context, group, clock, rows.codes), False
 
 
-def _with_births(context: Context, group: Group, clock: Clock, all_signs: Rows) -> Rows:
-    """Rows followed through dead centres; poses that none of them holds begin rows of their own."""
-    rows = follow(context, group, clock, all_signs.codes)
-    return rows
-
-
-def _made(rest: Rest, plan: Plan, clock: Clock, frames: Array, picks: Sequence[Rows],
-          mixed: Picks, base: Mapping[int, Array], found: Found) -> Branches:
-    eqs = rest.equations
+def made(context: Context, clock: Clock, frames: Array, picks: Sequence[Rows],
+         found: Found) -> Branches:
+    """The product of the groups' rows as a set of branches, nearest to rest first."""
+    rest, plan, eqs = context.rest, context.plan, context.plan.eqs
+    base, base_alive = base_places(context, clock)
+    mixed = combined(rest, picks, base_alive, context.budget.poses)
+    if mixed.cut:
+        found = weaker(found, Found.BUDGET)
     positions = assembled(rest, picks, mixed, base, clock.count)
     state = np.where(mixed.alive, np.uint8(State.MET), np.uint8(State.NONE))
     groups = tuple(tuple(eqs.rig.joint_names[j] for j in rows.group.joints) for rows in picks)
@@ -118,7 +112,17 @@ def _made(rest: Rest, plan: Plan, clock: Clock, frames: Array, picks: Sequence[R
         margin=mixed.margin, found=found, groups=groups, choice=mixed.choice, count=mixed.count,
         size=rest.size, meets=mixed.meets, values=_read_off(rest, picks, mixed),
         events=_events(eqs.rig, frames, picks, mixed),
-        notes=useless_targets(rest, plan), redundant=frozenset(plan.redundant))
+        notes=(*useless_targets(rest, plan), *_turning(eqs.rig, picks)),
+        redundant=frozenset(plan.redundant))
+
+
+def _turning(rig: Rig, picks: Sequence[Rows]) -> tuple[str, ...]:
+    """A sentence for each joint that turns freely where two others lie on each other."""
+    found = sorted({t for rows in picks for t in rows.turning})
+    return tuple(
+        f'where its neighbours lie on each other "{rig.joint_names[joint]}" turns freely '
+        f"({', '.join(parts)}): such poses are not listed"
+        for joint, parts in found if joint < len(rig.joints))
 
 
 def _read_off(rest: Rest, picks: Sequence[Rows], mixed: Picks) -> dict[str, Array]:
@@ -158,8 +162,3 @@ def _event(rig: Rig, frames: Array, step: Meet | Swing | Cluster, p: Pass) -> Ev
     joints = tuple(rig.joint_names[j] for j in writes(step) if j < len(rig.joints))
     at = float(np.interp(p.time, np.arange(len(frames)), frames))
     return Event(at, p.kind, joints, step.parts)
-
-
-def every_row(rows: Rows) -> NDArray[np.intp]:
-    """Numbers of the rows that live at some frame."""
-    return np.flatnonzero(rows.alive.any(axis=1))

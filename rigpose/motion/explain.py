@@ -58,7 +58,7 @@ def _span(context: Context, frames: Array, run: NDArray[np.intp],
 
 
 def _causes(context: Context, clock: Clock, which: NDArray[np.intp],
-            codes: Sequence[Array]) -> list[_Cause]:
+            signs: SignsAt) -> list[_Cause]:
     found: list[_Cause | None] = [None] * len(which)
     base = base_table(context, clock.at(which.astype(float)), True,
                       killer=np.full((1, len(which)), -1, dtype=np.int32))

@@ -39,7 +39,7 @@ class Names(Sequence[str]):
         row = range(len(self))[k]
         if self._meets[row]:
             # Two branches meet in this pose: it has both names.
-            return " = ".join(self._text(row, side) for side in (1, -1))
+            return " = ".join(dict.fromkeys(self._text(row, side) for side in (1, -1)))
         return self._text(row, 0)
 
     def _text(self, row: int, straight: int) -> str:

@@ -11,7 +11,6 @@ from numpy.typing import NDArray
 from rigpose.model.equations import Array
 from rigpose.solve.clock import Clock
 from rigpose.solve.flow import writes
-from rigpose.solve.plan import Plan
 from rigpose.solve.rest import Rest
 from rigpose.solve.rows import Rows
 from rigpose.solve.search import Context, base_table
@@ -52,8 +51,31 @@ def base_places(context: Context, clock: Clock) -> tuple[dict[int, Array], NDArr
 
 
 def kept(rest: Rest, rows: Rows) -> Rows:
-    """Rows that live somewhere, nearest to rest first."""
-    return rows.take(_order(rest, rows))
+    """Rows that live somewhere, nearest to rest first, none twice."""
+    ordered = rows.take(_order(rest, rows))
+    if ordered.alive.shape[1] == 1 or not len(ordered.codes):
+        return ordered
+    return ordered.take(_own(rest, ordered))
+
+
+def _own(rest: Rest, rows: Rows) -> Ints:
+    """Rows with a pose of their own: one that lives at dead centres only, in poses of other rows,
+    is none."""
+    margin = np.where(rows.alive, rows.margin, 0.0)
+    shadows = np.flatnonzero(margin.max(axis=1) < MEET)
+    lost = set()
+    for row in shadows:
+        frame = int(np.argmax(rows.alive[row]))
+        others = np.flatnonzero(rows.alive[:, frame])
+        gap = np.zeros(len(others))
+        for place in rows.places:
+            if place.shape[1] > 1:
+                away = place[:, others, frame] - place[:, row, frame][:, None]
+                gap = np.maximum(gap, np.abs(away).max(axis=0))
+        near = {int(k) for k in others[gap < MEET * rest.reach]} - {int(row)} - lost
+        if any(k not in shadows or k < row for k in near):
+            lost.add(int(row))
+    return np.array([k for k in range(len(rows.codes)) if k not in lost], dtype=np.intp)
 
 
 def _order(rest: Rest, rows: Rows) -> Ints:
@@ -80,10 +102,9 @@ def _gaps(rest: Rest, rows: Rows) -> Array:
     return total
 
 
-def combined(rest: Rest, plan: Plan, picks: Sequence[Rows], base: Mapping[int, Array],
-             base_alive: NDArray[np.bool_], most: int) -> Picks:
+def combined(rest: Rest, picks: Sequence[Rows], base_alive: NDArray[np.bool_],
+             most: int) -> Picks:
     """The product of the groups, nearest to rest first, cut at ``most``."""
-    del base, plan
     sizes = [len(rows.codes) for rows in picks]
     count = int(np.prod([float(s) for s in sizes])) if sizes else 1
     if not picks:

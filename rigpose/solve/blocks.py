@@ -15,6 +15,7 @@ from scipy.sparse import csr_array, csr_matrix
 from scipy.sparse.csgraph import connected_components, maximum_bipartite_matching
 
 from rigpose.model.equations import Array, Ints
+from rigpose.model.gauges import measure
 from rigpose.model.system import System
 
 DEPENDENT = 1e-7
@@ -55,7 +56,7 @@ def _columns(joints: NDArray[np.intp], dim: int) -> Ints:
 
 def jacobian_near(system: System, poses: Array) -> Array:
     """The Jacobian at the pose close to rest, ``(M, n * dim)``."""
-    values = np.full((1, len(system.eqs.values)), np.nan)
+    values = measure(system.eqs, poses[1:2], np.arange(len(system.eqs.values)))
     with np.errstate(invalid="ignore"):
         _, jacobian = system.both(poses[1:2], values)
     return np.nan_to_num(jacobian[0])

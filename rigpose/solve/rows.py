@@ -53,6 +53,7 @@ class Rows:
     values: dict[int, Array] = field(default_factory=dict)
     passes: list[Pass] = field(default_factory=list)
     found: Found = Found.COMPLETE
+    turning: frozenset[tuple[int, tuple[str, ...]]] = frozenset()
 
     def take(self, which: NDArray[np.intp]) -> Rows:
         """Some of the rows."""
@@ -63,7 +64,7 @@ class Rows:
             self.alive[which], self.margin[which],
             {v: a if len(a) == 1 else a[which] for v, a in self.values.items()},
             [Pass(new[p.row], p.choice, p.time, p.kind) for p in self.passes if p.row in new],
-            self.found)
+            self.found, self.turning)
 
 
 class Flips:
@@ -171,7 +172,7 @@ def _joined(group: Group, frames: int, pieces: list[tuple[int, int, Cells]],
         cells = pieces[0][2]
         codes = cells.codes if flips is None else flips.codes
         return Rows(group, codes, cells.places, cells.alive, cells.margin, cells.values,
-                    found=cells.found)
+                    found=cells.found, turning=cells.turning)
     if flips is not None:
         codes, where = flips.codes, [np.arange(len(flips.codes))] * len(pieces)
     else:
@@ -192,7 +193,8 @@ def _joined(group: Group, frames: int, pieces: list[tuple[int, int, Cells]],
         found = weaker(found, cells.found)
     values = {v: np.concatenate([c.values[v] for _, _, c in pieces], axis=1)
               for v in pieces[0][2].values}
-    return Rows(group, codes, places, alive, margin, values, found=found)
+    turning = frozenset[tuple[int, tuple[str, ...]]]().union(*(c.turning for _, _, c in pieces))
+    return Rows(group, codes, places, alive, margin, values, found=found, turning=turning)
 
 
 def _all_codes(lists: list[Codes]) -> tuple[Codes, list[NDArray[np.intp]]]:

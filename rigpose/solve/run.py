@@ -12,7 +12,17 @@ from functools import singledispatch
 import numpy as np
 from numpy.typing import NDArray
 
-from rigpose.kernels.meet import Array, circle_circle, cross, dot, line_circle, line_line, perp, turn
+from rigpose.kernels.meet import (
+    Array,
+    Crossing,
+    circle_circle,
+    cross,
+    dot,
+    line_circle,
+    line_line,
+    perp,
+    turn,
+)
 from rigpose.model.gauges import measure
 from rigpose.solve.measure import check_passes
 from rigpose.solve.newton import cluster_branches, cluster_follow
@@ -43,6 +53,8 @@ from rigpose.solve.values import joints_of_value
 Ways = Mapping[int, Array] | None
 """For every choice ``(B or 1, F or 1)`` of +1 and -1; None tries both."""
 CAREFUL = 1e-7
+ONE_PLACE = 64.0
+"""Centres nearer than so many error bounds can't be told apart."""
 
 
 def run_steps(steps: Sequence[Step], table: Table, ways: Ways, first: int = 0) -> None:
@@ -122,6 +134,8 @@ def _(step: Meet, table: Table, ways: Ways, number: int) -> None:
         r1, r2 = _length(table, first.radius), _length(table, second.radius)
         c1, c2 = table.point(first.centre), table.point(second.centre)
         crossing = circle_circle(c1, r1, c2, r2)
+        if table.careful:
+            crossing = _without_free(step, table, crossing, c2 - c1, np.abs(r1 - r2))
         choose(step.dst, step.bit, crossing, table, ways, number,
                (first.centre, second.centre), lambda: _circle_rate(c1, r1, c2, r2))
     elif isinstance(first, Line) and isinstance(second, Circle):
@@ -136,6 +150,20 @@ def _(step: Meet, table: Table, ways: Ways, number: int) -> None:
         table.put(step.dst, point, bound)
         table.kill(np.isfinite(point[0]), number)
         table.narrow(sine)
+
+
+def _without_free(step: Meet, table: Table, crossing: Crossing, way: Array,
+                  difference: Array | float) -> Crossing:
+    """Equal circles about one point meet everywhere: the joint turns freely, which is told."""
+    assert isinstance(step.first, Circle) and isinstance(step.second, Circle)
+    room = ONE_PLACE * _parents(table, (step.first.centre, step.second.centre))
+    free = (np.sqrt(dot(way, way)) <= room) & (difference <= room)
+    base, side, sine2, sine = crossing
+    alive = free if table.alive is None else free & table.alive
+    if not alive.any():
+        return crossing
+    table.turning.add((step.dst, step.parts))
+    return base, side, np.where(free, -1.0, sine2), np.where(free, np.nan, sine)
 
 
 def _circle_rate(

@@ -37,6 +37,7 @@ class Cells:
     sines: list[Array]
     found: Found = Found.COMPLETE
     values: dict[int, Array] = field(default_factory=dict)
+    turning: frozenset[tuple[int, tuple[str, ...]]] = frozenset()
 
     @property
     def branches(self) -> int:
@@ -80,7 +81,7 @@ def group_table(base: Table, rows: int | None) -> Table:
     table.level_of, table.bounds = dict(base.level_of), dict(base.bounds)
     table.bound_level = dict(base.bound_level)
     table.alive, table.margin = base.alive, base.margin
-    table.killer = base.killer
+    table.killer, table.turning = base.killer, set(base.turning)
     if rows is not None:
         table.branches = rows
     return table
@@ -104,6 +105,7 @@ def cells_of(group: Group, table: Table) -> Cells:
         [table.point(j) for j in group.joints],
         np.broadcast_to(alive, shape), np.broadcast_to(margin, shape),
         table.sines, table.found, {v: table.value(v) for v in table.values},
+        frozenset(table.turning),
     )
 
 
@@ -176,7 +178,8 @@ def _put(cells: Cells, careful: Cells, columns: NDArray[np.intp], rows: NDArray[
         full[at] = np.broadcast_to(theirs, (len(rows), len(columns)))
         sines.append(full)
     return replace(cells, places=places, alive=alive, margin=margin, sines=sines,
-                   found=weaker(cells.found, careful.found))
+                   found=weaker(cells.found, careful.found),
+                   turning=cells.turning | careful.turning)
 
 
 def _merge(cells: Cells, careful: Cells, columns: NDArray[np.intp]) -> Cells:

@@ -107,4 +107,5 @@ def joined(pieces: list[Cells]) -> Cells:
     found = max((c.found for c in pieces), key=lambda f: list(type(f)).index(f))
     return Cells(first.group, np.concatenate([c.codes for c in pieces]), places,
                  np.concatenate([c.alive for c in pieces]),
-                 np.concatenate([c.margin for c in pieces]), [], found, values)
+                 np.concatenate([c.margin for c in pieces]), [], found, values,
+                 frozenset().union(*(c.turning for c in pieces)))

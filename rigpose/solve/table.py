@@ -36,7 +36,11 @@ class Inputs:
 
 @dataclass
 class Table:
-    """State of one run."""
+    """State of one run.
+
+    ``turning`` holds joints, with the parts behind them, that turn freely in some cells: two
+    equal circles about one point are free motion, and no pose is listed there.
+    """
 
     eqs: Equations
     inputs: Inputs
@@ -63,6 +67,7 @@ class Table:
     consecutive: bool = False
     guess: Array | None = None
     found: Found = Found.COMPLETE
+    turning: set[tuple[int, tuple[str, ...]]] = field(default_factory=set)
     budget: Budget = field(default_factory=Budget)
 
     @property

@@ -1,0 +1,127 @@
+"""The branch nearest to a pose, found best-first without listing all of them.
+
+The squared distance of the joints placed so far can only grow, so the open node with the least
+of it is worked on first (Hart, Nilsson and Raphael 1968, with no estimate of what is left).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from heapq import heappop, heappush
+from itertools import count
+
+import numpy as np
+import numpy.typing as npt
+
+from rigpose.ground.errors import BadInput, Problem
+from rigpose.ground.words import Found, weaker
+from rigpose.model.equations import Array
+from rigpose.model.rig import Rig
+from rigpose.motion.branches import made
+from rigpose.motion.branchset import Branches
+from rigpose.motion.streaming import single_frame, whole_group
+from rigpose.solve.clock import Clock
+from rigpose.solve.flow import writes
+from rigpose.solve.knowns import Given, Wished
+from rigpose.solve.plan import Group
+from rigpose.solve.run import run_steps
+from rigpose.solve.rows import Rows
+from rigpose.solve.search import Context, base_table, cells_of, group_table
+from rigpose.solve.stream import part_of
+from rigpose.solve.table import Table
+
+
+def nearest_branch(rig: Rig, drives: Given | None = None, targets: Wished | None = None, *,
+                   near: Mapping[str, npt.ArrayLike] | None = None) -> Branches:
+    """The one branch of a frame that lies nearest to the rest pose, or to given places.
+
+    near : joint name to (dim,) a place in the rig's frame; only these joints count then
+
+    Best-first, so that sets far too large to list are no trouble. No branches where nothing
+    assembles. Raises BadInput like `find_branches`, and for an unknown joint in ``near``.
+    """
+    context, clock = single_frame(rig, drives, targets)
+    goal = _goal(context, near)
+    picks = [nearest_rows(context, group, clock, 1, goal) for group in context.plan.groups]
+    found = Found.COMPLETE
+    for rows in picks:
+        found = weaker(found, rows.found)
+    return made(context, clock, np.zeros(1), picks, found)
+
+
+def _goal(context: Context, near: Mapping[str, npt.ArrayLike] | None) -> Array:
+    """``(n_joints, dim)`` in the equations' frame, NaN where a joint doesn't count."""
+    if near is None:
+        return context.rest.scaled
+    eqs = context.plan.eqs
+    goal = np.full((eqs.n, eqs.dim), np.nan)
+    for joint, place in near.items():
+        if joint not in eqs.rig.index:
+            raise BadInput(Problem(eqs.rig.source, f'near "{joint}"', "names a joint",
+                                   f'"{joint}"', f"there are {', '.join(eqs.rig.joint_names[:8])}"))
+        goal[eqs.rig.index[joint]] = eqs.inward(np.asarray(place, dtype=np.float64))
+    return goal
+
+
+def nearest_rows(context: Context, group: Group, clock: Clock, most: int,
+                 goal: Array | None = None) -> Rows:
+    """The ``most`` branches of one group nearest to a goal ``(n_joints, dim)``, rest by default.
+
+    Groups with a block of several joints are listed; so are frames close to a dead centre.
+    """
+    aim = context.rest.scaled if goal is None else goal
+    if not group.binary:
+        return _nearest_of(whole_group(context, group, clock), aim, most)
+    base = base_table(context, clock.whole(slice(0, 1)), False)
+    tables = _best_first(context, group, group_table(base, None), aim, most)
+    if any(t.flagged is not None and t.flagged.any() for t in (base, *tables)):
+        return _nearest_of(whole_group(context, group, clock), aim, most)
+    if not tables:
+        return whole_group(context, group, clock).take(np.empty(0, dtype=np.intp))
+    cells = [cells_of(group, t) for t in tables]
+    rows = [Rows(group, c.codes, c.places, c.alive, c.margin, c.values) for c in cells]
+    return rows[0] if len(rows) == 1 else _stacked(rows)
+
+
+def _best_first(context: Context, group: Group, start: Table, aim: Array,
+                most: int) -> list[Table]:
+    ticket, offset, done = count(), len(context.plan.base), []
+    heap: list[tuple[float, int, int, Table]] = [(0.0, next(ticket), 0, start)]
+    while heap and len(done) < most:
+        cost, _, k, table = heappop(heap)
+        if k == len(group.steps):
+            done.append(table)
+            continue
+        step = group.steps[k]
+        run_steps(group.steps[k:k + 1], table, None, offset + k)
+        for row in range(table.branches):
+            part = table if table.branches == 1 else part_of(table, row, row + 1)
+            if part.alive is not None and not part.alive.any():
+                continue
+            heappush(heap, (cost + _added(part, writes(step), aim), next(ticket), k + 1, part))
+    return done
+
+
+def _added(table: Table, points: tuple[int, ...], aim: Array) -> float:
+    total = 0.0
+    for p in points:
+        if p < len(aim) and not np.isnan(aim[p, 0]):
+            total += float(((table.point(p)[:, 0, 0] - aim[p]) ** 2).sum())
+    return total
+
+
+def _nearest_of(rows: Rows, aim: Array, most: int) -> Rows:
+    live = np.flatnonzero(rows.alive[:, 0])
+    total = np.zeros(len(rows.codes))
+    for j, place in zip(rows.group.joints, rows.places, strict=True):
+        if not np.isnan(aim[j, 0]):
+            total = total + ((place[:, :, 0].T - aim[j]) ** 2).sum(axis=1)
+    return rows.take(live[np.argsort(total[live], kind="stable")][:most])
+
+
+def _stacked(rows: list[Rows]) -> Rows:
+    first = rows[0]
+    return Rows(first.group, np.concatenate([r.codes for r in rows]),
+                [np.concatenate([np.broadcast_to(r.places[k], (2, 1, 1)) for r in rows], axis=1)
+                 for k in range(len(first.places))],
+                np.concatenate([r.alive for r in rows]), np.concatenate([r.margin for r in rows]))
