@@ -21,6 +21,9 @@ Signs = NDArray[np.int8]
 STRAIGHT = 1e-7
 """Below this sine a bend is called straight: rounding moves it by up to a few 1e-8."""
 
+POSES = 1 << 11
+"""Poses looked at in one go: few enough to stay in the cache."""
+
 SIDES = {1: "left", -1: "right", 0: "straight"}
 ALONG = {1: "after", -1: "before", 0: "straight"}
 
@@ -83,38 +86,36 @@ def measure_bends(rig: Rig, positions: Array) -> Signs:
     """Signs ``(..., n_bends)`` of poses ``(..., n_joints, dim)``: 1 left or after, -1 right or
     before, 0 straight; -2 where there is no pose."""
     bends = bends_of(rig)
-    out = np.empty((*positions.shape[:-2], len(bends)), dtype=np.int8)
-    for k, bend in enumerate(bends):
-        out[..., k] = _signs(_sine(rig, positions, bend))
-    return out
+    flat = positions.reshape(-1, *positions.shape[-2:])
+    out = np.empty((len(flat), len(bends)), dtype=np.int8)
+    for start in range(0, len(flat), POSES):
+        # Joints lead, so that what follows runs along the poses without gaps.
+        block = np.ascontiguousarray(flat[start:start + POSES].transpose(1, 2, 0))
+        for k, bend in enumerate(bends):
+            out[start:start + POSES, k] = _signs(rig, block, bend)
+    return out.reshape(*positions.shape[:-2], len(bends))
 
 
-def _signs(sine: Array) -> Signs:
-    sign = (sine > STRAIGHT).astype(np.int8) - (sine < -STRAIGHT).astype(np.int8)
-    sign[np.isnan(sine)] = -2
+def _signs(rig: Rig, block: Array, bend: Bend) -> Signs:
+    """Signs ``(m,)`` of one bend in places ``(n_joints, dim, m)``."""
+    away = block[bend.joint] - block[bend.first]
+    if bend.rail >= 0:
+        e = _rail_direction(rig, block, bend.rail)
+        share = away[0] * e[0] + away[1] * e[1]
+    else:
+        e = block[bend.second] - block[bend.first]
+        share = e[0] * away[1] - e[1] * away[0]
+    room = (e[0] * e[0] + e[1] * e[1]) * (away[0] * away[0] + away[1] * away[1])
+    bent = share * share > STRAIGHT * STRAIGHT * room
+    sign = np.where(bent, np.where(share > 0, np.int8(1), np.int8(-1)), np.int8(0))
+    sign[np.isnan(share)] = -2
     return sign
 
 
-def _sine(rig: Rig, positions: Array, bend: Bend) -> Array:
-    """A number in -1 … 1 whose sign is the bend."""
-    place = positions[..., bend.joint, :]
-    away = place - positions[..., bend.first, :]
-    if bend.rail >= 0:
-        e = _rail_direction(rig, positions, bend.rail)
-        share = away[..., 0] * e[..., 0] + away[..., 1] * e[..., 1]
-    else:
-        e = positions[..., bend.second, :] - positions[..., bend.first, :]
-        share = e[..., 0] * away[..., 1] - e[..., 1] * away[..., 0]
-    long = np.sqrt((e[..., 0] ** 2 + e[..., 1] ** 2) * (away[..., 0] ** 2 + away[..., 1] ** 2))
-    with np.errstate(invalid="ignore", divide="ignore"):
-        sine: Array = np.where(long > 0, share / long, np.where(np.isnan(long), np.nan, 0.0))
-    return sine
-
-
-def _rail_direction(rig: Rig, positions: Array, number: int) -> Array:
+def _rail_direction(rig: Rig, block: Array, number: int) -> Array:
     rail = rig.rails[number]
     if rail.along is None:
-        return np.array(rail.direction)
+        return np.array(rail.direction)[:, None]
     a, b = (rig.index[j] for j in rail.along)
-    way: Array = positions[..., b, :] - positions[..., a, :]
+    way: Array = block[b] - block[a]
     return way

@@ -30,15 +30,17 @@ class Verdict:
     size: float
     floor: Array
 
-    def worst(self, without: frozenset[str] = frozenset()) -> tuple[float, str]:
+    def worst(self, without: frozenset[str] = frozenset(),
+              beyond_floats: bool = False) -> tuple[float, str]:
         """The largest departure as a fraction of the size, and the part; redundant ones left out.
 
-        What float64 cannot hold so far from the origin is taken off first.
+        ``beyond_floats`` takes off what float64 cannot hold so far from the origin.
         """
         keep = np.array([n not in without for n in self.names], dtype=bool)
         if not keep.any() or not self.broken.size:
             return 0.0, ""
-        excess = np.maximum(self.broken[..., keep] - self.floor[..., None], 0.0)
+        room = self.floor[..., None] if beyond_floats else 0.0
+        excess = np.maximum(self.broken[..., keep] - room, 0.0)
         flat = excess.reshape(-1, int(keep.sum()))
         with np.errstate(invalid="ignore"):
             per_part = np.nanmax(np.where(np.isnan(flat), 0.0, flat), axis=0)

@@ -180,7 +180,7 @@ def watch_over(motion: Motion, work: Baking, passes: Sequence[tuple[int, Pass]])
         spans = explain(work.context, work.clock, motion.frames, alive,
                         lambda group, at: work.row.signs(group, at, passes))  # type: ignore[union-attr]
     problems = list(motion.problems)
-    if motion.worst > LENGTHS_HOLD:
+    if motion.worst > LENGTHS_HOLD and motion.beyond_floats > LENGTHS_HOLD:
         problems.append(Problem(
             work.shot.source, motion.worst_part, "every length holds to 1e-12 of the size",
             f"{motion.worst:.3g}", "this is a fault of the solver: please tell its developers"))

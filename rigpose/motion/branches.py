@@ -8,11 +8,20 @@ import numpy as np
 
 from rigpose.ground.budget import Budget, Watch, go_on
 from rigpose.ground.words import Found, State, weaker
+from rigpose.model.bends import measure_bends
 from rigpose.model.equations import Array
 from rigpose.model.rig import Rig
 from rigpose.motion.branchset import Branches
 from rigpose.motion.motion import Event
-from rigpose.motion.product import Picks, assembled, base_places, combined, kept
+from rigpose.motion.product import (
+    Picks,
+    Sorted,
+    assembled,
+    base_places,
+    combined,
+    kept,
+    taken,
+)
 from rigpose.motion.refusals import refuse_loose, useless_targets
 from rigpose.solve.clock import Clock, sampled
 from rigpose.solve.flow import writes
@@ -24,6 +33,10 @@ from rigpose.solve.rows import Pass, Rows, follow, survey
 from rigpose.solve.search import Context
 from rigpose.solve.stepping import enumerate_rows
 from rigpose.solve.stream import all_cells
+
+
+MOST_TIES = 1 << 14
+"""Ties among more branches keep the order of placing."""
 
 
 def find_branches(
@@ -94,7 +107,7 @@ def group_rows(context: Context, group: Group, clock: Clock, budget: Budget,
     return follow(context, group, clock, rows.codes), False
 
 
-def made(context: Context, clock: Clock, frames: Array, picks: Sequence[Rows],
+def made(context: Context, clock: Clock, frames: Array, picks: Sequence[Sorted],
          found: Found) -> Branches:
     """The product of the groups' rows as a set of branches, nearest to rest first."""
     rest, plan, eqs = context.rest, context.plan, context.plan.eqs
@@ -102,9 +115,10 @@ def made(context: Context, clock: Clock, frames: Array, picks: Sequence[Rows],
     mixed = combined(rest, picks, base_alive, context.budget.poses)
     if mixed.cut:
         found = weaker(found, Found.BUDGET)
+    mixed = _ties_by_bends(rest, clock, picks, mixed, base)
     positions = assembled(rest, picks, mixed, base, clock.count)
     state = np.where(mixed.alive, np.uint8(State.MET), np.uint8(State.NONE))
-    groups = tuple(tuple(eqs.rig.joint_names[j] for j in rows.group.joints) for rows in picks)
+    groups = tuple(tuple(eqs.rig.joint_names[j] for j in p.rows.group.joints) for p in picks)
     for array in (positions, state, mixed.margin):
         array.flags.writeable = False
     return Branches(
@@ -116,40 +130,60 @@ def made(context: Context, clock: Clock, frames: Array, picks: Sequence[Rows],
         redundant=frozenset(plan.redundant))
 
 
-def _turning(rig: Rig, picks: Sequence[Rows]) -> tuple[str, ...]:
+def _ties_by_bends(rest: Rest, clock: Clock, picks: Sequence[Sorted], mixed: Picks,
+                   base: Mapping[int, Array]) -> Picks:
+    """Branches equally far from rest (mirror images, say) in the order of their bends."""
+    equal = mixed.steps[1:] == mixed.steps[:-1]
+    if not equal.any():
+        return mixed
+    member = np.flatnonzero(np.concatenate([[False], equal]) | np.concatenate([equal, [False]]))
+    if len(member) > MOST_TIES:
+        return mixed
+    some = taken(mixed, member)
+    poses = assembled(rest, picks, some, base, clock.count)
+    first = np.argmax(some.alive, axis=1)
+    signs = measure_bends(rest.rig, poses[np.arange(len(member)), first])
+    # "left" and "after" come before "right" and "before", as names are read.
+    order = np.lexsort((*(-signs[:, ::-1].T), some.steps))
+    place = np.arange(len(mixed.steps))
+    place[member] = member[order]
+    return taken(mixed, place)
+
+
+def _turning(rig: Rig, picks: Sequence[Sorted]) -> tuple[str, ...]:
     """A sentence for each joint that turns freely where two others lie on each other."""
-    found = sorted({t for rows in picks for t in rows.turning})
+    found = sorted({t for p in picks for t in p.rows.turning})
     return tuple(
         f'where its neighbours lie on each other "{rig.joint_names[joint]}" turns freely '
         f"({', '.join(parts)}): such poses are not listed"
         for joint, parts in found if joint < len(rig.joints))
 
 
-def _read_off(rest: Rest, picks: Sequence[Rows], mixed: Picks) -> dict[str, Array]:
+def _read_off(rest: Rest, picks: Sequence[Sorted], mixed: Picks) -> dict[str, Array]:
     eqs = rest.equations
     out = {}
-    for g, rows in enumerate(picks):
-        for v, array in rows.values.items():
-            wide = array if len(array) == 1 else array[mixed.choice[:, g]]
+    for g, p in enumerate(picks):
+        for v, array in p.rows.values.items():
+            wide = array if len(array) == 1 else array[mixed.index[:, g]]
             out[eqs.values[v]] = wide / eqs.unit[v]
     return out
 
 
-def _events(rig: Rig, frames: Array, picks: Sequence[Rows],
+def _events(rig: Rig, frames: Array, picks: Sequence[Sorted],
             mixed: Picks) -> tuple[tuple[Event, ...], ...]:
-    if not any(rows.passes for rows in picks):
+    if not any(p.rows.passes for p in picks):
         return ()
     by_row: list[dict[int, list[Event]]] = []
-    for rows in picks:
+    for pick in picks:
         mine: dict[int, list[Event]] = {}
-        choices = choice_steps(rows.group)
-        for p in rows.passes:
+        choices = choice_steps(pick.rows.group)
+        for p in pick.rows.passes:
             mine.setdefault(p.row, []).append(_event(rig, frames, choices[p.choice], p))
         by_row.append(mine)
     return tuple(
         tuple(sorted((e for g, mine in enumerate(by_row) for e in mine.get(int(row[g]), [])),
                      key=lambda e: e.frame))
-        for row in mixed.choice)
+        for row in mixed.index)
 
 
 def choice_steps(group: Group) -> list[Meet | Swing | Cluster]:

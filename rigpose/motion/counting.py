@@ -14,6 +14,7 @@ from rigpose.model.rig import Rig
 from rigpose.motion.branches import find_branches, made
 from rigpose.motion.branchset import Branches
 from rigpose.motion.nearest import nearest_rows
+from rigpose.motion.product import kept
 from rigpose.motion.streaming import single_frame
 from rigpose.solve.clock import Clock
 from rigpose.solve.knowns import Given, Wished
@@ -103,7 +104,7 @@ def branches_from_one(found: Branches, budget: Budget | None = None) -> Branches
     pose = context.plan.eqs.inward(found.positions[0, 0])
     picks = [_turned_over(context, group, pose, float(found.margin[0, 0]), budget or Budget())
              for group in context.plan.groups]
-    return made(context, clock, found.frames, picks, found.found)
+    return made(context, clock, found.frames, [kept(context.rest, p) for p in picks], found.found)
 
 
 def _turned_over(context: Context, group: Group, pose: np.ndarray, margin: float,

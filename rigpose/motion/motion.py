@@ -115,6 +115,11 @@ class Motion:
         return self._verdict[0]
 
     @property
+    def beyond_floats(self) -> float:
+        """As `worst`, less what float64 cannot hold so far from the origin."""
+        return judge(self.rig, self.positions, self.size).worst(self.redundant, True)[0]
+
+    @property
     def worst_part(self) -> str:
         """The part with that departure."""
         return self._verdict[1]

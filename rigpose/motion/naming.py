@@ -70,10 +70,10 @@ def name_rows(rig: Rig, signs: Signs, meets: NDArray[np.bool_],
 def _telling(signs: Signs, varies: Sequence[int]) -> tuple[list[int], NDArray[np.int64]]:
     """Bends kept in order while each tells more rows apart; a class for every row."""
     n = len(signs)
-    if 2 ** len(varies) <= n:
-        # As many rows as there can be: every one of them is needed.
+    if 2 ** len(varies) == n:
+        # As many rows as two ways each can give: if none is there twice, every bend is needed.
         packed = _packed(signs, varies)
-        if len(np.unique(packed)) == n:
+        if (np.bincount(packed, minlength=n) == 1).all():
             return list(varies), packed
     told: list[int] = []
     classes = np.zeros(n, dtype=np.int64)
@@ -91,13 +91,15 @@ def _telling(signs: Signs, varies: Sequence[int]) -> tuple[list[int], NDArray[np
 
 def _packed(signs: Signs, varies: Sequence[int]) -> NDArray[np.int64]:
     packed = np.zeros(len(signs), dtype=np.int64)
-    for k in varies[:31]:
-        packed = packed * 4 + signs[:, k] + 1
+    for k in varies:
+        packed = packed * 2 + (signs[:, k] > 0)
     return packed
 
 
 def _counts(classes: NDArray[np.int64]) -> NDArray[np.intp]:
     """1, 2, … within each class of more than one row, else 0."""
+    if len(classes) and int(classes.max()) == len(classes) - 1:
+        return np.zeros(len(classes), dtype=np.intp)  # all differ
     order = np.argsort(classes, kind="stable")
     ordered = classes[order]
     fresh = np.ones(len(ordered), dtype=bool)

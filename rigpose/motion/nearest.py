@@ -19,6 +19,8 @@ from rigpose.model.equations import Array
 from rigpose.model.rig import Rig
 from rigpose.motion.branches import made
 from rigpose.motion.branchset import Branches
+from rigpose.motion.naming import Names
+from rigpose.motion.product import kept
 from rigpose.motion.streaming import single_frame, whole_group
 from rigpose.solve.clock import Clock
 from rigpose.solve.flow import writes
@@ -46,7 +48,11 @@ def nearest_branch(rig: Rig, drives: Given | None = None, targets: Wished | None
     found = Found.COMPLETE
     for rows in picks:
         found = weaker(found, rows.found)
-    return made(context, clock, np.zeros(1), picks, found)
+    one = made(context, clock, np.zeros(1), [kept(context.rest, p) for p in picks], found)
+    # Alone in its set it would have nothing to be told from: it is named by all its bends.
+    told, none = range(one.signs.shape[1]), np.zeros(len(one), dtype=np.intp)
+    one.__dict__["names"] = Names(rig, one.signs, told, none, one.meets)
+    return one
 
 
 def _goal(context: Context, near: Mapping[str, npt.ArrayLike] | None) -> Array:

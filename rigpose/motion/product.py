@@ -20,15 +20,29 @@ STEP = 1e-9
 """Distances to rest are compared in steps of this part of the size."""
 MEET = 2e-7
 """Poses of one frame nearer than this, with a margin as small, are one pose at a dead centre."""
-CELLS = 1 << 13
+CELLS = 1 << 11
+
+
+@dataclass(frozen=True)
+class Sorted:
+    """A group's rows that live somewhere, nearest to rest first: ``order (k,)`` among them, and
+    ``gap (k,)`` their squared distances to rest in that order."""
+
+    rows: Rows
+    order: Ints
+    gap: Array
 
 
 @dataclass(frozen=True)
 class Picks:
-    """Which row of each group each branch has: ``choice (n_branches, n_groups)``; ``alive`` and
-    ``margin`` ``(n_branches, n_frames)``; ``count`` of all, ``cut`` where not all are here."""
+    """Which row of each group each branch has: ``choice (n_branches, n_groups)`` counted nearest
+    to rest first, ``index`` the same among the group's rows; ``alive`` and ``margin``
+    ``(n_branches, n_frames)``; ``steps (n_branches,)`` the distance to rest in whole steps;
+    ``count`` of all, ``cut`` where not all are here."""
 
     choice: Ints
+    index: Ints
+    steps: Array
     alive: NDArray[np.bool_]
     margin: NDArray[np.float32]
     meets: NDArray[np.bool_]
@@ -50,12 +64,21 @@ def base_places(context: Context, clock: Clock) -> tuple[dict[int, Array], NDArr
     return {j: table.points[j] for j in joints if j in table.points}, alive
 
 
-def kept(rest: Rest, rows: Rows) -> Rows:
+def kept(rest: Rest, rows: Rows) -> Sorted:
     """Rows that live somewhere, nearest to rest first, none twice."""
-    ordered = rows.take(_order(rest, rows))
-    if ordered.alive.shape[1] == 1 or not len(ordered.codes):
-        return ordered
-    return ordered.take(_own(rest, ordered))
+    if rows.alive.shape[1] > 1 and len(rows.codes):
+        rows = rows.take(_own(rest, rows))
+    live = np.flatnonzero(rows.alive.any(axis=1))
+    gap = _gaps(rest, rows)
+    gap = gap if len(live) == len(gap) else gap[live]
+    order = np.argsort(_steps(rest, gap), kind="stable")
+    return Sorted(rows, live[order], gap[order])
+
+
+def _steps(rest: Rest, gap: Array) -> Array:
+    """Distances to rest in whole steps of `STEP`, from squared ones summed over joints."""
+    steps: Array = np.rint(np.sqrt(gap / max(len(rest.scaled), 1)) / (STEP * rest.reach))
+    return steps
 
 
 def _own(rest: Rest, rows: Rows) -> Ints:
@@ -78,16 +101,6 @@ def _own(rest: Rest, rows: Rows) -> Ints:
     return np.array([k for k in range(len(rows.codes)) if k not in lost], dtype=np.intp)
 
 
-def _order(rest: Rest, rows: Rows) -> Ints:
-    live = np.flatnonzero(rows.alive.any(axis=1))
-    if not len(live):
-        return live
-    gap = _gaps(rest, rows)[live]
-    steps = np.rint(np.sqrt(gap / max(len(rest.scaled), 1)) / (STEP * rest.reach))
-    signs = tuple(-rows.codes[live, k] for k in range(rows.codes.shape[1] - 1, -1, -1))
-    return live[np.lexsort((*signs, steps))] if len(live) > 1 else live
-
-
 def _gaps(rest: Rest, rows: Rows) -> Array:
     """Squared distances to rest ``(B,)``, summed over the group's joints, at the first pose."""
     first = np.argmax(rows.alive, axis=1)
@@ -102,30 +115,48 @@ def _gaps(rest: Rest, rows: Rows) -> Array:
     return total
 
 
-def combined(rest: Rest, picks: Sequence[Rows], base_alive: NDArray[np.bool_],
+def combined(rest: Rest, picks: Sequence[Sorted], base_alive: NDArray[np.bool_],
              most: int) -> Picks:
     """The product of the groups, nearest to rest first, cut at ``most``."""
-    sizes = [len(rows.codes) for rows in picks]
+    sizes = [len(p.order) for p in picks]
     count = int(np.prod([float(s) for s in sizes])) if sizes else 1
     if not picks:
-        exists = int(bool(base_alive.any()))
-        frames = base_alive.shape[1]
-        return Picks(np.zeros((exists, 0), dtype=np.intp), base_alive[:exists],
-                     np.ones((exists, frames), dtype=np.float32),
-                     np.zeros(exists, dtype=bool), exists, False)
+        return _only_base(base_alive)
     choice = _mixed_radix(sizes, min(count, most))
-    choice = _sorted(rest, picks, choice)
-    alive = np.ones((len(choice), picks[0].alive.shape[1]), dtype=bool)
+    gap = np.zeros(len(choice))
+    for g, p in enumerate(picks):
+        gap += p.gap[choice[:, g]]
+    steps = _steps(rest, gap)
+    if len(picks) > 1:
+        order = np.argsort(steps, kind="stable")
+        choice, steps = choice[order], steps[order]
+    index = np.stack([p.order[choice[:, g]] for g, p in enumerate(picks)], axis=1)
+    alive = np.ones((len(choice), picks[0].rows.alive.shape[1]), dtype=bool)
     margin = np.ones(alive.shape, dtype=np.float32)
-    for g, rows in enumerate(picks):
-        alive = alive & rows.alive[choice[:, g]]
-        margin = np.minimum(margin, rows.margin[choice[:, g]].astype(np.float32))
+    for g, p in enumerate(picks):
+        alive &= p.rows.alive[index[:, g]]
+        margin = np.minimum(margin, p.rows.margin[index[:, g]].astype(np.float32))
+    margin[~alive] = np.nan
     some = alive.any(axis=1)
-    if not some.all():
-        choice, alive, margin = choice[some], alive[some], margin[some]
-    margin = np.where(alive, margin, np.float32(np.nan))
-    choice, alive, margin, meets = _without_doubles(rest, picks, choice, alive, margin)
-    return Picks(choice, alive, margin, meets, count, count > most)
+    keep, meets = _without_doubles(rest, picks, index, alive, margin)
+    keep &= some
+    mixed = Picks(choice, index, steps, alive, margin, meets, count, count > most)
+    return mixed if keep.all() else taken(mixed, np.flatnonzero(keep))
+
+
+def taken(p: Picks, which: Ints) -> Picks:
+    """Some of the branches, in the given order."""
+    return Picks(p.choice[which], p.index[which], p.steps[which], p.alive[which],
+                 p.margin[which], p.meets[which], p.count, p.cut)
+
+
+def _only_base(base_alive: NDArray[np.bool_]) -> Picks:
+    """Everything hangs on what is known: one branch, or none."""
+    exists, frames = int(bool(base_alive.any())), base_alive.shape[1]
+    none = np.zeros((exists, 0), dtype=np.intp)
+    return Picks(none, none, np.zeros(exists), base_alive[:exists],
+                 np.ones((exists, frames), dtype=np.float32), np.zeros(exists, dtype=bool),
+                 exists, False)
 
 
 def _mixed_radix(sizes: Sequence[int], count: int) -> Ints:
@@ -136,27 +167,16 @@ def _mixed_radix(sizes: Sequence[int], count: int) -> Ints:
     return choice
 
 
-def _sorted(rest: Rest, picks: Sequence[Rows], choice: Ints) -> Ints:
-    if len(picks) == 1 or len(choice) < 2:
-        return choice  # each group is in order already
-    gap = np.zeros(len(choice))
-    for g, rows in enumerate(picks):
-        gap += _gaps(rest, rows)[choice[:, g]]
-    steps = np.rint(np.sqrt(gap / max(len(rest.scaled), 1)) / (STEP * rest.reach))
-    return choice[np.argsort(steps, kind="stable")]
-
-
 def _without_doubles(
-    rest: Rest, picks: Sequence[Rows], choice: Ints, alive: NDArray[np.bool_],
+    rest: Rest, picks: Sequence[Sorted], index: Ints, alive: NDArray[np.bool_],
     margin: NDArray[np.float32],
-) -> tuple[Ints, NDArray[np.bool_], NDArray[np.float32], NDArray[np.bool_]]:
-    """At one frame, branches that meet in one pose are listed once."""
-    meets = np.zeros(len(choice), dtype=bool)
+) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
+    """At one frame, branches that meet in one pose are listed once: which are, and which meet."""
+    keep, meets = np.ones(len(index), dtype=bool), np.zeros(len(index), dtype=bool)
     if alive.shape[1] != 1 or not (margin[:, 0] < MEET).any():
-        return choice, alive, margin, meets
+        return keep, meets
     near = np.flatnonzero(margin[:, 0] < MEET)
-    keep = np.ones(len(choice), dtype=bool)
-    poses = _poses(picks, choice[near])
+    poses = _poses(picks, index[near])
     for k in range(len(near)):
         if not keep[near[k]]:
             continue
@@ -164,59 +184,69 @@ def _without_doubles(
         if len(same):
             meets[near[k]] = True
             keep[near[k + 1 + same]] = False
-    return choice[keep], alive[keep], margin[keep], meets[keep]
+    return keep, meets
 
 
-def _poses(picks: Sequence[Rows], choice: Ints) -> Array:
+def _poses(picks: Sequence[Sorted], index: Ints) -> Array:
     """``(n, joints * 2)`` of the groups' joints at the first frame."""
     columns = []
-    for g, rows in enumerate(picks):
-        for place in rows.places:
+    for g, p in enumerate(picks):
+        for place in p.rows.places:
             mine = place[:, :, 0]
-            columns.append(np.broadcast_to(mine, (2, 1))[:, [0] * len(choice)]
-                           if mine.shape[1] == 1 else mine[:, choice[:, g]])
-    return np.concatenate(columns).T if columns else np.zeros((len(choice), 0))
+            columns.append(np.broadcast_to(mine, (2, len(index))) if mine.shape[1] == 1
+                           else mine[:, index[:, g]])
+    return np.concatenate(columns).T if columns else np.zeros((len(index), 0))
 
 
-def assembled(rest: Rest, picks: Sequence[Rows], mixed: Picks, base: Mapping[int, Array],
+def assembled(rest: Rest, picks: Sequence[Sorted], mixed: Picks, base: Mapping[int, Array],
               frames: int) -> Array:
     """``(n_branches, n_frames, n_joints, dim)`` in the rig's frame, NaN without a pose.
 
     Written in blocks that stay in the cache; a joint's places come as rows of their own.
     """
     eqs = rest.equations
-    b = len(mixed.choice)
+    b, width = len(mixed.index), eqs.n * eqs.dim
     out = np.empty((b, frames, eqs.n, eqs.dim))
     rows_step = max(1, min(b, CELLS // max(frames, 1)))
     frames_step = max(1, min(frames, CELLS))
-    sources = [(j, place, None) for j, place in base.items()]
-    sources += [(j, place, g) for g, rows in enumerate(picks)
-                for j, place in zip(rows.group.joints, rows.places, strict=True)]
+    sources = [(j, place, -1) for j, place in base.items()]
+    sources += [(j, place, g) for g, p in enumerate(picks)
+                for j, place in zip(p.rows.group.joints, p.rows.places, strict=True)]
+    order = [mixed.index[:, g].copy() for g in range(len(picks))]
+    block = np.full((width, rows_step, frames_step), np.nan)
     for r in range(0, b, rows_step):
-        choice = mixed.choice[r:r + rows_step]
         for f in range(0, frames, frames_step):
-            block = out[r:r + rows_step, f:f + frames_step]
+            here = out[r:r + rows_step, f:f + frames_step]
+            part = block[:, :here.shape[0], :here.shape[1]]
             for j, place, g in sources:
-                _put(block[:, :, j], place, None if g is None else choice[:, g],
-                     slice(f, f + frames_step), eqs.scale, eqs.origin)
+                _gather(part[j * eqs.dim:(j + 1) * eqs.dim], place,
+                        order[g][r:r + rows_step] if g >= 0 else None,
+                        slice(f, f + frames_step))
+            _outward(part, here.reshape(*here.shape[:2], width), eqs.scale,
+                     np.tile(eqs.origin, eqs.n))
     if not mixed.alive.all():
         out[~mixed.alive] = np.nan
     return out
 
 
-def _put(out: Array, place: Array, which: Ints | None, frames: slice, scale: float,
-         origin: Array) -> None:
-    """One joint of one block, from the equations' frame into the rig's."""
-    part = place[:, :, frames] if place.shape[2] > 1 else place
-    if which is not None and part.shape[1] > 1:
-        part = part[:, which] if len(which) < part.shape[1] or len(which) > 1 else part
-    for axis in range(out.shape[-1]):
-        target = out[..., axis]
-        if scale == 1.0 and origin[axis] == 0.0:
-            target[...] = part[axis]
-        else:
-            np.multiply(part[axis], scale, out=target)
-            if origin[axis] != 0.0:
-                target += origin[axis]
+def _gather(part: Array, place: Array, which: Ints | None, frames: slice) -> None:
+    """One joint's places of some rows and frames."""
+    mine = place[:, :, frames] if place.shape[2] > 1 else place
+    if which is None or mine.shape[1] == 1:
+        part[...] = mine
+    elif mine.shape[2] == 1:
+        for axis in range(len(part)):
+            np.take(mine[axis, :, 0], which, out=part[axis, :, 0], mode="clip")
+    else:
+        part[...] = mine[:, which] if len(which) < mine.shape[1] or len(which) > 1 else mine
 
 
+def _outward(part: Array, here: Array, scale: float, origin: Array) -> None:
+    """``(width, rows, frames)`` of the equations' frame to ``(rows, frames, width)`` of the rig's."""
+    turned = part.transpose(1, 2, 0)
+    if scale == 1.0:
+        here[...] = turned
+    else:
+        np.multiply(turned, scale, out=here)
+    if origin.any():
+        here += origin

@@ -11,7 +11,7 @@ from rigpose.ground.words import Found, weaker
 from rigpose.model.rig import Rig
 from rigpose.motion.branches import made, plan_of
 from rigpose.motion.branchset import Branches
-from rigpose.motion.product import kept
+from rigpose.motion.product import Sorted, kept
 from rigpose.solve.clock import Clock, sampled
 from rigpose.solve.knowns import Given, Wished, read_knowns
 from rigpose.solve.plan import Group
@@ -39,7 +39,7 @@ def stream_branches(rig: Rig, drives: Given | None = None, targets: Wished | Non
         picks = [held.get(id(g), rows) for g in context.plan.groups]
         found = Found.COMPLETE
         for pick in picks:
-            found = weaker(found, pick.found)
+            found = weaker(found, pick.rows.found)
         block = made(context, clock, np.zeros(1), picks, found)
         done += len(block)
         if len(block):
@@ -61,10 +61,11 @@ def single_frame(rig: Rig, drives: Given | None, targets: Wished | None) -> tupl
     return Context(rest, plan, Budget(poses=EVERYTHING)), sampled(rest.equations, knowns)
 
 
-def _blocks(context: Context, group: Group | None, clock: Clock) -> Iterator[Rows]:
+def _blocks(context: Context, group: Group | None, clock: Clock) -> Iterator[Sorted]:
     if group is None:
-        yield Rows(Group((), (), 0, True), np.zeros((1, 0), dtype=np.int16), [],
-                   np.ones((1, 1), dtype=bool), np.ones((1, 1)))
+        empty = Rows(Group((), (), 0, True), np.zeros((1, 0), dtype=np.int16), [],
+                     np.ones((1, 1), dtype=bool), np.ones((1, 1)))
+        yield kept(context.rest, empty)
         return
     for cells in stream_cells(context, group, clock.whole(slice(0, 1))):
         yield kept(context.rest, _rows(cells))

@@ -57,7 +57,7 @@ class Rows:
 
     def take(self, which: NDArray[np.intp]) -> Rows:
         """Some of the rows."""
-        new = {int(old): k for k, old in enumerate(which)}
+        new = {int(old): k for k, old in enumerate(which)} if self.passes else {}
         return Rows(
             self.group, self.codes[which],
             [p if p.shape[1] == 1 else p[:, which] for p in self.places],
