@@ -90,7 +90,8 @@ def _lengths(eqs: Equations, group: Mover, motion: Array) -> Iterator[Candidate]
     for a, b in sorted(pairs):
         gap = group.pose[b] - group.pose[a]
         long = float(np.linalg.norm(gap))
-        if long > 1e-6:
+        # A length that is zero at rest could not be written into the rig.
+        if min(long, float(np.linalg.norm(eqs.at[b] - eqs.at[a]))) > 1e-6:
             rows = motion.reshape(eqs.n, eqs.dim, -1)
             slope = (gap / long) @ (rows[b] - rows[a])
             yield Candidate("length", ends=(names[a], names[b]), slope=tuple(map(float, slope)))
@@ -116,39 +117,43 @@ def _neighbours(eqs: Equations) -> list[set[int]]:
 def choices(group: Mover, pool: list[Candidate], dim: int) -> list[Choice]:
     """Sets that hold a group, as many candidates as it has freedoms, in the pool's order."""
     k = group.freedoms
-    while len(pool) > k and comb(len(pool), k) > MOST_SETS:
-        pool = _thinned(pool, k)
-        if comb(len(pool), k) > MOST_SETS and len(pool) <= 2 * k + 2:
-            return _greedy(group, pool, dim)
-    if len(pool) < k:
+    sure = _greedy(pool, k)
+    if len(sure) < k:
         return []
-    picks = np.array(list(combinations(range(len(pool)), k)), dtype=np.intp)
-    margin = _margins(group, np.array([c.slope for c in pool])[picks], dim)
-    return [Choice(tuple(pool[i] for i in picks[n]), float(margin[n]))
+    some = _thinned(pool, sure, k)
+    picks = np.array(list(combinations(range(len(some)), k)), dtype=np.intp)
+    margin = _margins(group, np.array([c.slope for c in some])[picks], dim)
+    return [Choice(tuple(some[i] for i in picks[n]), float(margin[n]))
             for n in np.flatnonzero(margin > 0)]
 
 
-def _thinned(pool: list[Candidate], k: int) -> list[Candidate]:
-    """Leaves out the weakest length, else the weakest target, else the weakest drive."""
-    for kind in ("length", "target", "drive"):
-        some = [c for c in pool if c.kind == kind]
-        if len(some) > k or (some and kind != "drive"):
-            weakest = min(some, key=lambda c: (round(float(np.linalg.norm(c.slope)), 9)))
-            return [c for c in pool if c is not weakest]
-    return pool[:-1]
-
-
-def _greedy(group: Mover, pool: list[Candidate], dim: int) -> list[Choice]:
+def _greedy(pool: list[Candidate], k: int) -> list[Candidate]:
     """One set: each candidate in turn that adds to those before it."""
     chosen: list[Candidate] = []
+    basis = np.zeros((0, k))
     for c in pool:
-        slopes = np.array([m.slope for m in (*chosen, c)])
-        if np.linalg.svd(slopes, compute_uv=False).min() > HOLDS:
+        left = np.array(c.slope)
+        for _ in range(2):
+            left = left - basis.T @ (basis @ left)
+        long = float(np.linalg.norm(left))
+        if long > 10 * HOLDS and len(chosen) < k:
             chosen.append(c)
-        if len(chosen) == group.freedoms:
-            margin = _margins(group, np.array([[m.slope for m in chosen]]), dim)
-            return [Choice(tuple(chosen), float(margin[0]))] if margin[0] > 0 else []
-    return []
+            basis = np.vstack([basis, left / long])
+    return chosen
+
+
+def _thinned(pool: list[Candidate], sure: list[Candidate], k: int) -> list[Candidate]:
+    """The pool, less the weakest of each kind where it has too many sets to try."""
+    size = np.round(np.linalg.norm(np.array([c.slope for c in pool]), axis=1), 6)
+    order = np.argsort(-size, kind="stable")
+    kinds = [np.array([n for n in order if pool[n].kind == kind], dtype=np.intp)
+             for kind in ("drive", "target", "length")]
+    always = [n for n, c in enumerate(pool) if any(c is s for s in sure)]
+    for most in (len(pool), 64, 32, 16, 8, 6, 4, 3, 2, 0):
+        keep = sorted({*always, *(int(n) for kind in kinds for n in kind[:most])})
+        if comb(len(keep), k) <= MOST_SETS:
+            return [pool[n] for n in keep]
+    return sure
 
 
 def _margins(group: Mover, slopes: Array, dim: int) -> Array:

@@ -7,7 +7,8 @@ the sets are the fundamental circuits of the rows that stay (Oxley 2011, section
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -15,6 +16,7 @@ from rigpose.model.equations import Array, Ints
 from rigpose.model.system import System
 from rigpose.solve.mobility import Motions
 from rigpose.solve.pieces import Cut, unknown
+from rigpose.solve.rest import DENSE, assemble
 
 ABSENT = 1e-5
 """A part that bears less than this fraction of a set's largest stress does not belong to it."""
@@ -37,7 +39,7 @@ class Redundancy:
         return " | ".join(self.parts)
 
 
-def redundant_sets(system: System, pieces: Cut, found: list[Motions], rest: Array) -> tuple[
+def redundant_sets(system: System, pieces: Cut, found: Sequence[Motions], rest: Array) -> tuple[
     Redundancy, ...
 ]:
     """All redundant sets; their departures are measured at ``rest (n, dim)``."""
@@ -50,12 +52,32 @@ def redundant_sets(system: System, pieces: Cut, found: list[Motions], rest: Arra
             share = np.abs(circuit) > ABSENT * np.abs(circuit).max()
             names = tuple(dict.fromkeys(system.row_names[r] for r in rows[share]))
             sets.append(Redundancy(names, system.row_names[rows[e]], off))
+    sets = _measured(system, sets, rest)
     for r in pieces.fixed:
         name = system.row_names[r]
         sets.append(Redundancy((name,), name, -float(residual[r]) * system.eqs.scale))
     bodies = {b.name for b in system.eqs.bodies}
     real = (s for s in sets if len(s.parts) > 1 or s.last not in bodies)
     return tuple(dict.fromkeys(real))
+
+
+def _measured(system: System, sets: list[Redundancy], rest: Array) -> list[Redundancy]:
+    """The same sets, with departures of bones measured where all others hold exactly."""
+    d = system.eqs.distances
+    number = {d.names[k]: int(k) for k in system.dist_rows}
+    lasts = frozenset(s.last for s in sets if s.last in number)
+    least = 1e-12 * system.eqs.scale
+    if rest.size > DENSE or not any(s.last in lasts and abs(s.off) > least for s in sets):
+        return sets
+    others = replace(system, without=lasts)
+    x, size = assemble(others, rest[None], unknown(system, 1))
+    if size[0] > 1e-12:
+        return sets
+    ends = {name: d.ends[number[name]] for name in lasts}
+    gap = {name: np.linalg.norm(x[0, a] - x[0, b]) - d.length[number[name]]
+           for name, (a, b) in ends.items()}
+    return [replace(s, off=float(gap[s.last]) * system.eqs.scale) if s.last in lasts else s
+            for s in sets]
 
 
 def giving_way(system: System, rows: Ints) -> Ints:

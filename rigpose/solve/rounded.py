@@ -19,8 +19,10 @@ from rigpose.solve.pieces import Piece, unknown
 from rigpose.solve.redundant import ABSENT, circuits
 from rigpose.solve.rest import assemble
 
-SMALL = 2e-2
-"""Above this a singular value is no trace of rounding."""
+SMALL = 3e-3
+LARGEST_SLACK = 1e-3
+"""Above these a singular value, or the slack that is needed, is no trace of rounding but of a
+dead centre close by; numbers rounded to three decimals stay below."""
 APART = 12.0
 """How much larger the next singular value must be at least."""
 LOOSER = (1.05, 1.4, 2.0, 3.0, 5.0)
@@ -28,7 +30,7 @@ LOOSER = (1.05, 1.4, 2.0, 3.0, 5.0)
 WALK = 0.02
 STEPS = 12
 MOST_TRIED = 16
-LARGEST = 300
+MOST_UNKNOWNS = 300
 """Coordinates of a piece above which this is not looked into."""
 
 
@@ -57,13 +59,14 @@ class Rounding:
 def rounding_of(motion: Motions, rest: Array, zero: float, reach: float) -> Rounding | None:
     """Whether a piece would move more if small singular values counted as zero."""
     piece = motion.piece
-    if motion.structural or len(piece.columns) > LARGEST:
+    if motion.structural or len(piece.columns) > MOST_UNKNOWNS:
         return None
     for edge in _edges(motion.singular, zero):
         for more in LOOSER:
             looser = motions(piece, rest, more * edge, reach)
             if looser.finite > motion.finite:
-                return _measured(looser, motion, rest, more * edge, reach)
+                found = _measured(looser, motion, rest, more * edge, reach)
+                return found if found.slack <= LARGEST_SLACK else None
     return None
 
 

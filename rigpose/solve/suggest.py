@@ -6,7 +6,7 @@ ordered by the largest block that must be solved together, then by branches, the
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 
 from rigpose.model.rig import Bone, Pair, Rig
@@ -52,7 +52,7 @@ class Suggestion:
         return " and ".join(self.names)
 
 
-def suggestions(rest: Rest, groups: list[Mover], most: int = 12) -> tuple[Suggestion, ...]:
+def suggestions(rest: Rest, groups: Sequence[Mover], most: int = 24) -> tuple[Suggestion, ...]:
     """Sets that hold all groups, at most ``most``, best first; none where a group has none."""
     ranked = [_for_group(rest, group) for group in groups]
     if not ranked or not all(ranked):
@@ -110,8 +110,9 @@ def _braced(rest: Rest, lengths: list[Candidate]) -> Rig:
     if not lengths:
         return rest.rig
     rig, bones = rest.rig, list(rest.rig.bones)
+    places = rest.equations.outward(rest.scaled)
     for c in lengths:
-        a, b = (rest.positions[rig.index[j]] for j in c.ends)
+        a, b = (places[rig.index[j]] for j in c.ends)
         name = "from {} to {}".format(*c.ends)
         bones.append(Bone(name=name, ends=c.ends, length=float(((a - b) ** 2).sum() ** 0.5)))
     return replace(rig, bones=tuple(bones))
@@ -122,9 +123,10 @@ def _mine(plan: Plan, joints: set[int]) -> list[Group]:
 
 
 def _block(plan: Plan, joints: set[int]) -> int:
-    """The most joints solved together; what the plan leaves loose counts as one block."""
+    """The most joints solved together; what the plan leaves loose counts as a block."""
     mine = [len(c.joints) for c in plan.clusters if joints & set(c.joints)]
-    return max([1, *mine, len(joints & set(plan.loose))])
+    loose = len(joints & set(plan.loose))
+    return max([1, *mine, loose + 1 if loose else 1])
 
 
 def _bound(plan: Plan, joints: set[int]) -> int | None:

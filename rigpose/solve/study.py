@@ -1,0 +1,61 @@
+"""A rig at rest, its pieces and their motions: worked out once, on demand, for all of `check`."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+
+from rigpose.model.equations import Array
+from rigpose.model.system import System
+from rigpose.solve.counting import structural_freedoms
+from rigpose.solve.mobility import Motions, motions
+from rigpose.solve.moving import Mover, movers
+from rigpose.solve.pieces import Cut, Piece, cut
+from rigpose.solve.rest import Rest
+
+DENSE = 600
+"""Unknowns of one piece up to which its rank is measured; above it is only counted."""
+
+
+@dataclass(frozen=True)
+class Study:
+    """A rig at rest, looked at piece by piece."""
+
+    rest: Rest
+
+    @cached_property
+    def system(self) -> System:
+        """All rows that hold while nothing is driven."""
+        return System(self.rest.equations)
+
+    @cached_property
+    def cut(self) -> Cut:
+        """The pieces at rest."""
+        return cut(self.system, self.rest.scaled)
+
+    @cached_property
+    def zero(self) -> float:
+        """Below this a singular value counts as zero; more where the rig doesn't assemble."""
+        zero = self.rest.tolerances.zero
+        return zero if self.rest.assembles else max(zero, 10 * self.rest.misfit)
+
+    @cached_property
+    def motions(self) -> tuple[Motions, ...]:
+        """What each piece can do."""
+        return tuple(self._motions(p) for p in self.cut.pieces)
+
+    @cached_property
+    def groups(self) -> tuple[Mover, ...]:
+        """All groups that move, in the joints' order."""
+        return tuple(g for m in self.motions for g in movers(m))
+
+    def _motions(self, piece: Piece) -> Motions:
+        if len(piece.columns) <= DENSE:
+            return motions(piece, self.rest.scaled, self.zero, self.rest.reach)
+        free = structural_freedoms(piece)
+        none: Array = np.zeros((len(piece.columns), 0))
+        stresses = np.zeros((len(piece.rows), 0))
+        return Motions(piece, free, free, 1, self.rest.scaled, none, none, stresses,
+                       structural=True)

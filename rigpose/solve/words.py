@@ -1,0 +1,34 @@
+"""Numbers and names in sentences."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+SEVERAL = 8
+
+
+def count(n: int, what: str) -> str:
+    """
+    >>> count(1, "joint"), count(3, "joint")
+    ('1 joint', '3 joints')
+    """
+    return f"{n} {what}" if n == 1 else f"{n} {what}s"
+
+
+def amount(value: float, digits: int = 3) -> str:
+    """A number with few digits.
+
+    >>> amount(0.000012345), amount(5.0), amount(1.0000005, 8)
+    ('1.23e-05', '5', '1.0000005')
+    """
+    return f"{value:.{digits}g}"
+
+
+def listed(names: Sequence[str], most: int = SEVERAL) -> str:
+    """Names with commas, the first few of many.
+
+    >>> listed(["a", "b", "c"]), listed(["a", "b", "c"], 2)
+    ('a, b, c', 'a, b and 1 more')
+    """
+    text = ", ".join(names[:most])
+    return text if len(names) <= most else f"{text} and {len(names) - most} more"
