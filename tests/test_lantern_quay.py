@@ -17,6 +17,7 @@ from rigpose.files.rigfile import load_rig
 from rigpose.files.shotfile import load_shot
 from rigpose.ground.words import State
 from rigpose.model.equations import Array
+from rigpose.motion.bake import bake
 from rigpose.motion.branches import find_branches
 from rigpose.motion.branchset import Branches
 from rigpose.motion.channels import channels
@@ -60,14 +61,20 @@ def test_each_has_a_shot_that_lives_in_every_frame(name: str) -> None:
     shot, found = played(name)
     assert len(shot.numbers) >= 48
     assert (found.state[0] == State.MET).all()
+    motion = bake(shot)
+    assert motion.ok, motion.note()
+    assert np.isfinite(motion.positions).all()
 
 
 @pytest.mark.parametrize("name", STUCK)
 def test_what_is_stuck_starts_well_and_then_has_no_pose_at_all(name: str) -> None:
-    _, found = played(name)
+    shot, found = played(name)
     alive = (found.state == State.MET).any(axis=0)
     assert alive[0]
     assert not alive[-1]
+    motion = bake(shot)
+    assert not motion.ok
+    assert (np.isfinite(motion.positions).all(axis=(1, 2)) == alive).all()
 
 
 def test_the_walking_machine_has_thirty_joints_and_walks_on_level_ground() -> None:
