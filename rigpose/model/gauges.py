@@ -65,7 +65,9 @@ def _length(x: Array, ends: Ints, cols: Ints, slopes: Array) -> Array:
 
 
 def _angle(eqs: Equations, x: Array, c: int, zero: float, cols: Ints, slopes: Array) -> Array:
-    total = np.full(len(x), -zero if np.isfinite(zero) else 0.0)
+    if not np.isfinite(zero):
+        return np.zeros(len(x))  # counted from rest, and the rest pose is still being looked for
+    total = np.full(len(x), -zero)
     for slot, (pair, sign) in enumerate(((eqs.angles.line[c], 1.0), (eqs.angles.base[c], -1.0))):
         if pair[0] == GROUND:
             continue

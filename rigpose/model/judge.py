@@ -6,7 +6,6 @@ answers go through it before they are called right.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np

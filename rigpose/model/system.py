@@ -268,7 +268,7 @@ class System:
         mine = measure(e, x, used)
         known = np.array([int(k) in self.drives for k in used])
         mine[:, known] = values[:, used[known]]
-        factor = e.ties[np.ix_(rows, used)]
+        factor = e.ties[rows][:, used]
         residual = mine @ factor.T - e.tie_equals[rows]
         gradient = np.zeros((len(x), len(used), width))
         _, cols, slopes = gauge_gradients(e, x, used)

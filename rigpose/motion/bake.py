@@ -22,7 +22,7 @@ from rigpose.motion.branchset import Branches
 from rigpose.motion.channels import channels
 from rigpose.motion.choose import Choice, choose
 from rigpose.motion.explain import explain
-from rigpose.motion.motion import Event, Motion
+from rigpose.motion.motion import Event, Motion, Span
 from rigpose.motion.rowstart import Row, row_of
 from rigpose.motion.settle import Piece, pieces
 from rigpose.motion.shot import Shot
@@ -138,7 +138,8 @@ class Baking:
         if low:
             yield self._nothing(0, low)
         part = Clock(self.clock.eqs, self.clock.count - low,
-                     self.clock.knowns.part(slice(low, None)), lambda t: self.clock.between(t + low))
+                     self.clock.knowns.part(slice(low, None)),
+                     lambda times: self.clock.between(times + low))
         for piece in pieces(self.context, part, self.row.begins):
             moved = tuple((g, Pass(0, p.choice, p.time + low, p.kind)) for g, p in piece.passes)
             yield replace(piece, start=piece.start + low, stop=piece.stop + low, passes=moved)
@@ -175,7 +176,7 @@ class Baking:
 def watch_over(motion: Motion, work: Baking, passes: Sequence[tuple[int, Pass]]) -> Motion:
     """The motion with its events and spans, judged: lengths that don't hold are a problem."""
     alive = motion.state > State.NONE
-    spans = ()
+    spans: tuple[Span, ...] = ()
     if work.row is not None:
         spans = explain(work.context, work.clock, motion.frames, alive,
                         lambda group, at: work.row.signs(group, at, passes))  # type: ignore[union-attr]

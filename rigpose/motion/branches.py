@@ -34,7 +34,6 @@ from rigpose.solve.search import Context
 from rigpose.solve.stepping import enumerate_rows
 from rigpose.solve.stream import all_cells
 
-
 MOST_TIES = 1 << 14
 """Ties among more branches keep the order of placing."""
 

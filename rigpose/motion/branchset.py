@@ -8,7 +8,6 @@ from functools import cached_property
 from typing import Any
 
 import numpy as np
-
 from numpy.typing import NDArray
 
 from rigpose.ground.errors import BadInput, Problem
@@ -20,7 +19,6 @@ from rigpose.motion.mirrors import mirror_images
 from rigpose.motion.motion import Event, Motion
 from rigpose.motion.naming import Names, name_rows, wanted_signs
 from rigpose.solve.knowns import Knowns
-
 
 SOON = 256
 """Frames within which a row that begins at a dead centre is looked at for its bends."""
@@ -93,9 +91,11 @@ class Branches:
     def first_poses(self) -> Array:
         """``(n_branches, n_joints, dim)`` at each row's first frame with a pose."""
         if len(self.frames) == 1:
-            return self.positions[:, 0]
+            only: Array = self.positions[:, 0]
+            return only
         first = np.argmax(self.state > State.NONE, axis=1)
-        return self.positions[np.arange(len(self)), first]
+        poses: Array = self.positions[np.arange(len(self)), first]
+        return poses
 
     @cached_property
     def names(self) -> Names:

@@ -109,16 +109,19 @@ def _short(step: Meet, table: Table) -> Array:
     if isinstance(first, Circle):
         d = centre - table.point(first.centre)
         far, other = np.sqrt(dot(d, d)), _radius(table, first.radius)
-        return np.maximum(far - radius - other, np.abs(radius - other) - far)
+        apart: Array = np.maximum(far - radius - other, np.abs(radius - other) - far)
+        return apart
     p, d = line_of(table, first)
     w = centre - p
-    return np.asarray(np.abs(d[0] * w[1] - d[1] * w[0]) - radius)
+    off: Array = np.abs(d[0] * w[1] - d[1] * w[0])
+    return off - radius
 
 
 def _radius(table: Table, length: Length) -> Array | float:
     if length.points is not None:
         d = table.point(length.points[1]) - table.point(length.points[0])
-        return np.sqrt(dot(d, d))
+        gap: Array = np.sqrt(dot(d, d))
+        return gap
     return table.value(length.value) if length.value >= 0 else length.constant
 
 
@@ -145,8 +148,10 @@ def _why(plan: Plan, cause: _Cause) -> str:
 def _check_text(rig: Rig, step: Check, parts: str, length: str) -> str:
     slack = f"{rig.slack:g} of the size is allowed"
     return {
-        "fence": f"the limit {parts} stops it", "ram": f"the ram {parts} is at the end of its range",
-        "track": f"the rail {parts} ends there", "hand": f"the frozen group {parts} would turn over",
+        "fence": f"the limit {parts} stops it",
+        "ram": f"the ram {parts} is at the end of its range",
+        "track": f"the rail {parts} ends there",
+        "hand": f"the frozen group {parts} would turn over",
         "target": f"the target {parts} is missed by up to {length}",
         "angle": f"the drive {parts} asks for another angle, by up to {length} at its end",
     }.get(step.kind, f"the surplus {parts} is off by up to {length}; {slack}")

@@ -15,7 +15,9 @@ def read_value(rig: Rig, positions: Array, name: str) -> Array:
 
     positions : (n_frames, n_joints, dim); raises KeyError for an unknown name
     """
-    for part in (*rig.cranks, *rig.rams, *rig.rails, *rig.limits):
+    parts: tuple[Crank | Ram | Rail | Limit, ...] = (
+        *rig.cranks, *rig.rams, *rig.rails, *rig.limits)
+    for part in parts:
         if part.name == name:
             return _value(rig, positions, part)
     raise KeyError(name)
@@ -43,8 +45,8 @@ def _way(rig: Rig, positions: Array, rail: Rail) -> Array:
         return way
     a, b = (positions[:, rig.index[j]] for j in rail.along)
     e = b - a
-    way = ((place - a) * e).sum(axis=-1) / np.linalg.norm(e, axis=-1)
-    return way
+    share: Array = ((place - a) * e).sum(axis=-1) / np.linalg.norm(e, axis=-1)
+    return share
 
 
 def _crank(rig: Rig, positions: Array, crank: Crank) -> Array:

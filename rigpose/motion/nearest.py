@@ -26,8 +26,8 @@ from rigpose.solve.clock import Clock
 from rigpose.solve.flow import writes
 from rigpose.solve.knowns import Given, Wished
 from rigpose.solve.plan import Group
-from rigpose.solve.run import run_steps
 from rigpose.solve.rows import Rows
+from rigpose.solve.run import run_steps
 from rigpose.solve.search import Context, base_table, cells_of, group_table
 from rigpose.solve.stream import part_of
 from rigpose.solve.table import Table
@@ -91,7 +91,8 @@ def nearest_rows(context: Context, group: Group, clock: Clock, most: int,
 
 def _best_first(context: Context, group: Group, start: Table, aim: Array,
                 most: int) -> list[Table]:
-    ticket, offset, done = count(), len(context.plan.base), []
+    ticket, offset = count(), len(context.plan.base)
+    done: list[Table] = []
     heap: list[tuple[float, int, int, Table]] = [(0.0, next(ticket), 0, start)]
     while heap and len(done) < most:
         cost, _, k, table = heappop(heap)

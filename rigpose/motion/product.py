@@ -86,7 +86,7 @@ def _own(rest: Rest, rows: Rows) -> Ints:
     is none."""
     margin = np.where(rows.alive, rows.margin, 0.0)
     shadows = np.flatnonzero(margin.max(axis=1) < MEET)
-    lost = set()
+    lost: set[int] = set()
     for row in shadows:
         frame = int(np.argmax(rows.alive[row]))
         others = np.flatnonzero(rows.alive[:, frame])
@@ -242,7 +242,7 @@ def _gather(part: Array, place: Array, which: Ints | None, frames: slice) -> Non
 
 
 def _outward(part: Array, here: Array, scale: float, origin: Array) -> None:
-    """``(width, rows, frames)`` of the equations' frame to ``(rows, frames, width)`` of the rig's."""
+    """From ``(width, rows, frames)`` scaled to ``(rows, frames, width)`` in the rig's frame."""
     turned = part.transpose(1, 2, 0)
     if scale == 1.0:
         here[...] = turned

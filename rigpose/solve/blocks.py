@@ -35,7 +35,7 @@ class Block:
 def independent_rows(matrix: Array, tolerance: float = DEPENDENT) -> Ints:
     """Rows that raise the rank, taken in order (Gram and Schmidt, twice for orthogonality)."""
     basis = np.zeros((0, matrix.shape[1]))
-    kept = []
+    kept: list[int] = []
     for k, row in enumerate(matrix):
         long = float(np.linalg.norm(row))
         if long == 0.0 or len(kept) == matrix.shape[1]:
@@ -59,7 +59,8 @@ def jacobian_near(system: System, poses: Array) -> Array:
     values = measure(system.eqs, poses[1:2], np.arange(len(system.eqs.values)))
     with np.errstate(invalid="ignore"):
         _, jacobian = system.both(poses[1:2], values)
-    return np.nan_to_num(jacobian[0])
+    near: Array = np.nan_to_num(jacobian[0])
+    return near
 
 
 def determined(jacobian: Array, joints: Ints, dim: int) -> NDArray[np.bool_]:
@@ -67,7 +68,8 @@ def determined(jacobian: Array, joints: Ints, dim: int) -> NDArray[np.bool_]:
     _, s, vt = np.linalg.svd(jacobian, full_matrices=True)
     rank = int((s > DEPENDENT * max(1.0, s[0] if len(s) else 1.0)).sum())
     moves = np.abs(vt[rank:]).reshape(-1, len(joints), dim)
-    return ~(moves > 1e-6).any(axis=(0, 2))
+    still: NDArray[np.bool_] = ~(moves > 1e-6).any(axis=(0, 2))
+    return still
 
 
 def smallest_block(system: System, poses: Array, placed: frozenset[int]) -> Block | None:

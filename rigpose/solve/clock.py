@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rigpose.model.equations import Array, Equations
+from rigpose.model.equations import Array, Equations, Ints
 from rigpose.solve.knowns import Knowns
 from rigpose.solve.table import Inputs
 
@@ -45,7 +45,7 @@ def sampled(eqs: Equations, knowns: Knowns) -> Clock:
     return Clock(eqs, knowns.frames, knowns, between)
 
 
-def _cubic(times: Array, frames: int) -> tuple[Array, Array]:
+def _cubic(times: Array, frames: int) -> tuple[Ints, Array]:
     """First of four samples ``(m,)`` and Lagrange's weights ``(m, 4)``, fewer for short motions."""
     points = min(4, frames)
     low = np.clip(np.floor(times).astype(np.intp) - 1, 0, max(frames - points, 0))
@@ -58,7 +58,7 @@ def _cubic(times: Array, frames: int) -> tuple[Array, Array]:
     return low, weights
 
 
-def _mixed(samples: Array, low: Array, weights: Array) -> Array:
+def _mixed(samples: Array, low: Ints, weights: Array) -> Array:
     take = samples[low[:, None] + np.arange(weights.shape[1])]
     mixed: Array = np.einsum("mk,mk...->m...", weights, take)
     return mixed

@@ -8,12 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 
-import numpy as np
-from scipy.sparse import csr_array
-from scipy.sparse.csgraph import maximum_bipartite_matching
-
 from rigpose.model.rig import Frozen, Rig
-from rigpose.solve.pieces import Piece, slopes_at
 
 
 def counted_freedoms(rig: Rig) -> int:
@@ -46,12 +41,3 @@ def _group(rig: Rig, group: Frozen, pinned: set[str]) -> int:
     bones = [b for b in rig.bones if b.name in group.bones]
     count = sum(not set(b.ends) <= pinned for b in bones)
     return min(count, _body([e for b in bones for e in b.ends], pinned))
-
-
-def structural_freedoms(piece: Piece) -> int:
-    """Coordinates of a piece that no row can be matched with: no less than this is free."""
-    eqs = piece.system.eqs
-    pattern = csr_array(slopes_at(piece.system, eqs.at)[piece.rows][:, piece.columns])
-    pattern.eliminate_zeros()
-    matched = maximum_bipartite_matching(pattern, perm_type="row")
-    return len(piece.columns) - int(np.sum(np.asarray(matched) >= 0))

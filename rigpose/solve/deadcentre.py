@@ -53,7 +53,7 @@ class _Heights:
         self.flips, self.choice = flips, choice
 
     def __call__(self, rows: Ints, times: Array) -> Array:
-        """``(m, k)`` for rows ``(m,)`` and times ``(m, k)``; NaN where an earlier choice is dead."""
+        """``(m, k)`` for rows ``(m,)`` and times ``(m, k)``; NaN past an earlier dead one."""
         m, k = times.shape
         flat, every = times.ravel(), np.repeat(rows, k)
         base = base_table(self.context, self.clock.at(flat), True, hints=self._hints(every, flat))

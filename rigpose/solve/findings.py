@@ -11,7 +11,7 @@ from rigpose.solve.closing import Gap
 from rigpose.solve.redundant import Redundancy
 from rigpose.solve.rounded import Rounding
 from rigpose.solve.suggest import Suggestion
-from rigpose.solve.words import amount, count, listed
+from rigpose.solve.words import amount, count, large, listed
 
 T = TypeVar("T")
 SHOWN = 4
@@ -47,7 +47,8 @@ class Report:
     gaps : lengths that can never close; suggestions : what makes the poses finite, best first
     groups : for a rig that doesn't move, its independent groups with their branches
     slack, close : the rig's tolerances, fractions of the size
-    measured : whether all ranks were measured (False: in part only counted, as the rig is large)
+    measured : whether all motions were tried (False: in part known to first order only, and
+    redundant lengths not at all, as the rig is large)
     stopped : whether the caller stopped the work, so that the later fields are empty
     """
 
@@ -184,5 +185,5 @@ class Report:
 
     @staticmethod
     def _group(g: BranchGroup) -> str:
-        most = "no bound is known" if g.branches is None else f"at most {g.branches}"
+        most = "no bound is known" if g.branches is None else f"at most {large(g.branches)}"
         return f"Branches of {listed(g.joints)}: {most}."

@@ -72,8 +72,8 @@ class Growth:
     def begin_ground(self) -> None:
         """Pins, fixed rails and targets are known from the start."""
         eqs = self.net.eqs
-        for j in np.flatnonzero(eqs.pinned):
-            self._placed(int(j), int(j), None)
+        for pin in map(int, np.flatnonzero(eqs.pinned)):
+            self._placed(pin, pin, None)
         whole = [j for j in {j for j, _ in self.targets}
                  if all((j, axis) in self.targets for axis in range(eqs.dim))]
         for j in sorted(whole):
@@ -151,12 +151,12 @@ class Growth:
             a, b = map(int, eqs.distances.ends[k])
             self._link(k, a, b)
             self._link(k, b, a)
-        for k in np.flatnonzero(eqs.angles.value == value):
-            self._push(0, int(k), "crank")
-        for k in np.flatnonzero(eqs.lines.value == value):
-            if eqs.lines.along[k, 0] == GROUND and self.ground:
-                self._across(int(k), value)
-            self._push(0, int(k), "slide")
+        for c in map(int, np.flatnonzero(eqs.angles.value == value)):
+            self._push(0, c, "crank")
+        for r in map(int, np.flatnonzero(eqs.lines.value == value)):
+            if eqs.lines.along[r, 0] == GROUND and self.ground:
+                self._across(r, value)
+            self._push(0, r, "slide")
 
     # -- a joint has been placed --------------------------------------------------------------
 

@@ -112,8 +112,9 @@ def _numbers(given: npt.ArrayLike, part: str, problems: list[Problem], ndim: int
 
 
 def _in_range(rig: Rig, name: str, array: Array, problems: list[Problem]) -> bool:
-    part = next(p for p in (*rig.cranks, *rig.rams, *rig.rails) if p.name == name)
-    low, high = part.range or (-np.inf, np.inf)
+    ranges = {p.name: p.range for p in rig.cranks} | {p.name: p.range for p in rig.rams}
+    ranges |= {p.name: p.range for p in rig.rails}
+    low, high = ranges[name] or (-np.inf, np.inf)
     room = 1e-9 * max(abs(low) if np.isfinite(low) else 0, abs(high) if np.isfinite(high) else 0)
     outside = (array < low - room) | (array > high + room)
     if outside.any():

@@ -40,7 +40,8 @@ class Motions:
     rest; pose (n, dim) : a pose close to rest, moved along a real motion (rest if there is none)
     tangents (c, finite) : the real motions there; lame (c, ...) : those of first order only
     stresses (m, ...) : combinations of rows that are redundant there
-    exact : whether ``tangents`` hold to rounding; structural : counted only, not measured
+    exact : whether ``tangents`` hold to rounding; structural : known to
+    first order only
     singular : singular values at rest, rising
     """
 

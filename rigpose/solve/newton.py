@@ -26,7 +26,7 @@ def _columns(step: Cluster, dim: int) -> Ints:
 
 
 def _surroundings(step: Cluster, table: Table) -> tuple[Array, Array, Array]:
-    """Poses ``(B, n, 2)`` with the placed joints in, values ``(B, v)`` and targets ``(B, n, 2)``."""
+    """Poses ``(B, n, 2)`` with the placed joints in, values ``(B, v)``, targets ``(B, n, 2)``."""
     eqs = table.eqs
     b = table.branches
     x = np.repeat(eqs.at[None], b, axis=0)
@@ -134,7 +134,8 @@ def block_margin(step: Cluster, x: Array, values: Array, goal: Array) -> Array:
     move = np.linalg.pinv(a, rcond=1e-14)
     n, w, m = move.shape
     far = np.sqrt((move.reshape(n, w // 2, 2, m) ** 2).sum(axis=2)).max(axis=(1, 2))
-    return np.minimum(1.0, 1.0 / np.maximum(far, 1.0))
+    margin: Array = np.minimum(1.0, 1.0 / np.maximum(far, 1.0))
+    return margin
 
 
 def cluster_branches(step: Cluster, table: Table, number: int) -> None:

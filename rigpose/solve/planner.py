@@ -22,8 +22,8 @@ from rigpose.solve.checks import check_key, checks_for
 from rigpose.solve.flow import reads, writes
 from rigpose.solve.grouping import grouped
 from rigpose.solve.growth import Growth
-from rigpose.solve.net import Net, Solid
 from rigpose.solve.nearby import nearby
+from rigpose.solve.net import Net, Solid
 from rigpose.solve.plan import (
     Circle,
     Cluster,
@@ -221,7 +221,7 @@ class Planner:
             ground._arrived(j)
         return True
 
-    # -- blocks -------------------------------------------------------------------------------------
+    # -- blocks -------------------------------------------------------------------------------
 
     def _cluster(self) -> bool:
         """The smallest block of joints that the rows between them and placed joints fix."""
@@ -232,8 +232,9 @@ class Planner:
         if block is None:
             return False
         names = tuple(dict.fromkeys(system.row_names[r] for r in block.square))
-        ground.steps.append(Cluster(system=system, joints=block.joints, rows=block.rows, square=block.square,
-                                    around=block.around, bit=0, parts=names))
+        ground.steps.append(Cluster(
+            system=system, joints=block.joints, rows=block.rows, square=block.square,
+            around=block.around, bit=0, parts=names))
         for number, solid in enumerate(self.net.solids):
             inside = [j for j in solid.local if j in block.joints or j in ground.place]
             if any(j in block.joints for j in solid.local):

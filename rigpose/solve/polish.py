@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from rigpose.model.equations import Array
+from rigpose.model.equations import Array, Ints
 from rigpose.model.system import System
 from rigpose.solve.plan import Plan
 from rigpose.solve.rest import Rest, solve_step
@@ -50,7 +50,7 @@ def polish(rest: Rest, plan: Plan, cells: Cells, base: Table, inputs: Inputs) ->
     cells.places = places
 
 
-def _poses(n: int, base: Table, b: Array, f: Array) -> Array:
+def _poses(n: int, base: Table, b: Ints, f: Ints) -> Array:
     x = np.full((len(b), n, 2), np.nan)
     for p in range(n):
         if p in base.points:
@@ -59,14 +59,14 @@ def _poses(n: int, base: Table, b: Array, f: Array) -> Array:
     return x
 
 
-def _values(names: tuple[str, ...], base: Table, inputs: Inputs, b: Array, f: Array) -> Array:
+def _values(names: tuple[str, ...], base: Table, inputs: Inputs, b: Ints, f: Ints) -> Array:
     values = np.full((len(b), len(names)), np.nan)
     for v, array in inputs.values.items():
         values[:, v] = array[b if array.shape[0] > 1 else 0, f] if array.ndim == 2 else array[f]
     return values
 
 
-def _goals(n: int, inputs: Inputs, f: Array) -> Array:
+def _goals(n: int, inputs: Inputs, f: Ints) -> Array:
     goal = np.zeros((len(f), n, 2))
     for (j, axis), array in inputs.targets.items():
         goal[:, j, axis] = array[f]

@@ -8,10 +8,9 @@ from rigpose.ground.errors import Problem
 from rigpose.model.judge import Verdict
 from rigpose.model.rig import Rig
 from rigpose.solve.closing import Gap
-from rigpose.solve.report import Report
+from rigpose.solve.findings import Report
 from rigpose.solve.rest import Rest
-from rigpose.solve.rounded import Rounding
-from rigpose.solve.words import amount, count, listed
+from rigpose.solve.words import amount, listed
 
 
 def problems(rest: Rest, verdict: Verdict, report: Report) -> Iterator[Problem]:
@@ -29,7 +28,6 @@ def problems(rest: Rest, verdict: Verdict, report: Report) -> Iterator[Problem]:
         yield Problem(rig.source, name, "every joint is pinned or held by a part", "none",
                       "add a bone to it, or take it out")
     yield from _ranges(rig, rest, verdict)
-    yield from (_rounding_problem(rig, r) for r in report.rounding)
 
 
 def _gap_problem(rig: Rig, g: Gap) -> Problem:
@@ -63,13 +61,3 @@ def _ranges(rig: Rig, rest: Rest, verdict: Verdict) -> Iterator[Problem]:
             unit = "degrees" if angle else rig.unit
             yield Problem(rig.source, name, "the rest pose keeps within its range",
                           f"{amount(over)} {unit} beyond", "widen the range or move `at`", over)
-
-
-def _rounding_problem(rig: Rig, r: Rounding) -> Problem:
-    mends = ", ".join(f"'{m.part}' to {m.better:.9g} {rig.unit}" for m in r.mends)
-    return Problem(
-        rig.source, r.mends[0].part if r.mends else "",
-        "lengths that allow a motion agree within `slack`",
-        f"they would move with {count(r.freedoms, 'freedom')} at a slack of {amount(r.slack)}",
-        f"change {mends}, or give equal lengths one name in [sizes]" if mends else
-        "give equal lengths one name in [sizes], or set slack so", r.slack)

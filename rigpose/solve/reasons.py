@@ -6,8 +6,8 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from rigpose.solve.findings import Report
 from rigpose.solve.mobility import Motions
-from rigpose.solve.report import Report
 from rigpose.solve.study import DENSE, Study
 from rigpose.solve.words import count, listed
 
@@ -24,8 +24,8 @@ def reasons(found: Study, report: Report) -> Iterator[str]:
     for m in found.motions:
         joints = listed([names[j] for j in m.piece.joints])
         if m.structural:
-            yield (f"{joints}: more than {DENSE} coordinates hang together, so this was counted, "
-                   "not measured.")
+            yield (f"{joints}: over {DENSE} coordinates hang together, so motions are known to "
+                   "first order only, redundant lengths not at all.")
         elif m.first > m.finite:
             yield _first_order_only(m, names)
     spare = [r for r in report.redundant if len(r.parts) > 1]

@@ -29,7 +29,7 @@ class Cut:
 
 def cuts_of(eqs: Equations, group: Group) -> tuple[Cut, ...] | None:
     """The reflection of every choice of a group, or None where some choice has none."""
-    cuts = []
+    cuts: list[Cut] = []
     for k, step in enumerate(group.steps):
         if isinstance(step, Check):
             return None

@@ -10,15 +10,17 @@ from rigpose.model.rig import Rig
 from rigpose.solve.bounds import branch_bound
 from rigpose.solve.closing import open_gaps
 from rigpose.solve.counting import counted_freedoms
+from rigpose.solve.findings import BranchGroup, Moving, Report
 from rigpose.solve.planner import plan_for
 from rigpose.solve.problems import problems
 from rigpose.solve.reasons import reasons
 from rigpose.solve.redundant import redundant_sets
-from rigpose.solve.report import BranchGroup, Moving, Report
 from rigpose.solve.rest import Rest, find_rest
 from rigpose.solve.rounded import rounding_of
 from rigpose.solve.study import Study
 from rigpose.solve.suggest import suggestions
+
+__all__ = ["BranchGroup", "Moving", "Report", "check"]
 
 STAGES = ("lengths", "motions", "rounding", "suggestions")
 
@@ -77,8 +79,6 @@ def _freedoms(report: Report, found: Study) -> Report:
     rest = found.rest
     names = rest.rig.joint_names
     moving = tuple(Moving(tuple(names[j] for j in g.joints), g.freedoms) for g in found.groups)
-    moving += tuple(Moving(tuple(names[j] for j in m.piece.joints), m.finite)
-                    for m in found.motions if m.structural and m.finite)
     report = replace(
         report, freedoms=sum(m.finite for m in found.motions),
         freedoms_first_order=sum(m.first for m in found.motions),
@@ -95,11 +95,9 @@ def _rounding(report: Report, found: Study) -> Report:
 
 
 def _suggestions(report: Report, found: Study) -> Report:
-    if not report.assembles:
+    if not report.assembles or not report.measured:
         return report
     if report.freedoms:
-        if not report.measured:
-            return report
         loose = {found.rest.rig.index[j] for j in report.loose}
         groups = [g for g in found.groups if not set(map(int, g.joints)) <= loose]
         return replace(report, suggestions=suggestions(found.rest, groups))

@@ -12,16 +12,19 @@ from dataclasses import dataclass, replace
 from functools import lru_cache
 
 import numpy as np
+from numpy.typing import NDArray
 from scipy.sparse import csr_array
 from scipy.sparse.linalg import lsmr
 
 from rigpose.ground.tolerance import Tolerances
-from rigpose.model.equations import Array, Equations
+from rigpose.model.equations import Array, Equations, Ints
 from rigpose.model.gauges import zeros_at
 from rigpose.model.judge import size_of
 from rigpose.model.lower import lower
 from rigpose.model.rig import Rig
 from rigpose.model.system import System
+
+Mask = NDArray[np.bool_]
 
 DENSE = 900
 """Up to this many coordinates dense linear algebra is faster and exact about ranks."""
@@ -64,12 +67,13 @@ class Rest:
 def solve_step(jacobian: Array, residual: Array, cut: float = 1e-9) -> Array:
     """Shortest least-squares steps ``(N, m)`` for ``(N, r, m)``; singular values below the
     fraction ``cut`` of the largest are left out (truncated least squares)."""
-    return -np.einsum("nmr,nr->nm", np.linalg.pinv(jacobian, rcond=cut), residual)
+    step: Array = -np.einsum("nmr,nr->nm", np.linalg.pinv(jacobian, rcond=cut), residual)
+    return step
 
 
 def assemble(
     system: System, x: Array, values: Array, goal: Array | None = None, steps: int = 60,
-    columns: Array | None = None,
+    columns: Ints | None = None,
 ) -> tuple[Array, Array]:
     """Bring poses ``(N, n, dim)`` onto their rows by Gauss-Newton steps with halving.
 
@@ -129,7 +133,8 @@ def _nearest(system: System, start: Array, values: Array) -> Array:
         if new[0] > max(size[0], 1e-13) * 4 or far >= np.linalg.norm(away) * (1 - 1e-12):
             break
         x = moved
-    return x[0]
+    pose: Array = x[0]
+    return pose
 
 
 def _big(system: System, start: Array, values: Array) -> Array:
@@ -173,7 +178,7 @@ def find_rest(rig: Rig) -> Rest:
     return _make(rig, eqs, system, start, values)
 
 
-def _start_missing(system: System, eqs: Equations, start: Array, missing: Array) -> Array:
+def _start_missing(system: System, eqs: Equations, start: Array, missing: Mask) -> Array:
     if start.size > DENSE:
         filled = start.copy()
         filled[missing] = np.nanmean(start, axis=0)

@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,7 +18,7 @@ from numpy.typing import NDArray
 from rigpose.ground.words import Found, weaker
 from rigpose.model.equations import Array
 from rigpose.solve.clock import Clock
-from rigpose.solve.deadcentre import Hits, classify
+from rigpose.solve.deadcentre import classify
 from rigpose.solve.plan import Group
 from rigpose.solve.screen import Screen
 from rigpose.solve.search import Cells, Context, search
@@ -83,14 +84,16 @@ class Flips:
         return {k: self._signs(k, start, stop) for k in range(self.codes.shape[1])}
 
     def _signs(self, k: int, start: int, stop: int) -> Array:
-        base = self.codes[:, k].astype(np.float64)[:, None]
+        base: Array = self.codes[:, k].astype(np.float64)[:, None]
         if not self.turned[k]:
             return base
         rows = np.array([row for row, _ in self.turned[k]], dtype=np.intp)
         frames = np.ceil([time for _, time in self.turned[k]]).astype(np.intp)
         toggle = np.zeros((len(base), stop - start), dtype=np.intp)
-        np.add.at(toggle, (rows[frames < stop], np.maximum(frames[frames < stop], start) - start), 1)
-        return base * (1.0 - 2.0 * (np.cumsum(toggle, axis=1) % 2))
+        soon = frames < stop
+        np.add.at(toggle, (rows[soon], np.maximum(frames[soon], start) - start), 1)
+        signs: Array = base * (1.0 - 2.0 * (np.cumsum(toggle, axis=1) % 2))
+        return signs
 
     def at(self, choice: int, rows: NDArray[np.intp], times: Array) -> Array:
         """Signs ``(m,)`` of one choice for pairs of rows and times."""
@@ -204,4 +207,4 @@ def _all_codes(lists: list[Codes]) -> tuple[Codes, list[NDArray[np.intp]]]:
     # + before -, as a single block has it.
     codes, flat = codes[::-1], len(codes) - 1 - inverse.ravel()
     ends = np.cumsum([0, *(len(x) for x in lists)])
-    return codes, [flat[a:b] for a, b in zip(ends[:-1], ends[1:], strict=True)]
+    return codes, [flat[a:b] for a, b in pairwise(ends)]

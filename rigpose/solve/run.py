@@ -181,7 +181,7 @@ def _parents(table: Table, points: Sequence[Point]) -> Array | float:
     return total
 
 
-def choose(  # noqa: PLR0917
+def choose(
     dst: Point, bit: int, crossing: tuple[Array, Array, Array, Array], table: Table, ways: Ways,
     number: int, parents: Sequence[Point], rate: object,
 ) -> None:
@@ -202,7 +202,7 @@ def choose(  # noqa: PLR0917
     else:
         near = np.abs(sine2) < CAREFUL
         if near.any():
-            columns = near.any(axis=0)
+            columns: NDArray[np.bool_] = np.asarray(near.any(axis=0))
             table.flagged = columns if table.flagged is None else table.flagged | columns
     if ways is not None:
         way = ways[bit]
@@ -219,7 +219,7 @@ def choose(  # noqa: PLR0917
     both(dst, base, side, sine2, sine, table, number, bound)
 
 
-def both(  # noqa: PLR0917
+def both(
     dst: Point, base: Array, side: Array, sine2: Array, sine: Array, table: Table, number: int,
     bound: Array | float,
 ) -> None:
@@ -415,7 +415,7 @@ def _(step: Check, table: Table, ways: Ways, number: int) -> None:
     ok = check_passes(step, table)
     table.kill(ok, number)
     if ways is None and ok.shape[0] > 1 and table.alive is not None:
-        alive: NDArray[np.bool_] = table.alive.any(axis=1)
+        alive: NDArray[np.bool_] = np.asarray(table.alive.any(axis=1))
         if not alive.all():
             _widen(table, table.branches)
             table.renumber(np.flatnonzero(np.broadcast_to(alive, (table.branches,))))

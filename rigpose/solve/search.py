@@ -7,6 +7,7 @@ centre are run again with error bounds carried along, and what rounding has left
 from __future__ import annotations
 
 from dataclasses import dataclass, field, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -51,7 +52,7 @@ class Context:
 
     rest: Rest
     plan: Plan
-    budget: Budget = Budget()
+    budget: Budget = field(default_factory=Budget)
 
     def table(self, inputs: Inputs, careful: bool) -> Table:
         """An empty table with the pins in."""
@@ -140,7 +141,7 @@ def _part(array: Array, columns: NDArray[np.intp]) -> Array:
     return array if array.shape[-1] == 1 else array[..., columns]
 
 
-def _again(  # noqa: PLR0917
+def _again(
     context: Context, group: Group, inputs: Inputs, ways: Ways, rows: int | None, cells: Cells,
     columns: NDArray[np.intp], more: dict[str, object],
 ) -> Cells:
@@ -157,7 +158,7 @@ def _again(  # noqa: PLR0917
     return _merge(cells, careful, columns)
 
 
-def _full(array: Array, shape: tuple[int, ...]) -> Array:
+def _full(array: Any, shape: tuple[int, ...]) -> Any:
     """A writable copy of the given shape."""
     return np.array(np.broadcast_to(array, shape))
 
@@ -192,7 +193,7 @@ def _merge(cells: Cells, careful: Cells, columns: NDArray[np.intp]) -> Cells:
     mine, theirs = where.ravel()[:b], where.ravel()[b:]
     n = len(codes)
 
-    def grown(array: Array, fill: float | bool) -> Array:
+    def grown(array: Any, fill: float | bool) -> Any:
         lead = array.shape[:-2]
         out = np.full((*lead, n, f), fill, dtype=array.dtype)
         out[..., mine, :] = np.broadcast_to(array, (*lead, b, f))

@@ -5,13 +5,15 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from copy import copy
+from typing import Any
 
 import numpy as np
 
+from rigpose.ground.words import Found, weaker
 from rigpose.solve.plan import Group
+from rigpose.solve.polish import polish
 from rigpose.solve.run import run_steps
 from rigpose.solve.search import Cells, Context, base_table, cells_of, group_table
-from rigpose.solve.polish import polish
 from rigpose.solve.table import Inputs, Table
 
 BLOCK = 1 << 14
@@ -97,15 +99,17 @@ def joined(pieces: list[Cells]) -> Cells:
         return pieces[0]
     first = pieces[0]
 
-    def whole(arrays: list[np.ndarray], axis: int) -> np.ndarray:
+    def whole(arrays: list[Any], axis: int) -> Any:
         wide = [np.broadcast_to(a, (*a.shape[:axis], len(c.codes), *a.shape[axis + 1:]))
                 for a, c in zip(arrays, pieces, strict=True)]
         return np.concatenate(wide, axis=axis)
 
     places = [whole([c.places[k] for c in pieces], 1) for k in range(len(first.places))]
     values = {v: whole([c.values[v] for c in pieces], 0) for v in first.values}
-    found = max((c.found for c in pieces), key=lambda f: list(type(f)).index(f))
+    found = Found.COMPLETE
+    for cells in pieces:
+        found = weaker(found, cells.found)
     return Cells(first.group, np.concatenate([c.codes for c in pieces]), places,
                  np.concatenate([c.alive for c in pieces]),
                  np.concatenate([c.margin for c in pieces]), [], found, values,
-                 frozenset().union(*(c.turning for c in pieces)))
+                 frozenset[tuple[int, tuple[str, ...]]]().union(*(c.turning for c in pieces)))

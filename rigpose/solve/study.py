@@ -5,18 +5,15 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import cached_property
 
-import numpy as np
-
-from rigpose.model.equations import Array
 from rigpose.model.system import System
-from rigpose.solve.counting import structural_freedoms
 from rigpose.solve.mobility import Motions, motions
 from rigpose.solve.moving import Mover, movers
 from rigpose.solve.pieces import Cut, Piece, cut
 from rigpose.solve.rest import Rest
+from rigpose.solve.sparse import large_motions
 
 DENSE = 600
-"""Unknowns of one piece up to which its rank is measured; above it is only counted."""
+"""Unknowns of one piece up to which its motions are tried by steps."""
 
 
 @dataclass(frozen=True)
@@ -54,8 +51,4 @@ class Study:
     def _motions(self, piece: Piece) -> Motions:
         if len(piece.columns) <= DENSE:
             return motions(piece, self.rest.scaled, self.zero, self.rest.reach)
-        free = structural_freedoms(piece)
-        none: Array = np.zeros((len(piece.columns), 0))
-        stresses = np.zeros((len(piece.rows), 0))
-        return Motions(piece, free, free, 1, self.rest.scaled, none, none, stresses,
-                       structural=True)
+        return large_motions(piece, self.rest.scaled)

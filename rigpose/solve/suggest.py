@@ -80,9 +80,8 @@ def _for_group(rest: Rest, group: Mover) -> list[Suggestion]:
     return [s for _, s in found]
 
 
-def _rank(s: Suggestion, place: int) -> tuple[bool, int, float, int]:
-    branches = float("inf") if s.branches is None else float(s.branches)
-    return (s.margin < WEAK, s.block, branches, place)
+def _rank(s: Suggestion, place: int) -> tuple[bool, int, bool, int, int]:
+    return (s.margin < WEAK, s.block, s.branches is None, s.branches or 0, place)
 
 
 def _few(every: list[Choice], most: int) -> Iterator[tuple[int, Choice]]:

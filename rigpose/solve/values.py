@@ -11,7 +11,8 @@ def joints_of_value(eqs: Equations, value: int) -> list[int]:
     """The joints whose places give the value of a crank, ram or rail."""
     if value in eqs.ram_of:
         return [int(j) for j in eqs.distances.ends[eqs.ram_of[value]]]
-    for k in np.flatnonzero(eqs.angles.value == value):
+    for c in np.flatnonzero(eqs.angles.value == value):
+        k = int(c)
         both = (*eqs.angles.line[k], *eqs.angles.base[k])
         return [int(j) for j in both if j != GROUND]
     k = int(np.flatnonzero(eqs.lines.value == value)[0])

@@ -8,11 +8,24 @@ SEVERAL = 8
 
 
 def count(n: int, what: str) -> str:
-    """
+    """How many, in words.
+
     >>> count(1, "joint"), count(3, "joint")
     ('1 joint', '3 joints')
     """
-    return f"{n} {what}" if n == 1 else f"{n} {what}s"
+    return f"{n} {what}" if n == 1 else f"{large(n)} {what}s"
+
+
+def large(n: int) -> str:
+    """A whole number, in powers of ten where nobody would read its digits.
+
+    >>> large(4096), large(2**96)
+    ('4096', '8e28')
+    """
+    if n < 10**7:
+        return str(n)
+    power = len(str(n)) - 1
+    return f"{-(-n // 10**power)}e{power}"
 
 
 def amount(value: float, digits: int = 3) -> str:
