@@ -96,6 +96,12 @@ def test_a_flat_parallelogram_is_a_dead_centre_where_two_motions_meet() -> None:
     assert "2 motions meet" in report.why[0]
 
 
+@pytest.mark.parametrize("crank", [1.0, 0.1, 0.01, 0.001])
+def test_a_small_crank_turns_too(crank: float) -> None:
+    report = check(bars([(0, 0), (10, 0), (0, crank), (9, 2)], LOOP, (0, 1)))
+    assert freedoms(report) == (1, 1, 1)
+
+
 @pytest.mark.parametrize(("places", "expected"), [
     # Bolker and Roth 1980, Pacific J. Math. 90(1); Whiteley 1984: K3,3 in the plane loses rank
     # exactly when its six joints lie on a conic. That it is only shaky there was calculated: the
@@ -375,6 +381,20 @@ def test_a_triangle_that_cannot_close_is_told_by_how_much() -> None:
 
 def test_a_triangle_that_just_closes_is_no_gap() -> None:
     assert told(keel=1.0, rib=1.5, stay=2.5).gaps == ()
+
+
+@pytest.mark.parametrize(("length", "part", "mend"), [
+    (1.25, "strut", "shorten 'strut' or move them apart by 0.25 m"),
+    (0.75, "the ground", "move the pinned joints together or lengthen the others by 0.25 m"),
+])
+def test_a_bone_that_contradicts_its_pins_is_told(length: float, part: str, mend: str) -> None:
+    joints = {"a": {"at": [0, 0], "pin": True}, "b": {"at": [1, 0], "pin": True}}
+    report = check(make_rig(joints, {"strut": {"ends": ["a", "b"], "length": length}}))
+    (gap,) = report.gaps
+    assert (gap.part, gap.short) == (part, pytest.approx(0.25))
+    assert mend in [p.mend for p in report.problems]
+    (spare,) = report.redundant
+    assert spare.off == pytest.approx(1 - length)
 
 
 def test_a_chain_too_short_for_its_ground_is_told() -> None:

@@ -83,8 +83,8 @@ def _lengths(eqs: Equations, group: Mover, motion: Array) -> Iterator[Candidate]
     """Lengths between joints two parts apart: the braces that a person would draw."""
     held = _neighbours(eqs)
     moving = {int(j) for j in group.joints}
-    pairs = {(min(a, b), max(a, b)) for via in moving | _around(held, moving)
-             for a, b in combinations(sorted(held[via]), 2)
+    near = moving.union(*(held[j] for j in moving))
+    pairs = {(a, b) for via in near for a, b in combinations(sorted(held[via] & near), 2)
              if b not in held[a] and (a in moving or b in moving)}
     names = eqs.rig.joint_names
     for a, b in sorted(pairs):
@@ -95,10 +95,6 @@ def _lengths(eqs: Equations, group: Mover, motion: Array) -> Iterator[Candidate]
             rows = motion.reshape(eqs.n, eqs.dim, -1)
             slope = (gap / long) @ (rows[b] - rows[a])
             yield Candidate("length", ends=(names[a], names[b]), slope=tuple(map(float, slope)))
-
-
-def _around(held: list[set[int]], moving: set[int]) -> set[int]:
-    return set().union(*(held[j] for j in moving)) if moving else set()
 
 
 def _neighbours(eqs: Equations) -> list[set[int]]:

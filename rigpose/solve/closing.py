@@ -20,6 +20,7 @@ from rigpose.model.rig import Pair, Plate, Rail, Rig
 
 NEVER_ZERO = 1e-300
 """Stands for a gap of zero, which a sparse graph would take for no edge."""
+GROUND = "the ground"
 AT_ONCE = 256
 """Shortest ways are looked for from so many joints at a time, which bounds the memory."""
 
@@ -111,7 +112,7 @@ def _reaches(rig: Rig) -> Iterator[Reach]:
     pins = [j for j in rig.joints if j.pin and j.at is not None]
     for p, q in combinations(pins, 2):
         gap = float(np.linalg.norm(np.subtract(p.at, q.at)))  # type: ignore[arg-type]
-        yield Reach("the ground", at[p.name], at[q.name], gap, gap)
+        yield Reach(GROUND, at[p.name], at[q.name], gap, gap)
     for rail in rig.rails:
         if rail.through is not None and rail.direction is not None:
             for p in pins:

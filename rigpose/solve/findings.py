@@ -10,7 +10,7 @@ from rigpose.ground.errors import Problem
 from rigpose.solve.closing import Gap
 from rigpose.solve.redundant import Redundancy
 from rigpose.solve.rounded import Rounding
-from rigpose.solve.suggest import Suggestion
+from rigpose.solve.suggest import WEAK, Suggestion
 from rigpose.solve.words import amount, count, large, listed
 
 T = TypeVar("T")
@@ -171,9 +171,10 @@ class Report:
         for s in best:
             how = "joint by joint" if s.block == 1 else f"{s.block} joints at once"
             most = "" if s.branches is None else f", at most {count(s.branches, 'pose')}"
-            yield f"  {s}: {how}{most}{', but weakly' if s.margin < 1e-2 else ''}."
+            weakly = ", but weakly" if s.margin < WEAK else ""
+            yield f"  {listed(s.names, SHOWN)}: {how}{most}{weakly}."
         if len(self.suggestions) > len(best):
-            yield f"  and {len(self.suggestions) - len(best)} more ways."
+            yield f"  and {count(len(self.suggestions) - len(best), 'more way')}."
         yield from self._short(self.groups, self._group, "independent groups")
 
     def _best(self) -> list[Suggestion]:

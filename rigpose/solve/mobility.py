@@ -21,7 +21,7 @@ from rigpose.solve.pieces import Piece
 
 STEP = 1e-3
 """A trial step as a fraction of the size, or of four typical lengths where the rig is longer;
-a larger fraction where slack would hide what it shows."""
+a larger fraction where slack would hide what it shows, a smaller one where a bone is short."""
 ROUNDS = 30
 STILL = 1e-5
 """Newton has ended when it moves less than this fraction of the trial step."""
@@ -161,7 +161,9 @@ def rank_split(piece: Piece, rest: Array, zero: float, reach: float) -> Split:
     led, lead = np.sort(columns[:rank]), np.sort(columns[rank:])
     rows = qr(jac[:, led].T, mode="r", pivoting=True)[1] if rank else np.arange(m)
     held, spare = np.sort(rows[:rank]), np.sort(rows[rank:])
-    step = max(STEP, 3 * np.sqrt(zero)) * piece.length(reach)
+    typical, shortest = piece.lengths(reach)
+    step = max(STEP, 3 * np.sqrt(zero)) * typical
+    step = min(step, max(0.3 * shortest, 30 * zero * typical))
     return Split(piece, rest, zero, step, s[::-1], held, spare, led, lead)
 
 
@@ -181,7 +183,8 @@ def motions(piece: Piece, rest: Array, zero: float, reach: float) -> Motions:
         if best is None or found.finite > best.finite:
             best = found
     if best is None or not best.finite:
-        return _local(split, rest, at_rest, 0, 0)
+        # Without a spare row every motion goes on (implicit function theorem).
+        return _local(split, rest, at_rest, 0, 0 if len(split.spare) else 1)
     return _with_ways(split, best, moved)
 
 

@@ -47,13 +47,15 @@ class Piece:
         column[self.columns] = np.arange(len(self.columns))
         return row, column
 
-    def length(self, reach: float) -> float:
-        """A length that is typical of the piece, at most ``reach``: steps are measured by it."""
+    def lengths(self, reach: float) -> tuple[float, float]:
+        """A typical length of the piece, at most ``reach``, and its shortest one."""
         eqs, dist = self.system.eqs, self.system.dist_rows
         every = np.concatenate([eqs.distances.length[dist],
                                 [b.distance(*b.joints[list(b.base)]) for b in eqs.bodies]])
         mine = every[self.rows[self.rows < len(every)]]
-        return min(reach, 4 * float(np.median(mine))) if len(mine) else reach
+        if not len(mine):
+            return reach, reach
+        return min(reach, 4 * float(np.median(mine))), float(mine.min())
 
     def both(self, x: Array) -> tuple[Array, Array]:
         """Weighted residuals ``(N, m)`` and Jacobians ``(N, m, c)`` at poses ``(N, n, dim)``."""

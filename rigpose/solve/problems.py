@@ -7,9 +7,10 @@ from collections.abc import Iterator
 from rigpose.ground.errors import Problem
 from rigpose.model.judge import Verdict
 from rigpose.model.rig import Rig
-from rigpose.solve.closing import Gap
+from rigpose.solve.closing import GROUND, Gap
 from rigpose.solve.findings import Report
 from rigpose.solve.rest import Rest
+from rigpose.solve.rounded import LARGEST_SLACK
 from rigpose.solve.words import amount, listed
 
 
@@ -21,7 +22,7 @@ def problems(rest: Rest, verdict: Verdict, report: Report) -> Iterator[Problem]:
         enough = max([report.misfit, *(abs(r.off) / rest.size for r in report.redundant)])
         yield Problem(rig.source, report.worst, "all lengths hold at rest within `slack`",
                       f"off by {amount(off)} {unit} at best",
-                      f"mend the lengths told below, or set slack to {amount(1.01 * enough)}", off)
+                      "mend the lengths told below" + _slack(enough), off)
     yield from (_gap_problem(rig, g) for g in report.gaps)
     yield from _disagreements(rig, report)
     for name in report.loose:
@@ -30,12 +31,19 @@ def problems(rest: Rest, verdict: Verdict, report: Report) -> Iterator[Problem]:
     yield from _ranges(rig, rest, verdict)
 
 
+def _slack(enough: float) -> str:
+    """The slack that would pass, where it is no more than what rounding may need."""
+    return f", or set slack to {amount(1.01 * enough)}" if enough < LARGEST_SLACK else ""
+
+
 def _gap_problem(rig: Rig, g: Gap) -> Problem:
+    mend = f"shorten '{g.part}'" if g.part != GROUND else "move the pinned joints together"
+    mend += " or lengthen the others" if set(g.chain) != {GROUND} else " or move them apart"
     return Problem(
         rig.source, g.part, f"a chain from {g.ends[0]} to {g.ends[1]} is long enough to close",
         f"{amount(g.least, 6)} {rig.unit} apart, reached by {listed(g.chain)}: "
         f"{amount(g.reach, 6)} {rig.unit}",
-        f"shorten '{g.part}' or lengthen the others by {amount(g.short, 6)} {rig.unit}", g.short)
+        f"{mend} by {amount(g.short, 6)} {rig.unit}", g.short)
 
 
 def _disagreements(rig: Rig, report: Report) -> Iterator[Problem]:

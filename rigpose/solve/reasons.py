@@ -19,7 +19,7 @@ def reasons(found: Study, report: Report) -> Iterator[str]:
     rig, names = found.rest.rig, found.rest.rig.joint_names
     if not report.assembles:
         yield "Measured where the lengths come closest, as the rig does not assemble."
-    if not any(j.pin for j in rig.joints) and not rig.rails:
+    if len(rig.joints) > 1 and not any(j.pin for j in rig.joints) and not rig.rails:
         yield "Nothing is pinned: 3 of the freedoms move the rig as a whole."
     for m in found.motions:
         joints = listed([names[j] for j in m.piece.joints])

@@ -43,7 +43,7 @@ def redundant_sets(system: System, pieces: Cut, found: Sequence[Motions], rest: 
     Redundancy, ...
 ]:
     """All redundant sets; their departures are measured at ``rest (n, dim)``."""
-    residual = system.residual(rest[None], unknown(system, 1))[0]
+    residual = departures(system, rest)
     sets: list[Redundancy] = []
     for motion in found:
         rows = motion.piece.rows
@@ -55,10 +55,20 @@ def redundant_sets(system: System, pieces: Cut, found: Sequence[Motions], rest: 
     sets = _measured(system, sets, rest)
     for r in pieces.fixed:
         name = system.row_names[r]
-        sets.append(Redundancy((name,), name, -float(residual[r]) * system.eqs.scale))
+        sets.append(Redundancy((name,), name, float(residual[r]) * system.eqs.scale))
     bodies = {b.name for b in system.eqs.bodies}
     real = (s for s in sets if len(s.parts) > 1 or s.last not in bodies)
     return tuple(dict.fromkeys(real))
+
+
+def departures(system: System, x: Array) -> Array:
+    """How far each row is from holding at one pose; of a bone, measured less wanted length."""
+    residual: Array = system.residual(x[None], unknown(system, 1))[0]
+    bones = len(system.dist_rows)
+    length = system.eqs.distances.length[system.dist_rows]
+    off = 2 * length * residual[:bones]
+    residual[:bones] = off / (np.sqrt(np.maximum(length**2 + off, 0.0)) + length)
+    return residual
 
 
 def _measured(system: System, sets: list[Redundancy], rest: Array) -> list[Redundancy]:

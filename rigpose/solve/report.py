@@ -53,12 +53,14 @@ def check(rig: Rig, *, watch: Watch | None = None) -> Report:
 def _at_rest(rest: Rest, verdict: Verdict) -> Report:
     rig = rest.rig
     misfit, worst = verdict.worst()
+    if misfit <= rig.slack < rest.misfit:  # a tie, which the judge has no length for
+        misfit, worst = rest.misfit, rest.worst
     moved = {j.name: float(d) for j, d in zip(rig.joints, rest.moved, strict=True)
              if d > 1e-12 * rest.size}
     return Report(
         name=rig.name, dim=rig.dim, unit=rig.unit, joints=len(rig.joints), bones=len(rig.bones),
-        size=rest.size, misfit=max(misfit, rest.misfit if misfit > rig.slack else 0.0),
-        worst=worst, moved=moved, slack=rig.slack, close=rig.close)
+        size=rest.size, misfit=misfit, worst=worst,
+        moved=moved, slack=rig.slack, close=rig.close)
 
 
 def _lengths(report: Report, found: Study) -> Report:
