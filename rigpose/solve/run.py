@@ -229,12 +229,17 @@ def both(
     place = np.empty((2, 2 * b, shape[2]))
     np.add(base, side, out=place[:, :b])
     np.subtract(base, side, out=place[:, b:])
-    table.sines.append(sine2)
+    if table.inputs.frames > 1:
+        table.sines.append(sine2)
     table.kill(sine2 >= 0, number)
     table.narrow(sine)
-    index = np.concatenate([np.arange(b), np.arange(b)])
-    sign = np.repeat(np.array([1, -1], dtype=np.int8), b)
-    alive = np.broadcast_to(table.alive, (b, table.inputs.frames)).any(axis=1)  # type: ignore[arg-type]
+    index = np.arange(2 * b) % b
+    sign = np.ones(2 * b, dtype=np.int8)
+    sign[b:] = -1
+    assert table.alive is not None  # killing has just made it
+    alive = table.alive.any(axis=1)
+    if len(alive) != b:
+        alive = np.broadcast_to(alive, (b,))
     if not alive.all():
         keep = np.flatnonzero(np.concatenate([alive, alive]))
         index, sign, place = index[keep], sign[keep], place[:, keep]
@@ -251,22 +256,25 @@ def both(
 def _widen(table: Table, b: int) -> None:
     """Tables with a branch axis of one are spread where branches differ from now on."""
     frames = table.inputs.frames
-    if table.alive is not None:
+    if table.alive is not None and len(table.alive) != b:
         table.alive = np.broadcast_to(table.alive, (b, table.alive.shape[-1]))
-    if table.margin is not None:
+    if table.margin is not None and len(table.margin) != b:
         table.margin = np.broadcast_to(table.margin, (b, table.margin.shape[-1]))
-    if table.killer is not None:
+    if table.killer is not None and len(table.killer) != b:
         table.killer = np.broadcast_to(table.killer, (b, frames))
-    table.sines = [np.broadcast_to(s, (b, s.shape[-1])) for s in table.sines]
-    table.codes = [np.broadcast_to(c, (b,)) for c in table.codes]
+    table.sines = [s if len(s) == b else np.broadcast_to(s, (b, s.shape[-1]))
+                   for s in table.sines]
+    table.codes = [c if len(c) == b else np.broadcast_to(c, (b,)) for c in table.codes]
 
 
 def _spin(step: Carry | Aim | Swing, table: Table, cos: Array, sin: Array, pivot: Array,
           local: Array, bound: Array | float) -> None:
     """Place all joints of a body turned by (cos, sin) about a placed point."""
+    shape = np.broadcast_shapes(cos.shape, pivot.shape[1:], local.shape[1:])
     for dst, place in zip(step.dst, step.local, strict=True):
         w = _local(table, place) - local
-        out = np.empty((2, *np.broadcast_shapes(cos.shape, pivot.shape[1:], w.shape[1:])))
+        one = w.shape[1:] == (1, 1)
+        out = np.empty((2, *(shape if one else np.broadcast_shapes(shape, w.shape[1:]))))
         np.multiply(cos, w[0], out=out[0])
         out[0] -= sin * w[1]
         np.multiply(sin, w[0], out=out[1])
