@@ -11,7 +11,10 @@ from dataclasses import dataclass
 import numpy as np
 
 from rigpose.model.equations import Array
-from rigpose.model.rig import Limit, Pair, Rig
+from rigpose.model.rig import Bone, Limit, Pair, Plate, Rail, Ram, Rig
+
+POSES = 1 << 11
+"""Poses measured in one go: few enough to stay in the cache."""
 
 
 @dataclass(frozen=True)
@@ -39,10 +42,9 @@ class Verdict:
         if not keep.any() or not self.broken.size:
             return 0.0, ""
         room = self.floor[..., None] if beyond_floats else 0.0
-        excess = np.maximum(self.broken[..., keep] - room, 0.0)
-        flat = excess.reshape(-1, int(keep.sum()))
-        with np.errstate(invalid="ignore"):
-            per_part = np.nanmax(np.where(np.isnan(flat), 0.0, flat), axis=0)
+        excess = self.broken - room
+        flat = excess.reshape(-1, len(self.names))
+        per_part = np.fmax.reduce(flat, axis=0, initial=0.0)[keep]
         k = int(np.argmax(per_part))
         names = [n for n, keep_it in zip(self.names, keep, strict=True) if keep_it]
         return float(per_part[k] / self.size), names[k]
@@ -70,89 +72,109 @@ def size_of(positions: Array) -> float:
 
 def judge(rig: Rig, positions: Array, size: float) -> Verdict:
     """Measure poses ``(..., n, dim)`` in the rig's frame; NaN poses give NaN columns."""
-    at = rig.index
-    names: list[str] = []
-    columns: list[Array] = []
-    for bone in rig.bones:
-        a, b = at[bone.ends[0]], at[bone.ends[1]]
-        gap = positions[..., a, :] - positions[..., b, :]
-        names.append(bone.name)
-        columns.append(np.abs(np.linalg.norm(gap, axis=-1) - bone.length))
-    for plate in rig.plates:
-        names.append(plate.name)
-        columns.append(_plate(positions, [at[j] for j in plate.joints], np.array(plate.shape)))
-    for rail in rig.rails:
-        names.append(rail.name)
-        through, direction, _ = _rail_line(rig, positions, rail.name)
-        w = positions[..., at[rail.joint], :] - through
-        way = (w * direction).sum(-1, keepdims=True)
-        columns.append(np.linalg.norm(w - way * direction, axis=-1))
-    over_names, over = _ranges(rig, positions)
     lead = positions.shape[:-2]
-    largest = np.abs(positions).max(axis=(-1, -2), initial=0.0)
-    return Verdict(
-        tuple(names), np.stack(columns, axis=-1) if columns else np.zeros((*lead, 0)),
-        over_names, np.stack(over, axis=-1) if over else np.zeros((*lead, 0)),
-        size, 4 * np.spacing(largest),
-    )
+    flat = positions.reshape(-1, *positions.shape[-2:])
+    names = tuple(p.name for p in (*rig.bones, *rig.plates, *rig.rails))
+    over_names = tuple(p.name for p in _ranged(rig))
+    broken, over = np.empty((len(names), len(flat))), np.empty((len(over_names), len(flat)))
+    largest = np.zeros(len(flat))
+    for start in range(0, len(flat), POSES):
+        which = slice(start, start + POSES)
+        # Joints and coordinates lead, so that every measure runs along the poses without gaps.
+        x = np.ascontiguousarray(flat[which].transpose(1, 2, 0))
+        for k, part in enumerate((*rig.bones, *rig.plates, *rig.rails)):
+            broken[k, which] = _departure(rig, x, part)
+        for k, limited in enumerate(_ranged(rig)):
+            over[k, which] = _passing(rig, x, limited)
+        largest[which] = np.abs(x).max(axis=(0, 1), initial=0.0)
+    return Verdict(names, broken.T.reshape(*lead, len(names)), over_names,
+                   over.T.reshape(*lead, len(over_names)), size,
+                   4 * np.spacing(largest).reshape(lead))
 
 
-def _plate(positions: Array, joints: list[int], shape: Array) -> Array:
-    """Largest departure of any pair's distance, and of the hand (a mirrored plate is far off)."""
-    p = positions[..., joints, :]
-    worst = np.zeros(p.shape[:-2])
-    for i in range(len(joints)):
-        gap = np.linalg.norm(p[..., i + 1 :, :] - p[..., i : i + 1, :], axis=-1)
-        want = np.linalg.norm(shape[i + 1 :] - shape[i], axis=-1)
-        if len(want):
-            worst = np.maximum(worst, np.abs(gap - want).max(axis=-1))
-    if shape.shape[1] == 2:
-        c = shape - shape.mean(axis=0)
-        q = p - p.mean(axis=-2, keepdims=True)
-        turn = np.arctan2(
-            (c[:, 0] * q[..., 1] - c[:, 1] * q[..., 0]).sum(-1), (c * q).sum((-1, -2))
-        )[..., None]
-        cos, sin = np.cos(turn), np.sin(turn)
-        fitted = np.stack([cos * c[:, 0] - sin * c[:, 1], sin * c[:, 0] + cos * c[:, 1]], axis=-1)
-        worst = np.maximum(worst, np.linalg.norm(q - fitted, axis=-1).max(axis=-1))
+def _ranged(rig: Rig) -> list[Ram | Rail | Limit]:
+    """Parts with a range."""
+    ranged: list[Ram | Rail | Limit] = [r for r in rig.rams if r.range]
+    ranged += [r for r in rig.rails if r.range]
+    return [*ranged, *rig.limits]
+
+
+def _departure(rig: Rig, x: Array, part: Bone | Plate | Rail) -> Array:
+    """How far one part is off, ``(m,)``, in places ``(n, dim, m)``."""
+    if isinstance(part, Bone):
+        a, b = (x[rig.index[j]] for j in part.ends)
+        off: Array = np.abs(_long(b - a) - part.length)
+        return off
+    if isinstance(part, Plate):
+        return _plate(x[[rig.index[j] for j in part.joints]], np.array(part.shape))
+    through, direction = _rail_line(rig, x, part)
+    w = x[rig.index[part.joint]] - through
+    return _long(w - (w * direction).sum(axis=0) * direction)
+
+
+def _long(v: Array) -> Array:
+    """Lengths ``(m,)`` of vectors ``(dim, m)``."""
+    long: Array = np.sqrt((v * v).sum(axis=0))
+    return long
+
+
+def _plate(p: Array, shape: Array) -> Array:
+    """The largest distance ``(m,)`` of a joint from where the plate, fitted to its joints ``(k,
+    dim, m)`` by least squares, would carry it; a mirrored plate is far off."""
+    if shape.shape[1] != 2:
+        return _pairs(p, shape)
+    c = shape - shape.mean(axis=0)
+    q = p - p.mean(axis=0)
+    cos = np.einsum("kd,kdm->m", c, q)
+    sin = np.einsum("k,km->m", c[:, 0], q[:, 1]) - np.einsum("k,km->m", c[:, 1], q[:, 0])
+    long = np.sqrt(cos * cos + sin * sin)
+    cos, sin = cos / long, sin / long
+    worst = np.zeros(p.shape[2])
+    for k, place in enumerate(c):
+        gap = np.stack([q[k, 0] - cos * place[0] + sin * place[1],
+                        q[k, 1] - sin * place[0] - cos * place[1]])
+        worst = np.maximum(worst, (gap * gap).sum(axis=0))
+    off: Array = np.sqrt(worst)
+    return off
+
+
+def _pairs(p: Array, shape: Array) -> Array:
+    """The largest departure ``(m,)`` of the distance of any two joints."""
+    worst = np.zeros(p.shape[2])
+    for i in range(len(p)):
+        for j in range(i):
+            want = float(np.linalg.norm(shape[i] - shape[j]))
+            worst = np.maximum(worst, np.abs(_long(p[i] - p[j]) - want))
     return worst
 
 
-def _rail_line(rig: Rig, positions: Array, name: str) -> tuple[Array, Array, str]:
-    rail = next(r for r in rig.rails if r.name == name)
+def _rail_line(rig: Rig, x: Array, rail: Rail) -> tuple[Array, Array]:
     if rail.along:
-        a = positions[..., rig.index[rail.along[0]], :]
-        e = positions[..., rig.index[rail.along[1]], :] - a
-        return a, e / np.linalg.norm(e, axis=-1, keepdims=True), rail.joint
-    return np.array(rail.through), np.array(rail.direction), rail.joint
+        a = x[rig.index[rail.along[0]]]
+        e = x[rig.index[rail.along[1]]] - a
+        return a, e / _long(e)
+    return np.array(rail.through)[:, None], np.array(rail.direction)[:, None]
 
 
 def _outside(value: Array, low: float, high: float) -> Array:
     return np.maximum(np.maximum(low - value, value - high), 0.0)
 
 
-def _ranges(rig: Rig, positions: Array) -> tuple[tuple[str, ...], list[Array]]:
-    names: list[str] = []
-    over: list[Array] = []
-    for ram in rig.rams:
-        if ram.range:
-            a, b = (positions[..., rig.index[e], :] for e in ram.ends)
-            names.append(ram.name)
-            over.append(_outside(np.linalg.norm(a - b, axis=-1), *ram.range))
-    for rail in rig.rails:
-        if rail.range:
-            through, direction, joint = _rail_line(rig, positions, rail.name)
-            way = ((positions[..., rig.index[joint], :] - through) * direction).sum(-1)
-            names.append(rail.name)
-            over.append(_outside(way, *rail.range))
-    for limit in rig.limits:
-        names.append(limit.name)
-        over.append(_limit(rig, positions, limit))
-    return tuple(names), over
+def _passing(rig: Rig, x: Array, part: Ram | Rail | Limit) -> Array:
+    """By how much a range or limit is passed, ``(m,)``, zero inside."""
+    if isinstance(part, Limit):
+        return _limit(rig, x, part)
+    assert part.range is not None  # only such parts are asked for
+    if isinstance(part, Ram):
+        a, b = (x[rig.index[j]] for j in part.ends)
+        return _outside(_long(b - a), *part.range)
+    through, direction = _rail_line(rig, x, part)
+    way = ((x[rig.index[part.joint]] - through) * direction).sum(axis=0)
+    return _outside(way, *part.range)
 
 
 def direction_of(rig: Rig, positions: Array, pair: Pair | None) -> Array:
-    """Direction of a line in degrees ``(...)``, 0 for the ground."""
+    """Direction of a line in degrees ``(...)`` for poses ``(..., n, dim)``, 0 for the ground."""
     if pair is None:
         return np.zeros(positions.shape[:-2])
     e = positions[..., rig.index[pair[1]], :] - positions[..., rig.index[pair[0]], :]
@@ -160,8 +182,9 @@ def direction_of(rig: Rig, positions: Array, pair: Pair | None) -> Array:
     return angle
 
 
-def _limit(rig: Rig, positions: Array, limit: Limit) -> Array:
-    angle = direction_of(rig, positions, limit.second) - direction_of(rig, positions, limit.first)
+def _limit(rig: Rig, x: Array, limit: Limit) -> Array:
+    poses = x.transpose(2, 0, 1)
+    angle = direction_of(rig, poses, limit.second) - direction_of(rig, poses, limit.first)
     low, high = limit.range
     if limit.either:
         return _outside(np.abs(np.remainder(angle + 180, 360) - 180), low, high)
