@@ -103,7 +103,7 @@ def test_a_small_crank_turns_too(crank: float) -> None:
 
 
 @pytest.mark.parametrize(("places", "expected"), [
-    # Bolker and Roth 1980, Pacific J. Math. 90(1); Whiteley 1984: K3,3 in the plane loses rank
+    # Bolker and Roth 1980, Pacific J. Math. 90(1), from memory: K3,3 in the plane loses rank
     # exactly when its six joints lie on a conic. That it is only shaky there was calculated: the
     # stress energy is not zero.
     (on_ellipse(), (0, 1, 0)),

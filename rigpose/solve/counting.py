@@ -1,7 +1,7 @@
 """Freedoms by counting alone: coordinates of unpinned joints less the conditions on them.
 
 Bodies count as bodies, 2k - 3 conditions for k joints of a plate (Maxwell 1864, Grübler 1917,
-Laman 1970). What lies between pinned joints only is the ground's and counts for nothing.
+Laman 1970; from memory). What lies between pinned joints only is the ground and counts nothing.
 """
 
 from __future__ import annotations

@@ -2,7 +2,8 @@
 
 The smallest eigenvalues of the slopes' normal matrix, by Lanczos iteration on its sparse inverse,
 shifted a little so that it has one (`scipy.sparse.linalg.eigsh` in shift-invert mode; Lehoucq,
-Sorensen and Yang 1998). Squaring halves the digits, so what is below 1e-7 counts as zero.
+Sorensen and Yang 1998, from memory). Squaring halves the digits, so what is below 1e-7 counts as
+zero.
 """
 
 from __future__ import annotations
