@@ -11,10 +11,10 @@ import math
 
 import numpy as np
 import pytest
+from linkages import angle, circuits, four_bar, slider_crank, turned
 
 import rigpose as rp
 from rigpose.model.equations import Array
-from tests.linkages import angle, circuits, four_bar, slider_crank, turned
 
 TURN = np.linspace(0.0, 360.0, 3601)
 FINE = np.linspace(0.0, 360.0, 36001)
