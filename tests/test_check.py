@@ -212,6 +212,25 @@ def test_generic_rigs_are_rigid_exactly_where_laman_says(n: int) -> None:
         assert report.freedoms_counted == 0
 
 
+@pytest.mark.parametrize("seed", range(40))
+def test_random_rigs_have_the_rank_that_numpy_finds(seed: int) -> None:
+    """In general position finite and first-order freedoms agree: rows and columns less rank."""
+    rng = np.random.default_rng(seed)
+    n = int(rng.integers(4, 11))
+    x = rng.normal(size=(n, 2))
+    every = [e for e in combinations(range(n), 2) if e != (0, 1)]
+    count = min(int(rng.integers(n - 2, 2 * n)), len(every))
+    edges = [every[k] for k in rng.choice(len(every), count, replace=False)]
+    rows = np.zeros((count, n, 2))
+    for k, (a, b) in enumerate(edges):
+        rows[k, a], rows[k, b] = x[a] - x[b], x[b] - x[a]
+    rank = np.linalg.matrix_rank(rows.reshape(count, -1)[:, 4:])
+    report = check(bars([(float(p), float(q)) for p, q in x], edges, (0, 1)))
+    assert freedoms(report) == (2 * n - 4 - rank, 2 * n - 4 - rank, 2 * n - 4 - count)
+    assert len(report.redundant) == count - rank
+    assert report.rounding == report.gaps == ()
+
+
 # -- bodies, groups -------------------------------------------------------------------------------
 
 

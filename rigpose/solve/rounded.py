@@ -83,7 +83,7 @@ def _measured(
     piece = looser.piece
     best: tuple[float, float, tuple[Mend, ...]] | None = None
     for rows in _choices(looser, now):
-        found = _walked(piece, rows, looser, rest)
+        found = _walked(piece, rows, _added(looser, now), rest)
         if found is None:
             continue
         low, high = found.min(axis=0), found.max(axis=0)
@@ -126,14 +126,20 @@ def _choices(looser: Motions, now: Motions) -> list[tuple[int, ...]]:
     return [(int(k),) for k in members[:MOST_TRIED]]
 
 
-def _walked(piece: Piece, rows: tuple[int, ...], looser: Motions, rest: Array) -> Array | None:
+def _added(looser: Motions, now: Motions) -> Array:
+    """The motion ``(c,)`` that rounding has stopped: the one farthest from those that go on."""
+    more = looser.tangents - now.tangents @ (now.tangents.T @ looser.tangents)
+    return np.asarray(np.linalg.svd(more, full_matrices=False)[0][:, 0])
+
+
+def _walked(piece: Piece, rows: tuple[int, ...], added: Array, rest: Array) -> Array | None:
     """The lengths of bones ``rows`` on a walk both ways with all others exact, ``(w, r)``."""
     names = frozenset(piece.names[r] for r in rows)
     system = replace(piece.system, without=piece.system.without | names)
     ends = piece.system.eqs.distances.ends[
         piece.system.dist_rows[piece.rows[list(rows)]]]
     start = np.zeros(rest.size)
-    start[piece.columns] = looser.tangents[:, 0]
+    start[piece.columns] = added
     poses = [rest]
     for sign in (1.0, -1.0):
         walk = _walk(system, rest, sign * start)
