@@ -2,69 +2,82 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from contextlib import ExitStack
-from fractions import Fraction
 from typing import Any
 
 import click
 
-from rigpose.cli.given import as_json, frame_options
+from rigpose.cli.bakeall import bake_all, tell_files
+from rigpose.cli.given import Gathered, as_json, frame_options, keep_inputs, ratio, the_shot
 from rigpose.cli.show import meter, print_json, problem_dict
 from rigpose.files.csvfile import CsvWriter, Layout
 from rigpose.files.motionfile import save_values, to_file
 from rigpose.files.scene import Outlet, outlet
-from rigpose.files.shotfile import load_shot
 from rigpose.ground.budget import Budget
-from rigpose.ground.errors import BadInput, Problem
+from rigpose.ground.words import Found, State
 from rigpose.model.judge import judge
-from rigpose.motion.bake import Baking, branch_map
-from rigpose.motion.motion import Motion
+from rigpose.motion.bake import Baking
+from rigpose.motion.motion import Event, Motion
 from rigpose.motion.settle import Piece
 from rigpose.motion.shot import Shot
 
+FEW = 3
+"""Times that an event is told frame by frame."""
 
-@click.command("bake")
+
+@click.command("bake", short_help="Bake a shot: the joints' positions, frame by frame.")
 @click.argument("shot")
-@click.option("--out", metavar="FILE", default=None, help="Write joint positions as CSV.")
+@click.option("--out", metavar="FILE", default=None,
+              help="Write the joints' positions as CSV.")
 @click.option("--values", metavar="FILE", default=None,
               help="Write drives, gauges and limit angles as CSV.")
-@click.option("--layout", type=click.Choice(["tall", "wide"]), default="tall",
+@click.option("--layout", type=click.Choice(["tall", "wide"]), default="tall", show_default=True,
               help="A row for each joint and frame, or one for each frame.")
 @click.option("--all-branches", is_flag=True, help="Write every branch, with a column `branch`.")
-@click.option("--fps", default=None, help="The file's frames a second (the shot's).")
-@click.option("--offset", default="0", help="Added to every frame number in the file.")
+@click.option("--fps", metavar="RATE", default=None,
+              help="The file's frames a second, as 25 or 24000/1001; else the shot's.")
+@click.option("--offset", metavar="NUMBER", default="0",
+              help="Added to every frame number in the file.")
 @frame_options
 @as_json
 def bake_command(shot: str, out: str | None, values: str | None, as_json: bool,
                  **asked: Any) -> int:
-    """Bake a shot: one motion that keeps every length, written as CSV."""
-    loaded = load_shot(shot)
-    way = outlet(loaded.rig, loaded.fps, unit=asked["unit"], up=asked["up"],
-                 to_fps=_fraction("--fps", asked["fps"]),
-                 offset=_fraction("--offset", asked["offset"]) or Fraction(0))
+    """Bake a shot: one motion in which every length holds, written as CSV."""
+    loaded, way = _loaded(shot, asked)
+    keep_inputs({"the shot": shot, "the rig": loaded.rig.source},
+                {"--out": out, "--values": values})
     if asked["all_branches"]:
-        return _bake_all(loaded, way, out, asked["layout"], as_json)
+        return bake_all(loaded, way, out, values, asked["layout"], as_json)
     work = Baking(loaded, Budget())
-    motion = _bake(work, way, out, asked["layout"])
-    written = out if work.row is not None else None
-    if values is not None and work.row is not None:
-        save_values(motion, values, unit=way.file.unit, fps=way.file.fps, offset=way.file.offset)
+    if work.row is None:
+        motion, written = _bake(work, way, None, asked["layout"]), None
+    else:
+        motion, written = _bake(work, way, out, asked["layout"]), out
+        if values is not None:
+            save_values(motion, values, unit=way.file.unit, fps=way.file.fps,
+                        offset=way.file.offset)
     if as_json:
         print_json(bake_dict(motion, written))
     else:
-        _tell(motion, way, written)
+        _tell(motion)
+        tell_files(len(motion), way, [out, values], work.row is not None)
     return 0 if motion.ok and motion.found.whole else 1
 
 
-def _fraction(option: str, text: str | None) -> Fraction | None:
-    if text is None:
-        return None
-    try:
-        return Fraction(text)
-    except (ValueError, ZeroDivisionError):
-        raise BadInput(Problem(option, "", "is a number or a fraction of two whole numbers",
-                               f'"{text}"', "write 24 or 24000/1001")) from None
+def _loaded(shot: str, asked: Mapping[str, Any]) -> tuple[Shot, Outlet]:
+    """The shot, and the way to the file's frame of reference; all mistakes told at once."""
+    gathered = Gathered()
+    fps = None if asked["fps"] is None else gathered.of(lambda: ratio("--fps", asked["fps"]))
+    offset = gathered.of(lambda: ratio("--offset", asked["offset"]))
+    loaded = gathered.of(lambda: the_shot(shot))
+    if fps is not None and fps <= 0:
+        gathered.add("--fps", "", "a rate is more than 0", f'"{asked["fps"]}"',
+                     "write 24 or 24000/1001")
+    gathered.stop_if_any()
+    assert loaded is not None and offset is not None  # where one isn't, that is told
+    return loaded, outlet(loaded.rig, loaded.fps, unit=asked["unit"], up=asked["up"], to_fps=fps,
+                          offset=offset)
 
 
 def _bake(work: Baking, way: Outlet, out: str | None, layout: Layout) -> Motion:
@@ -74,7 +87,7 @@ def _bake(work: Baking, way: Outlet, out: str | None, layout: Layout) -> Motion:
     with ExitStack() as stack:
         bar = stack.enter_context(meter("baking"))
         writer = None
-        if out is not None and work.row is not None:
+        if out is not None:
             writer = stack.enter_context(
                 CsvWriter(out, rig.joint_names, layout=layout, names=rig.names))
         for piece in work.pieces():
@@ -92,26 +105,6 @@ def _write(writer: CsvWriter, work: Baking, way: Outlet, piece: Piece) -> None:
     writer.block(way.number(frames), to_file(work.shot.rig, way, piece.positions))
 
 
-def _bake_all(shot: Shot, way: Outlet, out: str | None, layout: Layout, as_json: bool) -> int:
-    found = branch_map(shot)
-    if out is not None and len(found):
-        with CsvWriter(out, found.joints, layout=layout, branches=True,
-                       names=found.rig.names) as writer:
-            for k, name in enumerate(found.names):
-                places = to_file(found.rig, way, found.positions[k])
-                writer.block(way.number(found.frames), places, name)
-    if as_json:
-        print_json({"frames": len(found.frames), "found": found.found.value,
-                    "branches": list(found.names), "notes": found.notes, "problems": [],
-                    "out": out if len(found) else None})
-    else:
-        click.echo(str(found))
-        if out is not None and len(found):
-            click.echo(f"wrote {out}")
-        click.echo(_frame_line(len(found.frames), way))
-    return 0 if len(found) and found.found.whole else 1
-
-
 def bake_dict(motion: Motion, out: str | None) -> Mapping[str, Any]:
     """What `--json` prints."""
     return {
@@ -127,18 +120,34 @@ def bake_dict(motion: Motion, out: str | None) -> Mapping[str, Any]:
     }
 
 
-def _tell(motion: Motion, way: Outlet, out: str | None) -> None:
-    click.echo(motion.note())
-    click.echo(f"lengths hold to {motion.worst:.1e} of the size")
-    if motion.redundant:
-        click.echo(f"surplus lengths ({', '.join(sorted(motion.redundant))}) are off by at most "
-                   f"{motion.worst_redundant:.1e} of the size")
-    if out is not None:
-        click.echo(f"wrote {out}")
-    click.echo(_frame_line(len(motion), way))
+def _tell(motion: Motion) -> None:
+    missing = int((motion.state == State.NONE).sum())
+    state = f"{missing} of {len(motion)} frames without a pose" if missing else (
+        "every frame has a pose")
+    branch = "" if not motion.name else (
+        "its only branch, " if motion.name == "only" else f"branch {motion.name}, ")
+    click.echo(f"{motion.rig.name}: {branch}{state}")
+    if not motion.found.whole or motion.found is Found.PROBABLY:
+        click.echo(f"the branches to choose from are {motion.found.value}")
+    for line in (*motion.spans, *motion.problems, *motion.notes, *_events(motion.events)):
+        click.echo(f"  {line}")
+    if missing < len(motion):
+        click.echo(f"lengths hold to {motion.worst:.1e} of the rig's size, "
+                   f"{motion.size:.4g} {motion.rig.unit}")
+        if motion.redundant:
+            click.echo(f"surplus lengths ({', '.join(sorted(motion.redundant))}) are off by at "
+                       f"most {motion.worst_redundant:.1e} of it")
 
 
-def _frame_line(frames: int, way: Outlet) -> str:
-    fps = way.file.fps
-    rate = str(fps.numerator) if fps.denominator == 1 else f"{fps.numerator}/{fps.denominator}"
-    return f"{frames} frames, {rate} a second, {way.file.unit}, {way.file.up} up"
+def _events(events: Sequence[Event]) -> Iterator[str]:
+    """What happens more than a few times, the same each time, on one line."""
+    alike: dict[str, list[str]] = {}
+    for event in events:
+        _, _, what = str(event).partition(": ")
+        alike.setdefault(what, []).append(f"{event.frame:.9g}")
+    for what, frames in alike.items():
+        if len(frames) > FEW:
+            told = f"{', '.join(frames[:FEW])} … {frames[-1]} ({len(frames)} times)"
+        else:
+            told = ", ".join(frames)
+        yield f"frame{'s' if len(frames) > 1 else ''} {told}: {what}"

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 import sys
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import asdict
 from typing import TYPE_CHECKING, Any
@@ -42,26 +42,40 @@ def problem_dict(problem: Problem) -> dict[str, Any]:
     return asdict(problem)
 
 
-def print_table(title: str, columns: list[str], rows: list[list[str]]) -> None:
-    """A table as wide as the terminal, or as its content where there is none."""
-    from rich.box import SIMPLE
+def counted(number: int, one: str, many: str = "") -> str:
+    """A number with its noun.
+
+    >>> counted(1, "frame"), counted(2, "frame"), counted(3, "branch", "branches")
+    ('1 frame', '2 frames', '3 branches')
+    """
+    return f"{number} {one if number == 1 else many or one + 's'}"
+
+
+def print_table(columns: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
+    """A table as wide as the terminal, or as its content where there is none.
+
+    The second column is text, all others are numbers.
+    """
     from rich.console import Console
     from rich.table import Table
+    from rich.text import Text
 
-    click.echo(title)
-    table = Table(box=SIMPLE)
+    table = Table(box=None, pad_edge=False, padding=(0, 2), header_style="bold")
     for k, column in enumerate(columns):
-        table.add_column(column, justify="left" if k < 2 else "right", overflow="fold")
+        table.add_column(Text(column), justify="left" if k == 1 else "right", overflow="fold")
     for row in rows:
-        table.add_row(*(_escaped(cell) for cell in row))
-    width = None if sys.stdout.isatty() else 160
-    Console(width=width, highlight=False).print(table)
+        table.add_row(*map(Text, row))
+    width = None if sys.stdout.isatty() else _width(columns, rows)
+    console = Console(width=width, highlight=False)
+    with console.capture() as capture:
+        console.print(table)
+    for line in capture.get().splitlines():
+        click.echo(line.rstrip())
 
 
-def _escaped(cell: str) -> str:
-    from rich.markup import escape
-
-    return escape(cell)
+def _width(columns: Sequence[str], rows: Sequence[Sequence[str]]) -> int:
+    """Room for every cell on one line, even where each sign is two columns wide."""
+    return sum(2 * max(map(len, cells)) + 4 for cells in zip(columns, *rows, strict=True))
 
 
 class Meter:
