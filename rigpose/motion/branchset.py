@@ -100,7 +100,9 @@ class Branches:
     @cached_property
     def names(self) -> Names:
         """One name a branch: the bends that tell it from the others."""
-        return name_rows(self.rig, self.signs, self.meets, self._moved)
+        inside = {j for group in self.groups for j in group}
+        chosen = np.array([j in inside for j in self.joints], dtype=bool)
+        return name_rows(self.rig, self.signs, self.meets, self._moved, chosen)
 
     @property
     def _moved(self) -> NDArray[np.bool_]:

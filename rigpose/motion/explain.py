@@ -136,7 +136,9 @@ def _why(plan: Plan, cause: _Cause) -> str:
         return _check_text(rig, step, parts, length)
     if isinstance(step, Meet):
         joint = rig.joint_names[step.dst] if step.dst < eqs.n else "a joint"
-        return f'{parts} can\'t meet at "{joint}", by up to {length}'
+        small = 0.0 < amount <= rig.slack * plan.eqs.scale
+        mend = "; less than the slack: change one of the two lengths by so much" if small else ""
+        return f'{parts} can\'t meet at "{joint}", by up to {length}{mend}'
     if isinstance(step, Swing):
         return f"{parts}: the slot can't pass through its joint"
     if isinstance(step, Cluster):

@@ -54,16 +54,21 @@ class Names(Sequence[str]):
                 for k, b in enumerate(self._bends)}
 
 
-def name_rows(rig: Rig, signs: Signs, meets: NDArray[np.bool_],
-              moved: NDArray[np.bool_]) -> Names:
+def name_rows(rig: Rig, signs: Signs, meets: NDArray[np.bool_], moved: NDArray[np.bool_],
+              chosen: NDArray[np.bool_]) -> Names:
     """Names for rows with bends ``(n_branches, n_bends)``, in the order of the rows.
 
     moved : (n_joints,) whether the joint's own place differs; such joints are told first
+    chosen : (n_joints,) whether it hangs on a choice: where two branches meet, its straight bend
+    is the one that they would have to either side
     """
     bends = bends_of(rig)
     varies = [k for k in range(signs.shape[1]) if len(signs) and np.ptp(signs[:, k])]
     varies.sort(key=lambda k: not moved[bends[k].joint])
     told, classes = _telling(signs, varies)
+    straight = (signs[meets] == 0).any(axis=0)
+    told += [k for k in np.flatnonzero(straight).tolist()
+             if k not in told and chosen[bends[k].joint]]
     return Names(rig, signs, told, _counts(classes), meets)
 
 

@@ -103,15 +103,15 @@ def _own(rest: Rest, rows: Rows) -> Ints:
 
 def _gaps(rest: Rest, rows: Rows) -> Array:
     """Squared distances to rest ``(B,)``, summed over the group's joints, at the first pose."""
+    single = rows.alive.shape[1] == 1
     first = np.argmax(rows.alive, axis=1)
     each = np.arange(len(first))
     total = np.zeros(len(first))
     for j, place in zip(rows.group.joints, rows.places, strict=True):
-        at = rest.scaled[j]
-        single = place.shape[1] == 1
-        for axis in range(len(at)):
-            mine = place[axis, 0, first] if single else place[axis, each, first]
-            total += (mine - at[axis]) ** 2
+        mine = place[:, :, 0] if single else place[:, each if place.shape[1] > 1 else 0, first]
+        gap = mine - rest.scaled[j][:, None]
+        gap *= gap
+        total += gap.sum(axis=0)
     return total
 
 

@@ -66,6 +66,7 @@ class Growth:
     ticket: int = 0
     held: dict[int, set[int]] = field(default_factory=lambda: defaultdict(set))
     on_place: Callable[[int], None] | None = None
+    surplus: frozenset[str] = frozenset()
 
     # -- starting -----------------------------------------------------------------------------
 
@@ -252,7 +253,10 @@ class Growth:
     def _meet(self, joint: int) -> None:
         if joint in self.place:
             return
-        best = self._best_pair(self.loci[joint])
+        loci = self.loci[joint]
+        # A length that gives way places a joint only where nothing else does.
+        best = self._best_pair([x for x in loci if x.part not in self.surplus])
+        best = best or self._best_pair(loci)
         if best is None:
             return
         first, second = best

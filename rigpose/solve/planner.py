@@ -49,6 +49,7 @@ class Planner:
     drives: frozenset[int]
     targets: frozenset[tuple[int, int]]
     poses: Array
+    surplus: frozenset[str] = frozenset()
     points: count[int] = field(init=False)
     net: Net = field(init=False)
     ground: Growth = field(init=False)
@@ -58,7 +59,7 @@ class Planner:
         self.points = count(self.eqs.n)
         self.net = Net(self.eqs)
         self.ground = Growth(self.net, self.poses, set(self.drives), self.points.__next__,
-                             targets=self.targets)
+                             targets=self.targets, surplus=self.surplus)
 
     def run(self) -> tuple[list[Step], tuple[int, ...]]:
         """Steps in order and the joints that stay loose."""
@@ -141,7 +142,7 @@ class Planner:
         # Rigid groups have at least one more joint that two parts of them hold; look for one
         # candidate before growing, so that long chains stay cheap.
         frame = Growth(self.net, self.poses, set(self.ground.known), self.points.__next__,
-                       ground=False)
+                       ground=False, surplus=self.surplus)
         frame.seat(number, solid)
         frame.run()
         if len(frame.place) == len(solid.local):
@@ -264,7 +265,7 @@ def make_plan(
     """Plan for value numbers and (joint, axis) pairs that will be known."""
     eqs = rest.equations
     poses = nearby(rest)
-    planner = Planner(eqs, drives, targets, poses)
+    planner = Planner(eqs, drives, targets, poses, rest.surplus)
     steps, loose = planner.run()
     ground = planner.ground
     used = set(ground.used)

@@ -24,12 +24,15 @@ from rigpose.model.judge import size_of
 from rigpose.model.lower import lower
 from rigpose.model.rig import Rig
 from rigpose.model.system import System
+from rigpose.solve.blocks import independent_rows
 
 Mask = NDArray[np.bool_]
 
 DENSE = 900
 """Up to this many coordinates dense linear algebra is faster and exact about ranks."""
 SEEDS = 64
+AGREE = 1e-13
+"""Lengths that disagree by less do so by rounding."""
 
 
 @dataclass(frozen=True)
@@ -42,6 +45,8 @@ class Rest:
     misfit : the largest departure of any length, as a fraction of the size
     worst : the part with that departure
     moved : (n,) how far each joint lies from its written place (NaN: none was written)
+    surplus : bones that give way because surplus lengths disagree by more than rounding: of each
+    dependent set the last in the file
     """
 
     rig: Rig
@@ -53,6 +58,7 @@ class Rest:
     misfit: float
     worst: str
     moved: Array
+    surplus: frozenset[str] = frozenset()
 
     @property
     def tolerances(self) -> Tolerances:
@@ -209,7 +215,25 @@ def find_rest(rig: Rig) -> Rest:
     if np.abs(residual).max(initial=0.0) > 2e-15:
         big = start.size > DENSE
         start = _big(system, start, values[0]) if big else _nearest(system, start, values)
+        misfit = np.abs(system.residual(start[None], values)).max(initial=0.0)
+        if misfit > AGREE and not big:
+            surplus = _giving_way(system, start, values)
+            if surplus:
+                pose = _nearest(replace(system, without=surplus), start, values)
+                return replace(_make(rig, eqs, system, pose, values), surplus=surplus)
     return _make(rig, eqs, system, start, values)
+
+
+def _giving_way(system: System, x: Array, values: Array) -> frozenset[str]:
+    """Bones whose rows add nothing to the rows before them, bodies and rails first, then bones
+    in the file's order."""
+    _, jacobian = system.both(x[None], values)
+    rows = jacobian[0][:, system.free]
+    bones = len(system.dist_rows)
+    order = np.concatenate([np.arange(bones, len(rows)), np.arange(bones)])
+    kept = order[independent_rows(rows[order])]
+    lost = set(range(bones)) - set(kept.tolist())
+    return frozenset(system.row_names[k] for k in lost)
 
 
 def _start_missing(system: System, eqs: Equations, start: Array, missing: Mask) -> Array:

@@ -229,7 +229,7 @@ def both(
     place = np.empty((2, 2 * b, shape[2]))
     np.add(base, side, out=place[:, :b])
     np.subtract(base, side, out=place[:, b:])
-    if table.inputs.frames > 1:
+    if table.heights_wanted:
         table.sines.append(sine2)
     table.kill(sine2 >= 0, number)
     table.narrow(sine)

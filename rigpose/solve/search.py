@@ -83,6 +83,7 @@ def group_table(base: Table, rows: int | None) -> Table:
     table.bound_level = dict(base.bound_level)
     table.alive, table.margin = base.alive, base.margin
     table.killer, table.turning = base.killer, set(base.turning)
+    table.heights_wanted = base.heights_wanted
     if rows is not None:
         table.branches = rows
     return table

@@ -43,6 +43,7 @@ def stream_cells(context: Context, group: Group, inputs: Inputs) -> Iterator[Cel
 
 def _tables(context: Context, group: Group, inputs: Inputs, careful: bool) -> Iterator[Table]:
     base = base_table(context, inputs, careful)
+    base.heights_wanted = False  # a single frame passes no dead centre
     if base.alive is not None and not base.alive.any():
         return
     for table in _split(context, group, group_table(base, None), 0):

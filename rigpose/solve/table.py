@@ -67,6 +67,7 @@ class Table:
     consecutive: bool = False
     guess: Array | None = None
     found: Found = Found.COMPLETE
+    heights_wanted: bool = True
     turning: set[tuple[int, tuple[str, ...]]] = field(default_factory=set)
     budget: Budget = field(default_factory=Budget)
 
