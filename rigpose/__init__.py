@@ -29,17 +29,18 @@ if TYPE_CHECKING:
     from rigpose.motion.nearest import nearest_branch
     from rigpose.motion.shot import Key, Shot
     from rigpose.motion.streaming import stream_branches
+    from rigpose.solve.report import Report, check
     from rigpose.solve.rest import Rest, find_rest
 
 __version__ = "0.1.0"
 
 __all__ = [
     "BadInput", "Branches", "Budget", "Count", "Difference", "Event", "Found", "Key", "Motion",
-    "Problem", "Rest", "Rig", "RigposeError", "Shot", "Span", "State", "Unsolvable", "Watch",
-    "bake", "branch_map", "branches_from_one", "channels", "choose", "compare", "count_branches",
-    "find_branches", "find_rest", "flat_text", "flip", "judge", "load_motion", "load_rig",
-    "load_shot", "make_rig", "nearest_branch", "save_motion", "save_values", "start_text",
-    "stream_branches",
+    "Problem", "Report", "Rest", "Rig", "RigposeError", "Shot", "Span", "State", "Unsolvable",
+    "Watch", "bake", "branch_map", "branches_from_one", "channels", "check", "choose", "compare",
+    "count_branches", "find_branches", "find_rest", "flat_text", "flip", "judge", "load_motion",
+    "load_rig", "load_shot", "make_rig", "nearest_branch", "save_motion", "save_values",
+    "start_text", "stream_branches",
 ]
 
 _HOMES = {
@@ -64,6 +65,7 @@ _HOMES = {
     "rigpose.motion.nearest": "nearest_branch",
     "rigpose.motion.shot": "Key Shot",
     "rigpose.motion.streaming": "stream_branches",
+    "rigpose.solve.report": "Report check",
     "rigpose.solve.rest": "Rest find_rest",
 }
 _HOME_OF = {name: module for module, names in _HOMES.items() for name in names.split()}
