@@ -71,8 +71,17 @@ def kept(rest: Rest, rows: Rows) -> Sorted:
     live = np.flatnonzero(rows.alive.any(axis=1))
     gap = _gaps(rest, rows)
     gap = gap if len(live) == len(gap) else gap[live]
-    order = np.argsort(_steps(rest, gap), kind="stable")
+    order = _stable_order(_steps(rest, gap))
     return Sorted(rows, live[order], gap[order])
+
+
+def _stable_order(steps: Array) -> Ints:
+    """As a stable sort; most sets have no two alike, and the quick sort is many times faster."""
+    order = np.argsort(steps)
+    sorted_steps = steps[order]
+    if (sorted_steps[1:] == sorted_steps[:-1]).any():
+        return np.argsort(steps, kind="stable")
+    return order
 
 
 def _steps(rest: Rest, gap: Array) -> Array:
@@ -128,7 +137,7 @@ def combined(rest: Rest, picks: Sequence[Sorted], base_alive: NDArray[np.bool_],
         gap += p.gap[choice[:, g]]
     steps = _steps(rest, gap)
     if len(picks) > 1:
-        order = np.argsort(steps, kind="stable")
+        order = _stable_order(steps)
         choice, steps = choice[order], steps[order]
     index = np.stack([p.order[choice[:, g]] for g, p in enumerate(picks)], axis=1)
     alive = np.ones((len(choice), picks[0].rows.alive.shape[1]), dtype=bool)
