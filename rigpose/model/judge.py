@@ -6,6 +6,7 @@ answers go through it before they are called right.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -74,7 +75,8 @@ def judge(rig: Rig, positions: Array, size: float) -> Verdict:
     """Measure poses ``(..., n, dim)`` in the rig's frame; NaN poses give NaN columns."""
     lead = positions.shape[:-2]
     flat = positions.reshape(-1, *positions.shape[-2:])
-    names = tuple(p.name for p in (*rig.bones, *rig.plates, *rig.rails))
+    measured: list[Bone | Plate | Rail] = [*rig.bones, *rig.plates, *rig.rails]
+    names = tuple(p.name for p in measured)
     over_names = tuple(p.name for p in _ranged(rig))
     broken, over = np.empty((len(names), len(flat))), np.empty((len(over_names), len(flat)))
     largest = np.zeros(len(flat))
@@ -82,7 +84,7 @@ def judge(rig: Rig, positions: Array, size: float) -> Verdict:
         which = slice(start, start + POSES)
         # Joints and coordinates lead, so that every measure runs along the poses without gaps.
         x = np.ascontiguousarray(flat[which].transpose(1, 2, 0))
-        for k, part in enumerate((*rig.bones, *rig.plates, *rig.rails)):
+        for k, part in enumerate(measured):
             broken[k, which] = _departure(rig, x, part)
         for k, limited in enumerate(_ranged(rig)):
             over[k, which] = _passing(rig, x, limited)
@@ -106,7 +108,7 @@ def _departure(rig: Rig, x: Array, part: Bone | Plate | Rail) -> Array:
         off: Array = np.abs(_long(b - a) - part.length)
         return off
     if isinstance(part, Plate):
-        return _plate(x[[rig.index[j] for j in part.joints]], np.array(part.shape))
+        return _plate([x[rig.index[j]] for j in part.joints], np.array(part.shape))
     through, direction = _rail_line(rig, x, part)
     w = x[rig.index[part.joint]] - through
     return _long(w - (w * direction).sum(axis=0) * direction)
@@ -114,33 +116,41 @@ def _departure(rig: Rig, x: Array, part: Bone | Plate | Rail) -> Array:
 
 def _long(v: Array) -> Array:
     """Lengths ``(m,)`` of vectors ``(dim, m)``."""
-    long: Array = np.sqrt((v * v).sum(axis=0))
-    return long
+    long: Array = v[0] * v[0]
+    for more in v[1:]:
+        long += more * more
+    return np.sqrt(long, out=long)
 
 
-def _plate(p: Array, shape: Array) -> Array:
-    """The largest distance ``(m,)`` of a joint from where the plate, fitted to its joints ``(k,
-    dim, m)`` by least squares, would carry it; a mirrored plate is far off."""
+def _plate(p: Sequence[Array], shape: Array) -> Array:
+    """The largest distance ``(m,)`` of a joint from where the plate's two farthest joints carry
+    it, and of these two from their own distance; a mirrored plate is far off."""
     if shape.shape[1] != 2:
         return _pairs(p, shape)
-    c = shape - shape.mean(axis=0)
-    q = p - p.mean(axis=0)
-    cos = np.einsum("kd,kdm->m", c, q)
-    sin = np.einsum("k,km->m", c[:, 0], q[:, 1]) - np.einsum("k,km->m", c[:, 1], q[:, 0])
-    long = np.sqrt(cos * cos + sin * sin)
-    cos, sin = cos / long, sin / long
-    worst = np.zeros(p.shape[2])
-    for k, place in enumerate(c):
-        gap = np.stack([q[k, 0] - cos * place[0] + sin * place[1],
-                        q[k, 1] - sin * place[0] - cos * place[1]])
-        worst = np.maximum(worst, (gap * gap).sum(axis=0))
-    off: Array = np.sqrt(worst)
-    return off
+    i, j = _farthest(shape)
+    e, w = p[j] - p[i], shape[j] - shape[i]
+    long = float(np.hypot(*w))
+    worst: Array = np.abs(_long(e) - long)
+    for k in range(len(p)):
+        if k not in (i, j):
+            v = (shape[k] - shape[i]) / long**2
+            along, across = float(v @ w), float(w[0] * v[1] - w[1] * v[0])
+            gap = p[k] - p[i]
+            gap[0] -= along * e[0] - across * e[1]
+            gap[1] -= across * e[0] + along * e[1]
+            np.maximum(worst, _long(gap), out=worst)
+    return worst
 
 
-def _pairs(p: Array, shape: Array) -> Array:
+def _farthest(shape: Array) -> tuple[int, int]:
+    gap = np.linalg.norm(shape[:, None] - shape[None], axis=-1)
+    i, j = np.unravel_index(int(np.argmax(gap)), gap.shape)
+    return int(i), int(j)
+
+
+def _pairs(p: Sequence[Array], shape: Array) -> Array:
     """The largest departure ``(m,)`` of the distance of any two joints."""
-    worst = np.zeros(p.shape[2])
+    worst = np.zeros(p[0].shape[1])
     for i in range(len(p)):
         for j in range(i):
             want = float(np.linalg.norm(shape[i] - shape[j]))

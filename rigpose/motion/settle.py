@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigpose.ground.words import Found
-from rigpose.model.equations import Array
+from rigpose.model.equations import Array, Equations
 from rigpose.motion.product import base_places
 from rigpose.solve.clock import Clock
 from rigpose.solve.plan import Group
@@ -19,6 +19,7 @@ from rigpose.solve.stepping import walk
 
 WINDOW = 4096
 HALO = 2
+BLOCK = 512
 
 
 @dataclass(frozen=True)
@@ -94,7 +95,7 @@ def _piece(context: Context, clock: Clock, rows: Sequence[Rows], low: int, start
     cut = slice(start - low, stop - low)
     n = stop - start
     alive, margin = np.broadcast_to(base_alive[0], (clock.count,))[cut].copy(), np.ones(n)
-    positions = np.full((n, eqs.n, eqs.dim), np.nan)
+    columns = np.full((eqs.n * eqs.dim, n), np.nan)
     sources = dict(base)
     values: dict[int, Array] = {}
     for row in rows:
@@ -104,10 +105,23 @@ def _piece(context: Context, clock: Clock, rows: Sequence[Rows], low: int, start
         values |= {v: a[0, cut] for v, a in row.values.items()}
     for j, place in sources.items():
         mine = place[:, 0, cut] if place.shape[2] > 1 else place[:, 0]
-        positions[:, j] = (mine * eqs.scale).T + eqs.origin
+        columns[j * eqs.dim:(j + 1) * eqs.dim] = mine
+    positions = _turned(columns, eqs)
     positions[~alive] = np.nan
     margin[~alive] = np.nan
     passes = tuple((g, Pass(p.row, p.choice, p.time + low, p.kind))
                    for g, row in enumerate(rows) for p in row.passes
                    if (p.time + low >= start or start == 0) and p.time + low < stop)
     return Piece(start, stop, positions, alive, margin, values, passes)
+
+
+def _turned(columns: Array, eqs: Equations) -> Array:
+    """``(n_joints * dim, n)`` of the equations' frame to ``(n, n_joints, dim)`` in the rig's."""
+    width, n = columns.shape
+    out = np.empty((n, width))
+    for start in range(0, n, BLOCK):
+        block = out[start:start + BLOCK]
+        np.multiply(columns[:, start:start + BLOCK].T, eqs.scale, out=block)
+        if eqs.origin.any():
+            block += np.tile(eqs.origin, eqs.n)
+    return out.reshape(n, eqs.n, eqs.dim)

@@ -6,9 +6,10 @@ import numpy as np
 
 from rigpose.model.equations import Array
 from rigpose.model.system import System
-from rigpose.solve.rest import DENSE, Rest, assemble
+from rigpose.solve.rest import DENSE, Rest, solve_step
 
 STEP = 0.02
+TRIES, STEPS = 8, 40
 
 
 def nearby(rest: Rest, seed: int = 11) -> Array:
@@ -30,10 +31,35 @@ def nearby(rest: Rest, seed: int = 11) -> Array:
     if not len(null):
         return np.stack([x, x])
     rng = np.random.default_rng(seed)
-    push = null.T @ rng.normal(size=len(null))
+    for _ in range(TRIES):
+        push = null.T @ rng.normal(size=len(null))
+        moved = _carried(system, x, values, push * (STEP * rest.reach / np.abs(push).max()))
+        size = float(np.abs(system.residual(moved[None], values)).max(initial=0.0))
+        if size <= max(1e-9, 2 * rest.misfit):
+            return np.stack([x, moved])
+    return np.stack([x, x])
+
+
+def _carried(system: System, x: Array, values: Array, push: Array) -> Array:
+    """A pose that holds all lengths and has gone the given way along the push.
+
+    Without that last condition Newton's method would slide back to where the rig is drawn: at a
+    dead centre most pushes belong to no motion.
+    """
+    free, far = system.free, float(push @ push)
     moved = x[None].copy()
-    moved.reshape(-1)[free] += STEP * rest.reach * push / np.abs(push).max()
-    moved, size = assemble(system, moved, values)
-    if size[0] > max(1e-9, 2 * rest.misfit):
-        return np.stack([x, x])
-    return np.stack([x, moved[0]])
+    flat = moved.reshape(-1)
+    start = flat[free].copy()
+    flat[free] += push
+    for _ in range(STEPS):
+        r, jacobian = system.both(moved, values)
+        gone = float(push @ (flat[free] - start)) / far
+        weight = np.sqrt(far)
+        rows = np.vstack([jacobian[0][:, free], push / weight])
+        right = np.append(r[0], (gone - 1.0) * weight)
+        step = solve_step(rows[None], right[None], 1e-12)[0]
+        flat[free] += step
+        if np.abs(step).max(initial=0.0) < 1e-14:
+            break
+    pose: Array = moved[0]
+    return pose

@@ -84,7 +84,7 @@ class Flips:
         return {k: self._signs(k, start, stop) for k in range(self.codes.shape[1])}
 
     def _signs(self, k: int, start: int, stop: int) -> Array:
-        base: Array = self.codes[:, k].astype(np.float64)[:, None]
+        base: Array = np.asarray(self.codes[:, k], dtype=np.float64)[:, None]
         if not self.turned[k]:
             return base
         rows = np.array([row for row, _ in self.turned[k]], dtype=np.intp)
@@ -97,7 +97,7 @@ class Flips:
 
     def at(self, choice: int, rows: NDArray[np.intp], times: Array) -> Array:
         """Signs ``(m,)`` of one choice for pairs of rows and times."""
-        sign = self.codes[rows, choice].astype(np.float64)
+        sign: Array = self.codes[rows, choice].astype(np.float64)
         for row, when in self.turned[choice]:
             sign[(rows == row) & (times >= when)] *= -1.0
         return sign

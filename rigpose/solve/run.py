@@ -237,7 +237,7 @@ def both(
     sign = np.ones(2 * b, dtype=np.int8)
     sign[b:] = -1
     assert table.alive is not None  # killing has just made it
-    alive = table.alive.any(axis=1)
+    alive: NDArray[np.bool_] = np.asarray(table.alive.any(axis=1))
     if len(alive) != b:
         alive = np.broadcast_to(alive, (b,))
     if not alive.all():
