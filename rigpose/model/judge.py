@@ -143,6 +143,7 @@ def _plate(p: Sequence[Array], shape: Array) -> Array:
 
 
 def _farthest(shape: Array) -> tuple[int, int]:
+    """The two joints of a plate that lie farthest apart."""
     gap = np.linalg.norm(shape[:, None] - shape[None], axis=-1)
     i, j = np.unravel_index(int(np.argmax(gap)), gap.shape)
     return int(i), int(j)

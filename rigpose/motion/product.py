@@ -13,7 +13,7 @@ from rigpose.solve.clock import Clock
 from rigpose.solve.flow import writes
 from rigpose.solve.rest import Rest
 from rigpose.solve.rows import Rows
-from rigpose.solve.search import Context, base_table
+from rigpose.solve.search import Context, base_table, shared_base
 
 Ints = NDArray[np.intp]
 STEP = 1e-9
@@ -53,7 +53,7 @@ class Picks:
 def base_places(context: Context, clock: Clock) -> tuple[dict[int, Array], NDArray[np.bool_]]:
     """Places ``(2, 1, F)`` of joints that only hang on what is known, and where they exist."""
     plan, n = context.plan, context.plan.eqs.n
-    table = base_table(context, clock.whole(slice(0, clock.count)), False)
+    table = shared_base(context, clock.whole(slice(0, clock.count)))
     if table.flagged is not None and table.flagged.any():
         table = base_table(context, clock.whole(slice(0, clock.count)), True)
     joints = [j for j in range(n) if plan.eqs.pinned[j]]

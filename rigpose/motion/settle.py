@@ -95,7 +95,7 @@ def _piece(context: Context, clock: Clock, rows: Sequence[Rows], low: int, start
     cut = slice(start - low, stop - low)
     n = stop - start
     alive, margin = np.broadcast_to(base_alive[0], (clock.count,))[cut].copy(), np.ones(n)
-    columns = np.full((eqs.n * eqs.dim, n), np.nan)
+    columns = np.empty((eqs.n * eqs.dim, n))
     sources = dict(base)
     values: dict[int, Array] = {}
     for row in rows:
@@ -106,6 +106,8 @@ def _piece(context: Context, clock: Clock, rows: Sequence[Rows], low: int, start
     for j, place in sources.items():
         mine = place[:, 0, cut] if place.shape[2] > 1 else place[:, 0]
         columns[j * eqs.dim:(j + 1) * eqs.dim] = mine
+    for j in set(range(eqs.n)) - sources.keys():
+        columns[j * eqs.dim:(j + 1) * eqs.dim] = np.nan
     positions = _turned(columns, eqs)
     positions[~alive] = np.nan
     margin[~alive] = np.nan

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -23,10 +23,14 @@ class Clock:
     count: int
     knowns: Knowns
     between: Callable[[Array], Knowns]
+    _kept: dict[tuple[int, int], Inputs] = field(default_factory=dict, compare=False)
 
     def whole(self, which: slice) -> Inputs:
-        """At some of the frames."""
-        return self.knowns.part(which).inputs(self.eqs)
+        """At some of the frames; the same value each time, so that groups share what hangs on it."""
+        start, stop, _ = which.indices(self.count)
+        if (start, stop) not in self._kept:
+            self._kept[start, stop] = self.knowns.part(which).inputs(self.eqs)
+        return self._kept[start, stop]
 
     def at(self, times: Array) -> Inputs:
         """At any times ``(m,)``."""

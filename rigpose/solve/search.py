@@ -73,6 +73,15 @@ def base_table(context: Context, inputs: Inputs, careful: bool, **more: object) 
     return table
 
 
+def shared_base(context: Context, inputs: Inputs, **more: object) -> Table:
+    """The fast base table of some inputs, run once for all groups."""
+    if context.plan.reads_values or len(context.plan.groups) < 2 or "guess" in more:
+        return base_table(context, inputs, False, **more)
+    if inputs.base is None:
+        inputs.base = base_table(context, inputs, False, **more)
+    return inputs.base
+
+
 def group_table(base: Table, rows: int | None) -> Table:
     """A table for one group that starts from the base's points."""
     table = Table(base.eqs, base.inputs, base.careful, base.slack, base.reach, base.rounding,
@@ -125,7 +134,7 @@ def search(
     **more: object,
 ) -> Cells:
     """All branches of a group over the inputs' frames (or the rows that ``ways`` names)."""
-    base = base_table(context, inputs, False, **more)
+    base = shared_base(context, inputs, **more)
     cells, table = run_group(context, group, base, ways, rows)
     flagged = table.flagged
     if base.flagged is not None:

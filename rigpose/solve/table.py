@@ -20,11 +20,13 @@ from rigpose.solve.plan import Point
 @dataclass
 class Inputs:
     """Known numbers in the equations' frame: values ``{number: (F,) or (B, F)}``, targets
-    ``{(joint, axis): (F,)}``, and ``frames``, how many."""
+    ``{(joint, axis): (F,)}``, and ``frames``, how many. ``base`` keeps the run of what hangs on
+    them alone, for the groups of a plan to share."""
 
     frames: int
     values: dict[int, Array]
     targets: dict[tuple[int, int], Array]
+    base: Table | None = None
 
     def part(self, which: slice | NDArray[np.intp]) -> Inputs:
         """Some of the frames."""
