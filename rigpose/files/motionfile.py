@@ -108,8 +108,8 @@ def compare(one: Motion, other: Motion) -> Difference:
     """The largest distance between two motions, joint by joint, frame by frame."""
     frames, first, second = np.intersect1d(one.frames, other.frames, return_indices=True)
     joints = [j for j in one.joints if j in other.rig.index]
-    a = one.positions[np.ix_(first, [one.rig.index[j] for j in joints])]
-    b = other.positions[np.ix_(second, [other.rig.index[j] for j in joints])]
+    a = one.positions[first][:, [one.rig.index[j] for j in joints]]
+    b = other.positions[second][:, [other.rig.index[j] for j in joints]]
     gap = np.linalg.norm(a - b, axis=-1)
     alone = np.isnan(a).all(axis=(1, 2)) != np.isnan(b).all(axis=(1, 2))
     missing = tuple(map(float, frames[alone]))

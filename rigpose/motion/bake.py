@@ -26,7 +26,7 @@ from rigpose.motion.motion import Event, Motion, Span
 from rigpose.motion.rowstart import Row, row_of
 from rigpose.motion.settle import Piece, pieces
 from rigpose.motion.shot import Shot
-from rigpose.solve.clock import Clock
+from rigpose.solve.clock import Clock, part_of_clock
 from rigpose.solve.flow import writes
 from rigpose.solve.knowns import Knowns, read_knowns
 from rigpose.solve.rest import Rest, find_rest
@@ -114,8 +114,7 @@ class Baking:
             return Start(0, first, choose(self.shot, first))
         for low in range(1, self.clock.count, LOOK_AHEAD):
             high = min(low + LOOK_AHEAD, self.clock.count)
-            part = Clock(self.clock.eqs, high - low, self.clock.knowns.part(slice(low, high)),
-                         lambda t, low=low: self.clock.between(t + low))  # type: ignore[misc]
+            part = part_of_clock(self.clock, low, high)
             some = branches_on(self.rest, part, self.shot.numbers[low:high], budget)
             alive = (some.state > State.NONE).any(axis=0)
             if alive.any():
@@ -125,9 +124,8 @@ class Baking:
         return Start(self.clock.count, first, choose(self.shot, first))
 
     def _at(self, frame: int, budget: Budget) -> Branches:
-        which = slice(frame, frame + 1)
-        part = Clock(self.clock.eqs, 1, self.clock.knowns.part(which), self.clock.between)
-        return branches_on(self.rest, part, self.shot.numbers[which], budget)
+        part = part_of_clock(self.clock, frame, frame + 1)
+        return branches_on(self.rest, part, self.shot.numbers[frame:frame + 1], budget)
 
     def pieces(self) -> Iterator[Piece]:
         """The row's poses, first frames first."""
@@ -137,9 +135,7 @@ class Baking:
         low = self.start.frame
         if low:
             yield self._nothing(0, low)
-        part = Clock(self.clock.eqs, self.clock.count - low,
-                     self.clock.knowns.part(slice(low, None)),
-                     lambda times: self.clock.between(times + low))
+        part = part_of_clock(self.clock, low, self.clock.count)
         for piece in pieces(self.context, part, self.row.begins):
             moved = tuple((g, Pass(0, p.choice, p.time + low, p.kind)) for g, p in piece.passes)
             yield replace(piece, start=piece.start + low, stop=piece.stop + low, passes=moved)

@@ -23,13 +23,14 @@ from rigpose.motion.product import (
     taken,
 )
 from rigpose.motion.refusals import refuse_loose, useless_targets
+from rigpose.solve.births import follow_all
 from rigpose.solve.clock import Clock, sampled
 from rigpose.solve.flow import writes
 from rigpose.solve.knowns import Given, Knowns, Wished, read_knowns
 from rigpose.solve.plan import Cluster, Group, Meet, Plan, Swing
 from rigpose.solve.planner import plan_for
 from rigpose.solve.rest import Rest, find_rest
-from rigpose.solve.rows import Pass, Rows, follow, survey
+from rigpose.solve.rows import Pass, Rows, survey
 from rigpose.solve.search import Context
 from rigpose.solve.stepping import enumerate_rows
 from rigpose.solve.stream import all_cells
@@ -103,7 +104,7 @@ def group_rows(context: Context, group: Group, clock: Clock, budget: Budget,
     rows, meets = survey(context, group, clock)
     if not meets or not len(rows.codes):
         return rows, False
-    return follow(context, group, clock, rows.codes), False
+    return follow_all(context, group, clock, rows), False
 
 
 def made(context: Context, clock: Clock, frames: Array, picks: Sequence[Sorted],

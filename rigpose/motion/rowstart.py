@@ -16,7 +16,7 @@ from rigpose.model.equations import Array
 from rigpose.motion.branchset import Branches
 from rigpose.motion.product import MEET
 from rigpose.motion.settle import Begin
-from rigpose.solve.clock import Clock
+from rigpose.solve.clock import Clock, part_of_clock
 from rigpose.solve.plan import Group
 from rigpose.solve.rows import Pass, Rows, follow
 from rigpose.solve.search import Cells, Context, search
@@ -85,8 +85,7 @@ def _settled(context: Context, group: Group, clock: Clock, frame: int, cells: Ce
     high = min(frame + AHEAD, clock.count)
     if high - frame < 3:
         return int(same[0]), ""
-    part = Clock(clock.eqs, high - frame, clock.knowns.part(slice(frame, high)),
-                 lambda t: clock.between(t + frame))
+    part = part_of_clock(clock, frame, high)
     rows = follow(context, group, part, cells.codes[same])
     lives = np.where(rows.alive.all(axis=1), high, np.argmin(rows.alive, axis=1))
     longest = np.flatnonzero(lives == lives.max())

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from rigpose.ground.words import Found
 from rigpose.model.equations import Array, Equations
 from rigpose.motion.product import base_places
-from rigpose.solve.clock import Clock
+from rigpose.solve.clock import Clock, part_of_clock
 from rigpose.solve.plan import Group
 from rigpose.solve.rows import Codes, Pass, Rows, follow
 from rigpose.solve.search import Cells, Context
@@ -53,7 +53,7 @@ def pieces(context: Context, clock: Clock, begins: Sequence[Begin],
     for start in range(0, clock.count, window):
         stop = min(start + window, clock.count)
         low, high = max(start - HALO, 0), min(stop + HALO, clock.count)
-        part = _window(clock, low, high)
+        part = part_of_clock(clock, low, high)
         rows, after = [], []
         for group, begin in zip(context.plan.groups, state, strict=True):
             row = _follow(context, group, part, begin)
@@ -61,11 +61,6 @@ def pieces(context: Context, clock: Clock, begins: Sequence[Begin],
             after.append(_next(row, begin, max(stop - HALO, 0) - low))
         yield _piece(context, part, rows, low, start, stop)
         state = after
-
-
-def _window(clock: Clock, low: int, high: int) -> Clock:
-    return Clock(clock.eqs, high - low, clock.knowns.part(slice(low, high)),
-                 lambda times: clock.between(times + low))
 
 
 def _follow(context: Context, group: Group, clock: Clock, begin: Begin) -> Rows:

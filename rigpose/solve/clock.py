@@ -26,7 +26,7 @@ class Clock:
     _kept: dict[tuple[int, int], Inputs] = field(default_factory=dict, compare=False)
 
     def whole(self, which: slice) -> Inputs:
-        """At some of the frames; the same value each time, so that groups share what hangs on it."""
+        """At some of the frames; the same value each time, for the groups to share."""
         start, stop, _ = which.indices(self.count)
         if (start, stop) not in self._kept:
             self._kept[start, stop] = self.knowns.part(which).inputs(self.eqs)
@@ -35,6 +35,12 @@ class Clock:
     def at(self, times: Array) -> Inputs:
         """At any times ``(m,)``."""
         return self.between(times).inputs(self.eqs)
+
+
+def part_of_clock(clock: Clock, low: int, high: int) -> Clock:
+    """Frames ``low`` … ``high`` (not included) as a clock of their own."""
+    return Clock(clock.eqs, high - low, clock.knowns.part(slice(low, high)),
+                 lambda times: clock.between(times + low))
 
 
 def sampled(eqs: Equations, knowns: Knowns) -> Clock:

@@ -248,11 +248,21 @@ def _start_missing(system: System, eqs: Equations, start: Array, missing: Mask) 
     found, size = assemble(system, starts, values, columns=only)
     found, size = assemble(system, found, values) if size.min() > 1e-12 else (found, size)
     good = np.flatnonzero(size < max(10 * size.min(), 1e-11))
+    good = good[_regular(system, found[good], values[:len(good)])]
     # Without a written place there is no nearest pose: take the one that reads first when
     # coordinates are compared in the file's order, so that every machine takes the same.
     keys = np.round(found[good].reshape(len(good), -1), 9)
     pick: Array = found[good[np.lexsort(-keys.T[::-1])[0]]]
     return pick
+
+
+def _regular(system: System, poses: Array, values: Array) -> Mask:
+    """Poses of the largest rank: where two joints happen to fall together, say, a rig can turn
+    in ways that it can't elsewhere, and such a pose is no one's rest pose."""
+    _, jacobian = system.both(poses, values)
+    ranks = (np.linalg.svd(jacobian[:, :, system.free], compute_uv=False) > 1e-7).sum(axis=1)
+    best: Mask = ranks == ranks.max(initial=0)
+    return best
 
 
 def _make(rig: Rig, eqs: Equations, system: System, x: Array, values: Array) -> Rest:
