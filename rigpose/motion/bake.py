@@ -17,7 +17,7 @@ from rigpose.ground.budget import Budget, Watch, go_on
 from rigpose.ground.errors import Problem, Unsolvable
 from rigpose.ground.words import Found, State
 from rigpose.model.equations import Array
-from rigpose.motion.branches import branches_on, choice_steps, plan_of
+from rigpose.motion.branches import Search, branches_on, choice_steps, plan_of, search_on
 from rigpose.motion.branchset import Branches
 from rigpose.motion.channels import channels
 from rigpose.motion.choose import Choice, choose
@@ -90,8 +90,13 @@ class Start:
     """The frame (counted from 0) from which a row lives, and the choice made there."""
 
     frame: int
-    branches: Branches
+    search: Search
     choice: Choice
+
+    @property
+    def branches(self) -> Branches:
+        """The branches of that frame."""
+        return self.search.branches
 
 
 class Baking:
@@ -105,13 +110,13 @@ class Baking:
         self.row: Row | None = None
         if self.start.choice.number >= 0:
             self.row = row_of(self.context, self.clock, self.start.frame,
-                              self.start.branches, self.start.choice.number)
+                              self.start.search, self.start.choice.number)
 
     def _start(self, budget: Budget) -> Start:
         """The first frame that assembles; in most shots frame 0."""
         first = self._at(0, budget)
-        if len(first):
-            return Start(0, first, choose(self.shot, first))
+        if len(first.branches):
+            return Start(0, first, choose(self.shot, first.branches))
         for low in range(1, self.clock.count, LOOK_AHEAD):
             high = min(low + LOOK_AHEAD, self.clock.count)
             part = part_of_clock(self.clock, low, high)
@@ -120,12 +125,12 @@ class Baking:
             if alive.any():
                 frame = low + int(np.argmax(alive))
                 found = self._at(frame, budget)
-                return Start(frame, found, choose(self.shot, found))
-        return Start(self.clock.count, first, choose(self.shot, first))
+                return Start(frame, found, choose(self.shot, found.branches))
+        return Start(self.clock.count, first, choose(self.shot, first.branches))
 
-    def _at(self, frame: int, budget: Budget) -> Branches:
+    def _at(self, frame: int, budget: Budget) -> Search:
         part = part_of_clock(self.clock, frame, frame + 1)
-        return branches_on(self.rest, part, self.shot.numbers[frame:frame + 1], budget)
+        return search_on(self.rest, part, self.shot.numbers[frame:frame + 1], budget)
 
     def pieces(self) -> Iterator[Piece]:
         """The row's poses, first frames first."""

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -76,9 +77,24 @@ def plan_of(rest: Rest, knowns: Knowns) -> Plan:
     return plan
 
 
+@dataclass(frozen=True)
+class Search:
+    """A set of branches with the groups' rows behind it."""
+
+    branches: Branches
+    groups: tuple[Sorted, ...]
+    picks: Picks
+
+
 def branches_on(rest: Rest, clock: Clock, frames: Array, budget: Budget,
                 watch: Watch | None = None) -> Branches:
     """All branches over a clock's frames; ``frames (n_frames,)`` are their numbers."""
+    return search_on(rest, clock, frames, budget, watch).branches
+
+
+def search_on(rest: Rest, clock: Clock, frames: Array, budget: Budget,
+              watch: Watch | None = None) -> Search:
+    """As `branches_on`, with the rows of every group."""
     plan = plan_of(rest, clock.knowns)
     context = Context(rest, plan, budget)
     picks, done = [], Found.COMPLETE
@@ -89,7 +105,7 @@ def branches_on(rest: Rest, clock: Clock, frames: Array, budget: Budget,
         rows, cut = group_rows(context, group, clock, budget, watch)
         done = weaker(done, Found.BUDGET if cut else rows.found)
         picks.append(kept(rest, rows))
-    return made(context, clock, frames, picks, done)
+    return made_from(context, clock, frames, picks, done)
 
 
 def group_rows(context: Context, group: Group, clock: Clock, budget: Budget,
@@ -110,6 +126,12 @@ def group_rows(context: Context, group: Group, clock: Clock, budget: Budget,
 def made(context: Context, clock: Clock, frames: Array, picks: Sequence[Sorted],
          found: Found) -> Branches:
     """The product of the groups' rows as a set of branches, nearest to rest first."""
+    return made_from(context, clock, frames, picks, found).branches
+
+
+def made_from(context: Context, clock: Clock, frames: Array, picks: Sequence[Sorted],
+              found: Found) -> Search:
+    """As `made`, with the rows of every group."""
     rest, plan, eqs = context.rest, context.plan, context.plan.eqs
     base, base_alive = base_places(context, clock)
     mixed = combined(rest, picks, base_alive, context.budget.poses)
@@ -121,13 +143,14 @@ def made(context: Context, clock: Clock, frames: Array, picks: Sequence[Sorted],
     groups = tuple(tuple(eqs.rig.joint_names[j] for j in p.rows.group.joints) for p in picks)
     for array in (positions, state, mixed.margin):
         array.flags.writeable = False
-    return Branches(
+    branches = Branches(
         rig=rest.rig, knowns=clock.knowns, frames=frames, positions=positions, state=state,
         margin=mixed.margin, found=found, groups=groups, choice=mixed.choice, count=mixed.count,
         size=rest.size, meets=mixed.meets, values=_read_off(rest, picks, mixed),
         events=_events(eqs.rig, frames, picks, mixed),
         notes=(*useless_targets(rest, plan), *_turning(eqs.rig, picks)),
         redundant=frozenset(plan.redundant))
+    return Search(branches, tuple(picks), mixed)
 
 
 def _ties_by_bends(rest: Rest, clock: Clock, picks: Sequence[Sorted], mixed: Picks,

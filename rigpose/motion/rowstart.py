@@ -13,13 +13,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigpose.model.equations import Array
-from rigpose.motion.branchset import Branches
+from rigpose.motion.branches import Search
 from rigpose.motion.product import MEET
 from rigpose.motion.settle import Begin
 from rigpose.solve.clock import Clock, part_of_clock
 from rigpose.solve.plan import Group
 from rigpose.solve.rows import Pass, Rows, follow
-from rigpose.solve.search import Cells, Context, search
+from rigpose.solve.search import Context
 
 AHEAD = 256
 """Frames over which rows that begin in one pose are compared."""
@@ -46,41 +46,38 @@ class Row:
         return out
 
 
-def row_of(context: Context, clock: Clock, frame: int, branches: Branches, number: int) -> Row:
+def row_of(context: Context, clock: Clock, frame: int, search: Search, number: int) -> Row:
     """The row that goes on from one branch of the frame at which it is chosen."""
-    eqs = context.plan.eqs
-    pose = eqs.inward(branches.positions[number, 0])
-    inputs = clock.whole(slice(frame, frame + 1))
     begins, notes = [], []
-    for group in context.plan.groups:
-        cells = search(context, group, inputs)
-        same = _same(context, group, cells, pose)
-        if len(same) > 1 and group.binary:
-            chosen, note = _settled(context, group, clock, frame, cells, same)
-            notes += [note] if note else []
-        else:
-            chosen = int(same[0])
-        begins.append(Begin(cells.codes[chosen:chosen + 1],
-                            [p if p.shape[1] == 1 else p[:, chosen:chosen + 1]
-                             for p in cells.places],
-                            {v: a if len(a) == 1 else a[chosen:chosen + 1]
-                             for v, a in cells.values.items()}))
-    return Row(tuple(begins), branches.names[number], branches.names.bends(number), frame,
-               tuple(notes))
+    for g, (group, chosen) in enumerate(zip(context.plan.groups, search.groups, strict=True)):
+        rows, row = chosen.rows, int(search.picks.index[number, g])
+        if group.binary and rows.margin[row, 0] < MEET:
+            same = _same(context, rows, row)
+            if len(same) > 1:
+                row, note = _settled(context, group, clock, frame, rows, same)
+                notes += [note] if note else []
+        begins.append(_begin(rows, row))
+    names = search.branches.names
+    return Row(tuple(begins), names[number], names.bends(number), frame, tuple(notes))
 
 
-def _same(context: Context, group: Group, cells: Cells, pose: Array) -> NDArray[np.intp]:
-    """Live branches of a group in the given pose; several only at a dead centre."""
-    gap = np.zeros(len(cells.codes))
-    for j, place in zip(group.joints, cells.places, strict=True):
-        gap = np.maximum(gap, np.abs(place[:, :, 0].T - pose[j]).max(axis=1))
-    gap[~cells.alive[:, 0]] = np.inf
-    order = np.argsort(gap, kind="stable")
-    near = gap[order] <= MEET * context.rest.reach
-    return order[near] if near.any() else order[:1]
+def _begin(rows: Rows, row: int) -> Begin:
+    return Begin(rows.codes[row:row + 1],
+                 [p if p.shape[1] == 1 else p[:, row:row + 1] for p in rows.places],
+                 {v: a if len(a) == 1 else a[row:row + 1] for v, a in rows.values.items()})
 
 
-def _settled(context: Context, group: Group, clock: Clock, frame: int, cells: Cells,
+def _same(context: Context, rows: Rows, row: int) -> NDArray[np.intp]:
+    """Live rows in the same pose, the given one first; several only at a dead centre."""
+    gap = np.zeros(len(rows.codes))
+    for place in rows.places:
+        mine = place[:, :, 0]
+        gap = np.maximum(gap, np.abs(mine - mine[:, row % mine.shape[1]][:, None]).max(axis=0))
+    near = np.flatnonzero((gap <= MEET * context.rest.reach) & rows.alive[:, 0])
+    return np.concatenate([[row], near[near != row]])
+
+
+def _settled(context: Context, group: Group, clock: Clock, frame: int, cells: Rows,
              same: NDArray[np.intp]) -> tuple[int, str]:
     high = min(frame + AHEAD, clock.count)
     if high - frame < 3:
