@@ -8,11 +8,12 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 
 from rigpose.model.equations import Array
-from rigpose.model.rig import Bone, Limit, Pair, Plate, Rail, Ram, Rig
+from rigpose.model.rig import Bone, Coordinates, Limit, Pair, Plate, Rail, Ram, Rig
 
 POSES = 1 << 11
 """Poses measured in one go: few enough to stay in the cache."""
@@ -108,7 +109,7 @@ def _departure(rig: Rig, x: Array, part: Bone | Plate | Rail) -> Array:
         off: Array = np.abs(_long(b - a) - part.length)
         return off
     if isinstance(part, Plate):
-        return _plate([x[rig.index[j]] for j in part.joints], np.array(part.shape))
+        return _plate([x[rig.index[j]] for j in part.joints], part.shape)
     through, direction = _rail_line(rig, x, part)
     w = x[rig.index[part.joint]] - through
     return _long(w - (w * direction).sum(axis=0) * direction)
@@ -122,12 +123,13 @@ def _long(v: Array) -> Array:
     return np.sqrt(long, out=long)
 
 
-def _plate(p: Sequence[Array], shape: Array) -> Array:
+def _plate(p: Sequence[Array], places: tuple[Coordinates, ...]) -> Array:
     """The largest distance ``(m,)`` of a joint from where the plate's two farthest joints carry
     it, and of these two from their own distance; a mirrored plate is far off."""
+    shape = np.array(places)
     if shape.shape[1] != 2:
         return _pairs(p, shape)
-    i, j = _farthest(shape)
+    i, j = _farthest(places)
     e, w = p[j] - p[i], shape[j] - shape[i]
     long = float(np.hypot(*w))
     worst: Array = np.abs(_long(e) - long)
@@ -142,8 +144,10 @@ def _plate(p: Sequence[Array], shape: Array) -> Array:
     return worst
 
 
-def _farthest(shape: Array) -> tuple[int, int]:
+@lru_cache(maxsize=1024)
+def _farthest(places: tuple[Coordinates, ...]) -> tuple[int, int]:
     """The two joints of a plate that lie farthest apart."""
+    shape = np.array(places)
     gap = np.linalg.norm(shape[:, None] - shape[None], axis=-1)
     i, j = np.unravel_index(int(np.argmax(gap)), gap.shape)
     return int(i), int(j)

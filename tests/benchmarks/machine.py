@@ -54,9 +54,9 @@ def drag_rig() -> rp.Rig:
         plates[f"plate{k}"] = [before, f"b{k}", f"c{k}", f"d{k}"]
         bones[f"rod{k}"] = ["q", f"b{k}"]
         before = f"c{k}"
-    joints |= {f"e{k}": [1 + 0.4 * k, 3 + 0.3 * k] for k in range(3)}
-    for k in range(3):
-        plates[f"plate{k}"].append(f"e{k}")
+    for k in range(9):
+        joints[f"e{k}"] = [1 + 0.4 * k, 3 + 0.3 * k]
+        plates[f"plate{k % 6}"].append(f"e{k}")
     return rp.make_rig(joints, bones, plates=plates,
                        cranks={"turn": {"turns": "crank", "from": "ground", "about": "p"}})
 
