@@ -148,7 +148,7 @@ def made_from(context: Context, clock: Clock, frames: Array, picks: Sequence[Sor
         margin=mixed.margin, found=found, groups=groups, choice=mixed.choice, count=mixed.count,
         size=rest.size, meets=mixed.meets, values=_read_off(rest, picks, mixed),
         events=_events(eqs.rig, frames, picks, mixed),
-        notes=(*useless_targets(rest, plan), *_turning(eqs.rig, picks)),
+        notes=(*_open_rest(rest), *useless_targets(rest, plan), *_turning(eqs.rig, picks)),
         redundant=frozenset(plan.redundant))
     return Search(branches, tuple(picks), mixed)
 
@@ -171,6 +171,14 @@ def _ties_by_bends(rest: Rest, clock: Clock, picks: Sequence[Sorted], mixed: Pic
     place = np.arange(len(mixed.steps))
     place[member] = member[order]
     return taken(mixed, place)
+
+
+def _open_rest(rest: Rest) -> tuple[str, ...]:
+    """A sentence where the rig's own lengths contradict each other by more than its slack."""
+    if rest.assembles:
+        return ()
+    return (f'the rig does not close: "{rest.worst}" is off by {rest.misfit * rest.size:.4g} '
+            f"{rest.rig.unit} at rest; slack = {rest.misfit * 1.01:.2g} would let it pass",)
 
 
 def _turning(rig: Rig, picks: Sequence[Sorted]) -> tuple[str, ...]:
