@@ -51,7 +51,7 @@ def random_rig(seed: int, steps: int = 4) -> tuple[rp.Rig, dict[str, float]]:
     for _ in range(2):
         draft.joint(pin=True)
     _crank(draft)
-    kinds = [_dyad, _dyad, _plate, _rail, _ram, _slot]
+    kinds = [_dyad, _dyad, _plate, _rail, _ram, _slot, _crosshead, _yoke]
     for _ in range(steps):
         kinds[int(draft.rng.integers(len(kinds)))](draft)
     return draft.rig(), draft.drives
@@ -112,3 +112,38 @@ def _slot(draft: Draft) -> None:
     draft.bone(pivot, end)
     draft.add("rails", f"r{len(draft.sections.get('rails', {}))}",
               {"joint": slider, "along": [pivot, end]})
+
+
+def _sliding_body(draft: Draft) -> tuple[str, list[str]]:
+    """A plate with two joints on one rail, or on two parallel ones, and two joints beside them."""
+    names = [draft.joint() for _ in range(4)]
+    plate = f"p{len(draft.sections.get('plates', {}))}"
+    draft.add("plates", plate, names)
+    direction = draft.places[names[1]] - draft.places[names[0]]
+    if draft.rng.random() < 0.5:
+        direction = direction + draft.rng.normal(size=2) * 0.2
+    for name in names[:2]:
+        draft.add("rails", f"r{len(draft.sections.get('rails', {}))}",
+                  {"joint": name, "through": draft.places[name].tolist(),
+                   "direction": direction.tolist()})
+    return plate, names
+
+
+def _crosshead(draft: Draft) -> None:
+    """A sliding body pushed by a rod."""
+    before = draft.placed()
+    _, names = _sliding_body(draft)
+    draft.bone(before, names[2])
+
+
+def _yoke(draft: Draft) -> None:
+    """A sliding body with a slot in which a placed joint runs."""
+    before = draft.placed()
+    _, names = _sliding_body(draft)
+    # The slot's far end is drawn so that the slot passes through the joint.
+    a, b = names[2], names[3]
+    way = draft.places[before] - draft.places[a]
+    draft.places[b] = draft.places[a] + way * draft.rng.uniform(1.2, 2.0)
+    draft.joints[b]["at"] = draft.places[b].tolist()
+    draft.add("rails", f"r{len(draft.sections.get('rails', {}))}",
+              {"joint": before, "along": [a, b]})

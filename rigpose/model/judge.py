@@ -112,7 +112,14 @@ def _departure(rig: Rig, x: Array, part: Bone | Plate | Rail) -> Array:
         return _plate([x[rig.index[j]] for j in part.joints], part.shape)
     through, direction = _rail_line(rig, x, part)
     w = x[rig.index[part.joint]] - through
-    return _long(w - (w * direction).sum(axis=0) * direction)
+    off = _long(w - (w * direction).sum(axis=0) * direction)
+    if part.along is None:
+        return off
+    # Far beyond a short slot the joint is off by many times what the slot's own end is off: the
+    # least that any of the three joints would have to move is what counts.
+    a, b = (x[rig.index[j]] for j in part.along)
+    lever: Array = np.maximum(_long(w) / _long(b - a), 1.0)
+    return off / lever
 
 
 def _long(v: Array) -> Array:

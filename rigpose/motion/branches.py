@@ -26,9 +26,9 @@ from rigpose.motion.product import (
 from rigpose.motion.refusals import refuse_loose, useless_targets
 from rigpose.solve.births import follow_all
 from rigpose.solve.clock import Clock, sampled
-from rigpose.solve.flow import writes
+from rigpose.solve.flow import has_choice, writes
 from rigpose.solve.knowns import Given, Knowns, Wished, read_knowns
-from rigpose.solve.plan import Cluster, Group, Meet, Plan, Swing
+from rigpose.solve.plan import Group, Plan, Step
 from rigpose.solve.planner import plan_for
 from rigpose.solve.rest import Rest, find_rest
 from rigpose.solve.rows import Pass, Rows, survey
@@ -217,13 +217,12 @@ def _events(rig: Rig, frames: Array, picks: Sequence[Sorted],
         for row in mixed.index)
 
 
-def choice_steps(group: Group) -> list[Meet | Swing | Cluster]:
+def choice_steps(group: Group) -> list[Step]:
     """The steps with choices, in the order of their numbers."""
-    return [s for s in group.steps
-            if isinstance(s, Cluster) or (isinstance(s, (Meet, Swing)) and s.bit >= 0)]
+    return [s for s in group.steps if has_choice(s)]
 
 
-def _event(rig: Rig, frames: Array, step: Meet | Swing | Cluster, p: Pass) -> Event:
+def _event(rig: Rig, frames: Array, step: Step, p: Pass) -> Event:
     joints = tuple(rig.joint_names[j] for j in writes(step) if j < len(rig.joints))
     at = float(np.interp(p.time, np.arange(len(frames)), frames))
     return Event(at, p.kind, joints, step.parts)

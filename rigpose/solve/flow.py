@@ -14,6 +14,7 @@ from rigpose.solve.plan import (
     Gauge,
     Given,
     Heading,
+    Level,
     Line,
     Meet,
     Orient,
@@ -40,7 +41,7 @@ def _heading(heading: Heading | None) -> set[Point]:
 def _curve(curve: Circle | Line) -> set[Point]:
     if isinstance(curve, Circle):
         return {curve.centre, *(curve.radius.points or ())}
-    return set(curve.points) | _heading(curve.heading)
+    return {*curve.points, *(curve.moved or ())} | _heading(curve.heading)
 
 
 @singledispatch
@@ -91,6 +92,11 @@ def _(step: Orient) -> set[Point]:
 
 
 @reads.register
+def _(step: Level) -> set[Point]:
+    return _points(*step.local, *step.pair)
+
+
+@reads.register
 def _(step: Check) -> set[Point]:
     return set(step.points)
 
@@ -101,7 +107,7 @@ def writes(step: Step) -> tuple[Point, ...]:
         return step.joints
     if isinstance(step, (Given, Meet, Slide, Shift)):
         return (step.dst,)
-    if isinstance(step, (Carry, Aim, Swing, Seat, Orient)):
+    if isinstance(step, (Carry, Aim, Swing, Seat, Orient, Level)):
         return step.dst
     return ()
 
@@ -145,4 +151,4 @@ def value_written(step: Step) -> int:
 
 def has_choice(step: Step) -> bool:
     """Whether a step has more than one way."""
-    return isinstance(step, Cluster) or (isinstance(step, (Meet, Swing)) and step.bit >= 0)
+    return isinstance(step, Cluster) or (isinstance(step, (Meet, Swing, Level)) and step.bit >= 0)

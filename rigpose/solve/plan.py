@@ -38,7 +38,12 @@ class Heading:
 @dataclass(frozen=True, slots=True)
 class Line:
     """A straight line. One of: constant, through two points, one coordinate given as a target
-    (``axis`` of ``joint``), square to a rail at a driven way, or from a point with a heading."""
+    (``axis`` of ``joint``), square to a rail at a driven way, from a point with a heading, or
+    through the first point in the direction from the second to the third (``slot``).
+
+    ``moved`` shifts it by the way from the first of two points to the second: a body of known
+    heading hands the lines of all its joints to one of them.
+    """
 
     kind: str
     through: tuple[float, ...] = ()
@@ -48,6 +53,7 @@ class Line:
     axis: int = -1
     value: int = -1
     heading: Heading | None = None
+    moved: tuple[Point, Point] | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -153,6 +159,19 @@ class Orient(Step):
     local: tuple[tuple[float, float] | Point, ...]
     line: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
     heading: Heading
+
+
+@dataclass(frozen=True, slots=True)
+class Level(Step):
+    """Helper points: the places of a body turned so that two of its joints lie on two parallel
+    lines, the second ``offset`` to the left of the first along ``direction``."""
+
+    dst: tuple[Point, ...]
+    local: tuple[tuple[float, float] | Point, ...]
+    pair: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
+    direction: tuple[float, float]
+    offset: float
+    bit: int
 
 
 @dataclass(frozen=True, slots=True)

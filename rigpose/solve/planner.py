@@ -8,13 +8,13 @@ Ait-Aoudia, Jegou and Michelucci 1993) with independence measured at the rest po
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 from functools import lru_cache
 from itertools import count
 
 import numpy as np
 
-from rigpose.model.equations import GROUND, Array, Equations
+from rigpose.model.equations import Array, Equations
 from rigpose.model.rig import Rig
 from rigpose.model.system import System
 from rigpose.solve.blocks import smallest_block
@@ -22,18 +22,13 @@ from rigpose.solve.checks import check_key, checks_for
 from rigpose.solve.flow import reads, writes
 from rigpose.solve.grouping import grouped
 from rigpose.solve.growth import Growth
+from rigpose.solve.heading import turned_by_crank, turned_by_rails
 from rigpose.solve.nearby import nearby
 from rigpose.solve.net import Net, Solid
 from rigpose.solve.plan import (
-    Circle,
     Cluster,
     Gauge,
-    Heading,
-    Line,
-    Meet,
-    Orient,
     Plan,
-    Shift,
     Step,
     Tied,
 )
@@ -71,7 +66,8 @@ class Planner:
                 ground._push(0, k, "crank")
         while True:
             ground.run()
-            if self._ties() or self._condense() or self._orient() or self._cluster():
+            if (self._ties() or self._condense() or turned_by_crank(ground, self.points)
+                    or turned_by_rails(ground, self.points) or self._cluster()):
                 continue
             break
         loose = tuple(j for j in range(self.eqs.n) if j not in ground.place)
@@ -156,71 +152,6 @@ class Planner:
         checks = tuple(checks_for(self.eqs, self.net, frame, frozenset(uses)))
         uses |= {check_key(self.eqs, c) for c in checks}
         return Solid(solid.name, dict(frame.place), frozenset(uses), (*frame.steps, *checks))
-
-    # -- bodies of known heading ------------------------------------------------------------------
-
-    def _orient(self) -> bool:
-        """A body without a placed joint whose heading is known: its curves act on one joint."""
-        angles, ground = self.eqs.angles, self.ground
-        for k in range(len(angles.names)):
-            value = int(angles.value[k])
-            if value not in ground.known or ("value", value) in ground.used:
-                continue
-            for back in (False, True):
-                a, b = map(int, angles.base[k] if back else angles.line[k])
-                heading = ground._heading(k, back) if a != GROUND else None
-                carrier = ground._carrier(a, b, placed=0) if heading else None
-                if heading and carrier and self._shift(k, carrier, heading, (a, b)):
-                    return True
-        return False
-
-    def _shift(self, k: int, carrier: tuple[int | None, Solid], heading: Heading,
-               pair: tuple[int, int]) -> bool:
-        number, solid = carrier
-        ground = self.ground
-        loci = [(j, locus) for j in solid.local for locus in ground.loci[j]]
-        if len(loci) < 2:
-            return False
-        joints = list(solid.local)
-        helper = {j: next(self.points) for j in joints}
-        first = joints[0]
-        steps: list[Step] = [Orient(
-            dst=tuple(helper.values()), local=tuple(solid.local.values()),
-            line=(solid.local[pair[0]], solid.local[pair[1]]),
-            heading=heading, parts=(self.eqs.angles.names[k], solid.name))]
-        moved = []
-        for j, locus in loci:
-            curve = locus.curve
-            if isinstance(curve, Circle):
-                point = next(self.points)
-                steps.append(Shift(dst=point, point=curve.centre, minus=helper[j],
-                                   plus=helper[first], parts=(locus.part,)))
-                moved.append(replace(locus, curve=Circle(point, curve.radius)))
-            elif j == first:
-                moved.append(locus)
-            elif curve.kind == "fixed":
-                moved.append(replace(locus, curve=Line(
-                    "shifted", curve.through, curve.direction, points=(helper[j], helper[first]))))
-        pair_found = ground._best_pair(moved)
-        if pair_found is None:
-            return False
-        one, two = pair_found
-        curves = sorted((one.curve, two.curve), key=lambda c: isinstance(c, Circle))
-        bit = -1 if all(isinstance(c, Line) for c in curves) else 0
-        steps.append(Meet(dst=first, first=curves[0], second=curves[1], bit=bit,
-                          parts=(one.part, two.part)))
-        rest = [j for j in joints if j != first]
-        steps += [Shift(dst=j, point=first, minus=helper[first], plus=helper[j],
-                        parts=(solid.name,)) for j in rest]
-        ground.used |= {("value", int(self.eqs.angles.value[k])), one.uses, two.uses}
-        ground.used |= solid.uses if number is None else set()
-        ground.steps += steps
-        ground._hold(number, joints)
-        for j in joints:
-            ground.place[j] = j
-        for j in joints:
-            ground._arrived(j)
-        return True
 
     # -- blocks -------------------------------------------------------------------------------
 

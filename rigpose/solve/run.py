@@ -36,6 +36,7 @@ from rigpose.solve.plan import (
     Given,
     Heading,
     Length,
+    Level,
     Line,
     Meet,
     Orient,
@@ -101,6 +102,17 @@ def _heading(table: Table, heading: Heading) -> Array:
 
 def line_of(table: Table, line: Line) -> tuple[Array, Array]:
     """A point and a unit direction."""
+    p, d = _plain_line(table, line)
+    if line.moved is not None:
+        p = p + table.point(line.moved[1]) - table.point(line.moved[0])
+    return p, d
+
+
+def _plain_line(table: Table, line: Line) -> tuple[Array, Array]:
+    if line.kind == "slot":
+        p, a, b = (table.point(k) for k in line.points)
+        e = b - a
+        return p, e / np.sqrt(dot(e, e))
     if line.kind == "points":
         p, q = (table.point(k) for k in line.points)
         e = q - p
@@ -116,8 +128,6 @@ def line_of(table: Table, line: Line) -> tuple[Array, Array]:
     d = np.array(line.direction).reshape(2, 1, 1)
     if line.kind == "across":
         return p + d * table.value(line.value), perp(d)
-    if line.kind == "shifted":
-        return p + table.point(line.points[1]) - table.point(line.points[0]), d
     return p, d
 
 
@@ -143,13 +153,18 @@ def _(step: Meet, table: Table, ways: Ways, number: int) -> None:
         radius, centre = _length(table, second.radius), table.point(second.centre)
         crossing = line_circle(p, d, centre, radius)
         choose(step.dst, step.bit, crossing, table, ways, number,
-               (second.centre, *first.points), lambda: (2.0 / radius, radius))
+               (second.centre, *_line_points(first)), lambda: (2.0 / radius, radius))
     elif isinstance(first, Line) and isinstance(second, Line):
         point, sine = line_line(*line_of(table, first), *line_of(table, second))
-        bound = _parents(table, (*first.points, *second.points)) / sine if table.careful else 0.0
+        parents = (*_line_points(first), *_line_points(second))
+        bound = _parents(table, parents) / sine if table.careful else 0.0
         table.put(step.dst, point, bound)
         table.kill(np.isfinite(point[0]), number)
         table.narrow(sine)
+
+
+def _line_points(line: Line) -> tuple[Point, ...]:
+    return (*line.points, *(line.moved or ()))
 
 
 def _without_free(step: Meet, table: Table, crossing: Crossing, way: Array,
@@ -368,6 +383,28 @@ def _(step: Orient, table: Table, ways: Ways, number: int) -> None:
         w = _local(table, place) - a
         table.put(dst, np.stack(np.broadcast_arrays(
             cos * w[0] - sin * w[1], sin * w[0] + cos * w[1])))
+
+
+@execute.register
+def _(step: Level, table: Table, ways: Ways, number: int) -> None:
+    a, b = (_local(table, k) for k in step.pair)
+    e = b - a
+    long = np.sqrt(dot(e, e))
+    d = np.array(step.direction).reshape(2, 1, 1)
+    rise = np.broadcast_to(step.offset / long, (len(long), table.inputs.frames))
+    sine2 = (1.0 - rise) * (1.0 + rise)
+    sine = np.sqrt(sine2)
+    choose(-1 - number, step.bit, (perp(d) * rise, d * sine, sine2, sine), table, ways, number, (),
+           lambda: (2.0 / long, 1.0))
+    # The choice has doubled the branches: what was read before is read again.
+    heading = table.point(-1 - number)
+    a, b = (_local(table, k) for k in step.pair)
+    e = (b - a) / np.sqrt(dot(b - a, b - a))
+    cos, sin = dot(e, heading), cross(e, heading)
+    for dst, place in zip(step.dst, step.local, strict=True):
+        w = _local(table, place) - a
+        table.put(dst, np.stack(np.broadcast_arrays(
+            cos * w[0] - sin * w[1], sin * w[0] + cos * w[1])), table.bound(-1 - number))
 
 
 @execute.register
