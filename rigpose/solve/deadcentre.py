@@ -35,12 +35,11 @@ def classify(context: Context, rows: Rows, clock: Clock, flips: Flips, choice: i
     """(row, choice, time, kind) of every true dead centre among the low points."""
     heights = _Heights(context, rows, clock, flips, choice)
     keep = (hits.low >= 0) & (hits.high <= clock.count - 1)
-    hits = Hits(hits.row[keep], hits.low[keep], hits.high[keep])
+    hits = hits.take(keep)
     if not len(hits):
         return []
-    wide = hits.high - hits.low > 2
-    found = _touching(heights, Hits(hits.row[~wide], hits.low[~wide], hits.high[~wide]))
-    found += _resting(heights, Hits(hits.row[wide], hits.low[wide], hits.high[wide]))
+    found = _touching(heights, hits.take(~hits.rests))
+    found += _resting(heights, hits.take(hits.rests))
     return [(row, choice, time, kind) for row, time, kind in found]
 
 

@@ -17,14 +17,20 @@ FLAT = 1e-9
 
 @dataclass(frozen=True)
 class Hits:
-    """Low points of one choice: ``row (m,)`` and frames ``low (m,)`` … ``high (m,)`` about them."""
+    """Low points of one choice: ``row (m,)`` and frames ``low (m,)`` … ``high (m,)`` about them;
+    ``rests (m,)`` where several frames in a row are at zero."""
 
     row: Ints
     low: Ints
     high: Ints
+    rests: NDArray[np.bool_]
 
     def __len__(self) -> int:
         return len(self.row)
+
+    def take(self, which: NDArray[np.bool_]) -> Hits:
+        """Some of them."""
+        return Hits(self.row[which], self.low[which], self.high[which], self.rests[which])
 
 
 class Screen:
@@ -33,8 +39,7 @@ class Screen:
     def __init__(self, bits: int) -> None:
         self._tail: list[Array | None] = [None] * bits
         self._codes: NDArray[np.int16] | None = None
-        self._rows: list[list[Ints]] = [[] for _ in range(bits)]
-        self._frames: list[list[Ints]] = [[] for _ in range(bits)]
+        self._found: list[list[tuple[Ints, Ints, Array]]] = [[] for _ in range(bits)]
         self.any = False
 
     def see(self, start: int, sines: Sequence[Array], codes: NDArray[np.int16]) -> None:
@@ -54,21 +59,32 @@ class Screen:
             row, frame = _low_points(joined)
             if len(row):
                 self.any = True
-                self._rows[k].append(row)
-                self._frames[k].append(frame + first)
+                self._found[k].append(_for_all(joined, row, frame, first, len(codes)))
 
     def hits(self, choice: int) -> Hits:
-        """All low points of one choice, those that touch made one."""
-        if not self._rows[choice]:
+        """All low points of one choice, neighbours made one."""
+        if not self._found[choice]:
             empty = np.empty(0, dtype=np.intp)
-            return Hits(empty, empty, empty)
-        row, frame = np.concatenate(self._rows[choice]), np.concatenate(self._frames[choice])
+            return Hits(empty, empty, empty, empty.astype(bool))
+        row, frame, height = (np.concatenate(x) for x in zip(*self._found[choice], strict=True))
         order = np.lexsort((frame, row))
-        row, frame = row[order], frame[order]
+        row, frame, height = row[order], frame[order], height[order]
         fresh = np.ones(len(row), dtype=bool)
         fresh[1:] = (row[1:] != row[:-1]) | (frame[1:] - frame[:-1] > 1)
-        last = np.append(np.flatnonzero(fresh)[1:] - 1, len(row) - 1)
-        return Hits(row[fresh], frame[fresh] - 1, frame[last] + 1)
+        first = np.flatnonzero(fresh)
+        last = np.append(first[1:] - 1, len(row) - 1)
+        # Two frames to both sides of a dead centre are low as well; only at zero they rest there.
+        rests = (np.maximum.reduceat(height, first) < FLAT) & (last > first)
+        return Hits(row[fresh], frame[fresh] - 1, frame[last] + 1, rests)
+
+
+def _for_all(g: Array, row: Ints, frame: Ints, first: int, rows: int) -> tuple[Ints, Ints, Array]:
+    """Rows, frames and heights of low points; heights that all rows share count for each."""
+    height = g[row, frame]
+    if len(g) == rows:
+        return row, frame + first, height
+    every = np.repeat(np.arange(rows), len(frame))
+    return every, np.tile(frame + first, rows), np.tile(height, rows)
 
 
 def _low_points(g: Array) -> tuple[Ints, Ints]:
