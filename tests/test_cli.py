@@ -9,6 +9,7 @@ from __future__ import annotations
 import csv
 import json
 import os
+import re
 import shutil
 import subprocess
 import sys
@@ -159,6 +160,22 @@ def test_pose_over_frames_gives_a_list_for_each_branch(capsys: Capture) -> None:
     lines = said(capsys, *words)
     assert lines[0] == "bell rocker: 2 branches over 5 frames, complete"
     assert lines[1].split() == ["branch", "margin", "frames"]
+
+
+def test_a_narrow_terminal_folds_names_and_cuts_no_number(capsys: Capture) -> None:
+    from rigpose.cli import show
+
+    rows = [["1", "knee:left " * 12, "0.123", "-122.471"]]
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setattr(sys.stdout, "isatty", lambda: True, raising=False)
+        patch.setenv("COLUMNS", "60")
+        show.print_table(["", "branch", "margin", "slope"], rows)
+    lines = re.sub(r"\x1b\[[0-9;]*m", "", capsys.readouterr().out).splitlines()
+    assert len(lines) > 3
+    assert all(len(line) <= 60 for line in lines)
+    assert "0.123" in lines[1]
+    assert "-122.471" in lines[1]
+    assert "".join(lines[1:]).count("knee:left") == 12
 
 
 def test_pose_keeps_to_the_bends_asked_for(capsys: Capture) -> None:
@@ -564,6 +581,13 @@ def test_exit_codes_reach_the_shell() -> None:
     wrong = command("bake", "nowhere.shot.toml")
     assert (wrong.returncode, wrong.stdout) == (2, "")
     assert command("--version").stdout.startswith("rigpose ")
+
+
+def test_a_terminal_of_few_signs_is_no_fault(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setenv("PYTHONIOENCODING", "latin-1")
+    done = command("bake", "bell_rocker_stuck.shot.toml")
+    assert (done.returncode, done.stderr) == (1, "")
+    assert "frames 11 \\u2026 48: " in done.stdout
 
 
 def test_a_reader_that_leaves_early_is_no_fault() -> None:

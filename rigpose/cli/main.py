@@ -6,6 +6,7 @@ cut short); 2 wrong input; 3 a fault of the program; 130 interrupted.
 
 from __future__ import annotations
 
+import io
 import os
 import sys
 import traceback
@@ -64,6 +65,10 @@ for _verb in (check_command, pose_command, bake_command, flat_command, start_com
 def main(arguments: list[str] | None = None) -> None:
     """Run the command and leave with its exit code."""
     sys.excepthook = _fault
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            # A terminal that can't show a sign (a joint may be named in any script) shows its code.
+            stream.reconfigure(errors="backslashreplace")
     sys.exit(run(arguments))
 
 

@@ -10,7 +10,7 @@ import click
 import numpy as np
 
 from rigpose.cli.given import as_json, frame_options, keep_inputs, read_given, the_rig
-from rigpose.cli.show import counted, meter, print_json, print_table
+from rigpose.cli.show import counted, print_json, print_table
 from rigpose.cli.why import why_nothing
 from rigpose.files.csvfile import CsvWriter
 from rigpose.files.motionfile import to_file
@@ -53,10 +53,8 @@ def pose_command(rig: str, out: str | None, as_json: bool, **asked: Any) -> int:
     if asked["nearest"]:
         every = nearest_branch(loaded, drives, targets)
     else:
-        with meter("groups") as bar:
-            every = find_branches(loaded, drives, targets, budget=Budget(poses=asked["most"]),
-                                  mirrors=not asked["no_mirrors"],
-                                  watch=lambda _, done, total: bar.show(done, total))
+        every = find_branches(loaded, drives, targets, budget=Budget(poses=asked["most"]),
+                              mirrors=not asked["no_mirrors"])
     found = every.take(every.fitting(bends)) if bends else every
     written = out if out is not None and len(found) else None
     if written is not None:

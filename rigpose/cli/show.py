@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import shutil
 import sys
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
@@ -17,6 +18,9 @@ from rigpose.ground.errors import Problem
 
 if TYPE_CHECKING:
     from rich.progress import Progress, TaskID
+
+LEAST_TEXT = 32
+"""Columns that text keeps in a table on a narrow terminal."""
 
 
 def print_json(data: object) -> None:
@@ -52,21 +56,21 @@ def counted(number: int, one: str, many: str = "") -> str:
 
 
 def print_table(columns: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
-    """A table as wide as the terminal, or as its content where there is none.
+    """A table whose second column is text and all others numbers.
 
-    The second column is text, all others are numbers.
+    On a terminal the text is folded to its width; numbers are never cut or folded.
     """
     from rich.console import Console
     from rich.table import Table
     from rich.text import Text
 
-    table = Table(box=None, pad_edge=False, padding=(0, 2), header_style="bold")
+    table = Table(box=None, pad_edge=False, header_style="bold")
     for k, column in enumerate(columns):
-        table.add_column(Text(column), justify="left" if k == 1 else "right", overflow="fold")
+        table.add_column(Text(column), justify="left" if k == 1 else "right",
+                         overflow="fold", no_wrap=k != 1)
     for row in rows:
         table.add_row(*map(Text, row))
-    width = None if sys.stdout.isatty() else _width(columns, rows)
-    console = Console(width=width, highlight=False)
+    console = Console(width=_width(columns, rows), highlight=False)
     with console.capture() as capture:
         console.print(table)
     for line in capture.get().splitlines():
@@ -74,8 +78,15 @@ def print_table(columns: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
 
 
 def _width(columns: Sequence[str], rows: Sequence[Sequence[str]]) -> int:
-    """Room for every cell on one line, even where each sign is two columns wide."""
-    return sum(2 * max(map(len, cells)) + 4 for cells in zip(columns, *rows, strict=True))
+    """The terminal's, but at least all numbers and a little text; all there is without one."""
+    # A sign may be two columns wide.
+    widths = [2 * max(map(len, cells)) + 2 if k == 1 else max(map(len, cells)) + 2
+              for k, cells in enumerate(zip(columns, *rows, strict=True))]
+    whole = sum(widths)
+    if not sys.stdout.isatty():
+        return whole
+    least = whole - widths[1] + min(widths[1], LEAST_TEXT)
+    return min(whole, max(least, shutil.get_terminal_size().columns))
 
 
 class Meter:
