@@ -63,11 +63,8 @@ def test_a_coupling_rod_goes_straight_through_for_ten_turns(frames: int) -> None
 
 
 @pytest.mark.parametrize("turn", [
-    pytest.param(np.linspace(11, 350, 40), marks=pytest.mark.xfail(
-        strict=True, reason="only one of the rows is turned over between two frames")),
-    pytest.param(np.linspace(10, 350, 40), marks=pytest.mark.xfail(
-        strict=True, reason="a dead centre in the middle between two frames is lost")),
-    np.linspace(10, 350, 41), np.linspace(0, 350, 37)])
+    np.linspace(11, 350, 40), np.linspace(10, 350, 40), np.linspace(10, 350, 41),
+    np.linspace(0, 350, 37)])
 def test_a_coupling_rod_goes_straight_through_between_frames(turn: Array) -> None:
     found = rp.find_branches(four_bar(*PARALLEL), {"input": turn})
     assert len(found) == 2
@@ -245,10 +242,7 @@ def test_a_span_tells_where_it_begins_and_what_holds_back() -> None:
 
 @pytest.mark.parametrize(("turn", "gaps"), [
     (np.linspace(-20, 20, 41) + 0.1, 1),
-    pytest.param(np.linspace(-20, 20, 41) + 0.25, 1, marks=pytest.mark.xfail(
-        strict=True, reason="only one of the rows is told of its gap between two frames")),
-    pytest.param(np.linspace(-20, 20, 42), 1, marks=pytest.mark.xfail(
-        strict=True, reason="a gap in the middle between two frames is lost")),
+    (np.linspace(-20, 20, 41) + 0.25, 1), (np.linspace(-20, 20, 42), 1),
     (np.linspace(160, 200, 41) + 0.25, 0)])
 def test_a_linkage_that_opens_for_less_than_a_frame_says_so(turn: Array, gaps: int) -> None:
     """A coupler longer by 1e-6 than the frame of equal cranks: for |input| below about a tenth of
