@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import subprocess
 from pathlib import Path
 
@@ -29,3 +30,18 @@ def test_the_readme_has_each_command_as_one_line(name: str) -> None:
     at = lines.index(marker)
     assert (lines[at + 1], lines[at + 3]) == ("```sh", "```")
     assert lines[at + 2].strip()
+
+
+def test_the_developers_guide_names_only_what_is_there() -> None:
+    text = (ROOT / "DEVELOPERS.md").read_text(encoding="utf-8")
+    layers = re.findall(r"^\| `(rigpose/\w+)` \| (.+) \|$", text, re.MULTILINE)
+    assert {folder for folder, _ in layers} == {
+        f"rigpose/{path.parent.name}" for path in ROOT.glob("rigpose/*/__init__.py")}
+    for folder, holds in layers:
+        named = [word for word in re.findall(r"`(\w+)`", holds) if word != "check"]
+        missing = [name for name in named if not (ROOT / folder / f"{name}.py").exists()]
+        assert missing == [], folder
+    paths = re.findall(r"`((?:rigpose|tests|\.ci|model|solve|motion|files)/[\w./]+)`", text)
+    lost = [path for path in paths
+            if not ((ROOT / path).exists() or (ROOT / "rigpose" / path).exists())]
+    assert lost == []
