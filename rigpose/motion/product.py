@@ -18,8 +18,10 @@ from rigpose.solve.search import Context, base_table, shared_base
 Ints = NDArray[np.intp]
 STEP = 1e-9
 """Distances to rest are compared in steps of this part of the size."""
-MEET = 2e-7
-"""Poses of one frame nearer than this, with a margin as small, are one pose at a dead centre."""
+MEET = 1e-9
+"""A margin below this is a dead centre: squared heights within their error bound are set to 0."""
+PLACE = 2e-7
+"""At a dead centre places are known to the square root of rounding; nearer ones are one pose."""
 CELLS = 1 << 11
 
 
@@ -104,7 +106,7 @@ def _own(rest: Rest, rows: Rows) -> Ints:
             if place.shape[1] > 1:
                 away = place[:, others, frame] - place[:, row, frame][:, None]
                 gap = np.maximum(gap, np.abs(away).max(axis=0))
-        near = {int(k) for k in others[gap < MEET * rest.reach]} - {int(row)} - lost
+        near = {int(k) for k in others[gap < PLACE * rest.reach]} - {int(row)} - lost
         if any(k not in shadows or k < row for k in near):
             lost.add(int(row))
     return np.array([k for k in range(len(rows.codes)) if k not in lost], dtype=np.intp)
@@ -112,6 +114,8 @@ def _own(rest: Rest, rows: Rows) -> Ints:
 
 def _gaps(rest: Rest, rows: Rows) -> Array:
     """Squared distances to rest ``(B,)``, summed over the group's joints, at the first pose."""
+    if not len(rows.codes):
+        return np.zeros(0)
     single = rows.alive.shape[1] == 1
     first = np.argmax(rows.alive, axis=1)
     each = np.arange(len(first))
@@ -189,7 +193,7 @@ def _without_doubles(
     for k in range(len(near)):
         if not keep[near[k]]:
             continue
-        same = np.flatnonzero(np.abs(poses[k + 1:] - poses[k]).max(axis=1) < MEET * rest.reach)
+        same = np.flatnonzero(np.abs(poses[k + 1:] - poses[k]).max(axis=1) < PLACE * rest.reach)
         if len(same):
             meets[near[k]] = True
             keep[near[k + 1 + same]] = False

@@ -15,7 +15,7 @@ from rigpose.solve.rows import Pass, Rows, follow
 from rigpose.solve.search import Context
 
 Mask = NDArray[np.bool_]
-DEAD = 2e-7
+DEAD = 1e-9
 """Cells with less margin are dead centres, where a pose belongs to several signs."""
 MOST_ROUNDS = 64
 

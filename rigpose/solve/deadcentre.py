@@ -25,6 +25,9 @@ Ints = NDArray[np.intp]
 Found = list[tuple[int, int, float, str]]
 POINTS = 9
 ROUNDS = 5
+FINE = 33
+WIDEST, NARROWEST = 0.32, 1e-3
+"""Frames to both sides from which the order of a zero is read: wide, so that a high order shows."""
 ZERO = 1e-13
 """Squared sine that counts as zero: rounding of a placing, carried through a long chain."""
 FIT = np.array([-4.0, -3.0, -2.0, -1.0, 1.0, 2.0, 3.0, 4.0])
@@ -73,43 +76,83 @@ class _Heights:
 def _touching(heights: _Heights, hits: Hits) -> list[tuple[int, float, str]]:
     if not len(hits):
         return []
-    low, high = hits.low.astype(float), hits.high.astype(float)
+    row, low, high, opened = _single(heights, hits)
     grid = np.linspace(0.0, 1.0, POINTS)
     centre = (low + high) / 2
     for _ in range(ROUNDS):
         times = low[:, None] + (high - low)[:, None] * grid
-        g = heights(hits.row, times)
-        best = np.argmin(np.nan_to_num(np.abs(g), nan=np.inf), axis=1)
-        opened = (g < -ZERO).any(axis=1)
-        centre = times[np.arange(len(times)), best]
+        g = heights(row, times)
+        size = np.nan_to_num(np.abs(g), nan=np.inf)
+        least = size <= np.maximum(size.min(axis=1, keepdims=True), 0.1 * ZERO)
+        # A zero of high order is flat: the middle of what can't be told from zero.
+        centre = np.where(least, times, 0.0).sum(axis=1) / least.sum(axis=1)
         step = (high - low) / (POINTS - 1)
-        low = np.where(opened, low, centre - step)
-        high = np.where(opened, high, centre + step)
-    return _fitted(heights, hits, centre)
+        low, high = centre - step, centre + step
+    return _fitted(heights, row, centre, opened)
 
 
-def _fitted(heights: _Heights, hits: Hits, centre: Array) -> list[tuple[int, float, str]]:
-    """Order and time of each zero from heights on both sides."""
-    reach = np.minimum(0.08, np.minimum(centre - hits.low, hits.high - centre) / 4)
-    reach = np.maximum(reach, 1e-3)
-    times = centre[:, None] + reach[:, None] * FIT
+def _single(heights: _Heights, hits: Hits) -> tuple[Ints, Array, Array, NDArray[np.bool_]]:
+    """Brackets with one low point each: row, low and high times, and whether it is open there.
+
+    A drive that turns back just past a dead centre passes it twice within two frames.
+    """
+    grid = np.linspace(0.0, 1.0, FINE)
+    times = hits.low[:, None] + (hits.high - hits.low)[:, None] * grid
     g = heights(hits.row, times)
+    with np.errstate(invalid="ignore"):
+        middle = np.abs(g[:, 1:-1])
+        lowest = (middle <= np.abs(g[:, :-2])) & (middle < np.abs(g[:, 2:]))
+        shut = (g[:, 1:-1] < -ZERO) | (g[:, :-2] < -ZERO) | (g[:, 2:] < -ZERO)
+    which, at = np.nonzero(lowest)
+    return (hits.row[which], times[which, at], times[which, at + 2], shut[which, at])
+
+
+def _fitted(heights: _Heights, row: Ints, centre: Array,
+            opened: NDArray[np.bool_]) -> list[tuple[int, float, str]]:
+    """Order and time of each zero from heights on both sides."""
+    reach = _room(row, centre, float(heights.clock.count - 1))
+    times = centre[:, None] + reach[:, None] * FIT
+    g = heights(row, times)
     with np.errstate(divide="ignore", invalid="ignore"):
         left = np.log2(g[:, 0] / g[:, 2]) / 2
         right = np.log2(g[:, 7] / g[:, 5]) / 2
     p = np.rint(np.nan_to_num((left + right) / 2, nan=0.0, posinf=0.0, neginf=0.0))
     signs = np.sign(FIT)
-    with np.errstate(invalid="ignore"):
+    with np.errstate(invalid="ignore", divide="ignore"):
         h = signs * g ** (0.5 / np.maximum(p, 1.0))[:, None]
-    zero = _inverse(h, times)
+        secant = times[:, 0] - h[:, 0] * (times[:, -1] - times[:, 0]) / (h[:, -1] - h[:, 0])
+    clear = np.nanmin(np.abs(g), axis=1) > 1e3 * ZERO
+    zero = np.where(clear, _inverse(h, times), np.nan_to_num(secant, nan=-1e300))
     zero = np.where(np.abs(zero - centre) < 4 * reach, zero, centre)
-    at = heights(hits.row, zero[:, None])[:, 0]
+    at = heights(row, zero[:, None])[:, 0]
     out = []
-    for k, row in enumerate(hits.row):
-        if (g[k] < -ZERO).any() or at[k] < -ZERO:
-            out.append((int(row), float(centre[k]), "gap"))
+    for k in range(len(row)):
+        if (g[k] < -ZERO).any() or at[k] < -ZERO or opened[k]:
+            out.append((int(row[k]), float(centre[k]), "gap"))
         elif at[k] <= 1e3 * ZERO and p[k] >= 1:
-            out.append((int(row), float(zero[k]), "passed" if p[k] % 2 else "touched"))
+            out.append((int(row[k]), float(zero[k]), "passed" if p[k] % 2 else "touched"))
+    return _one_gap(out)
+
+
+def _room(row: Ints, centre: Array, last: float) -> Array:
+    """How far to both sides a zero can be looked at: not into the next one, nor past the ends."""
+    room = np.minimum(np.minimum(centre, last - centre), WIDEST)
+    for k in range(1, len(row)):
+        if row[k] == row[k - 1]:
+            part = abs(float(centre[k] - centre[k - 1])) / 3
+            room[k], room[k - 1] = min(room[k], part), min(room[k - 1], part)
+    reach: Array = np.maximum(room, NARROWEST) / FIT[-1]
+    return reach
+
+
+def _one_gap(found: list[tuple[int, float, str]]) -> list[tuple[int, float, str]]:
+    """Both ends of a gap within one frame are one event."""
+    out: list[tuple[int, float, str]] = []
+    for event in found:
+        if out and event[2] == out[-1][2] == "gap" and event[0] == out[-1][0] and (
+                abs(event[1] - out[-1][1]) < 2.0):
+            continue
+        out.append(event)
     return out
 
 
@@ -138,6 +181,6 @@ def _resting(heights: _Heights, hits: Hits) -> list[tuple[int, float, str]]:
         dot += sum(float((before.targets[t][0] - inside.targets[t][0])
                          * (after.targets[t][0] - inside.targets[t][0])) for t in inside.targets)
         at = float(heights(np.array([row]), np.array([[low + 1.0]]))[0, 0])
-        if abs(at) <= 1e3 * ZERO:
+        if abs(at) <= 1e3 * ZERO and dot != 0.0:
             out.append((int(row), float(high - 1), "passed" if dot < 0 else "touched"))
     return out

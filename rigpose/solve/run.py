@@ -6,12 +6,13 @@ are dropped at once) or takes the way that ``ways`` names for each branch and fr
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from functools import singledispatch
 
 import numpy as np
 from numpy.typing import NDArray
 
+from rigpose.ground.tolerance import EPS
 from rigpose.kernels.meet import (
     Array,
     Crossing,
@@ -53,6 +54,9 @@ from rigpose.solve.values import joints_of_value
 
 Ways = Mapping[int, Array] | None
 """For every choice ``(B or 1, F or 1)`` of +1 and -1; None tries both."""
+Rate = Callable[[], tuple[Array | float, Array | float, Array | float]]
+"""How fast a squared sine and a squared height change with the places read, and the rounding of
+the squared sine."""
 CAREFUL = 1e-7
 ONE_PLACE = 64.0
 """Centres nearer than so many error bounds can't be told apart."""
@@ -153,7 +157,7 @@ def _(step: Meet, table: Table, ways: Ways, number: int) -> None:
         radius, centre = _length(table, second.radius), table.point(second.centre)
         crossing = line_circle(p, d, centre, radius)
         choose(step.dst, step.bit, crossing, table, ways, number,
-               (second.centre, *_line_points(first)), lambda: (2.0 / radius, radius))
+               (second.centre, *_line_points(first)), lambda: (2.0 / radius, radius, 16 * EPS))
     elif isinstance(first, Line) and isinstance(second, Line):
         point, sine = line_line(*line_of(table, first), *line_of(table, second))
         parents = (*_line_points(first), *_line_points(second))
@@ -183,10 +187,14 @@ def _without_free(step: Meet, table: Table, crossing: Crossing, way: Array,
 
 def _circle_rate(
     c1: Array, r1: Array | float, c2: Array, r2: Array | float
-) -> tuple[Array | float, Array | float]:
-    """How fast the squared sine and the squared height change with the centres' places."""
+) -> tuple[Array | float, Array | float, Array | float]:
+    """How fast the squared sine and the squared height change with the centres' places, and the
+    rounding of the squared sine itself: of its two factors far^2 - d^2 and d^2 - near^2."""
     d = c2 - c1
-    return 2 * np.sqrt(dot(d, d)) / (r1 * r2), np.minimum(r1, r2)
+    d2 = dot(d, d)
+    far, near = (r1 + r2) ** 2, (r1 - r2) ** 2
+    own = (np.abs(far - d2) * (d2 + near) + np.abs(d2 - near) * (far + d2)) / (4 * (r1 * r2) ** 2)
+    return 2 * np.sqrt(d2) / (r1 * r2), np.minimum(r1, r2), 4 * EPS * own
 
 
 def _parents(table: Table, points: Sequence[Point]) -> Array | float:
@@ -198,16 +206,16 @@ def _parents(table: Table, points: Sequence[Point]) -> Array | float:
 
 def choose(
     dst: Point, bit: int, crossing: tuple[Array, Array, Array, Array], table: Table, ways: Ways,
-    number: int, parents: Sequence[Point], rate: object,
+    number: int, parents: Sequence[Point], rate: Rate,
 ) -> None:
     """Take one way or both at a crossing; touching ones within their error bound hold both."""
     base, side, sine2, sine = crossing
     bound: Array | float = 0.0
     if table.careful:
-        per_place, radius = rate()  # type: ignore[operator]
+        per_place, radius, own = rate()
         delta = _parents(table, parents)
-        allowed = per_place * delta + 4 * table.rounding
-        touch = (sine2 < 0) & (sine2 >= -allowed)
+        allowed = per_place * delta + own
+        touch = np.abs(sine2) <= allowed
         if touch.any():
             side = np.where(touch, 0.0, side)
             sine = np.where(touch, 0.0, sine)
@@ -334,7 +342,7 @@ def _(step: Swing, table: Table, ways: Ways, number: int) -> None:
     long = np.sqrt(dot(w, w))
     helper = -1 - number
     choose(helper, step.bit, crossing, table, ways, number, (step.pivot, step.through),
-           lambda: (2.0 / long, 1.0))
+           lambda: (2.0 / long, 1.0, 16 * EPS))
     heading = table.point(helper)
     pivot, c = table.point(step.pivot), _local(table, step.pivot_local)
     arms = [np.sqrt(dot(v, v)) for v in (_local(table, k) - c for k in step.local)]
@@ -395,7 +403,7 @@ def _(step: Level, table: Table, ways: Ways, number: int) -> None:
     sine2 = (1.0 - rise) * (1.0 + rise)
     sine = np.sqrt(sine2)
     choose(-1 - number, step.bit, (perp(d) * rise, d * sine, sine2, sine), table, ways, number, (),
-           lambda: (2.0 / long, 1.0))
+           lambda: (2.0 / long, 1.0, 16 * EPS))
     # The choice has doubled the branches: what was read before is read again.
     heading = table.point(-1 - number)
     a, b = (_local(table, k) for k in step.pair)
