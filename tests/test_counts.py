@@ -257,7 +257,8 @@ def test_a_crank_that_comes_round_may_find_another_assembly() -> None:
 
     def pose(x: float, y: float, turn: float) -> Array:
         c, s = np.cos(turn), np.sin(turn)
-        return deck @ np.array([[c, s], [-s, c]]) + (x, y)
+        placed: Array = deck @ np.array([[c, s], [-s, c]]) + (x, y)
+        return placed
 
     start, end = pose(1.109057, 0.372716, -1.688621), pose(-2.228925, 0.662025, -3.437894)
     shot = rp.Shot(

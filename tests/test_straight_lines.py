@@ -41,7 +41,8 @@ def at_rest(found: rp.Branches, joint: str, frame: int) -> Array:
     rest = rp.find_rest(found.rig).positions
     away = np.abs(found.positions[:, frame] - rest).max(axis=(1, 2))
     assert np.nanmin(away) < 1e-9
-    return path(found, joint)[int(np.nanargmin(away))]
+    way: Array = path(found, joint)[int(np.nanargmin(away))]
+    return way
 
 
 def bar(joints: list[str], places: list[float]) -> dict[str, object]:
@@ -252,7 +253,8 @@ def hoeken(frame: float, coupler: float) -> rp.Rig:
 def traced(frame: float, coupler: float, degrees: float) -> Array:
     """The way of the tracing point, (n, 2), over so much of the crank's turn about 180."""
     turn = 180 + np.linspace(-degrees / 2, degrees / 2, 20001)
-    return path(rp.find_branches(hoeken(frame, coupler), {"turn": turn}), "trace")[0]
+    way: Array = path(rp.find_branches(hoeken(frame, coupler), {"turn": turn}), "trace")[0]
+    return way
 
 
 @pytest.mark.parametrize(("degrees", "stroke", "spread"), [

@@ -6,9 +6,9 @@ import resource
 import sys
 import time
 
+import numpy as np
 from machine import drag_rig, ladder, timed
 
-import numpy as np
 import rigpose as rp
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 from machine import Array, fourbar, timed
+from numpy.typing import NDArray
 from scipy.optimize import fsolve
 
 import rigpose as rp
@@ -11,7 +12,7 @@ import rigpose as rp
 FRAMES, SOLVED = 1_000_000, 2_000
 
 
-def by_hand(turn: Array) -> tuple[Array, Array, Array]:
+def by_hand(turn: Array) -> tuple[Array, NDArray[np.float32], NDArray[np.uint8]]:
     """Both branches with margins and states, written for this linkage alone."""
     a, b, c, d = 40.0, 120.0, 80.0, 100.0
     out = np.empty((2, len(turn), 4, 2))

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from dataclasses import replace
 
-import numpy as np
 from machine import RIGS, Lengths, timed
 from scipy.optimize import fsolve, least_squares
 

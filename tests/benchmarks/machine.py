@@ -1,4 +1,4 @@
-"""The rigs of the benchmarks, and what a user would use instead of rigpose: SciPy on all lengths."""
+"""The rigs of the benchmarks, and what a user would use instead: SciPy on all lengths."""
 
 from __future__ import annotations
 
@@ -21,7 +21,8 @@ def fourbar() -> rp.Rig:
     return rp.make_rig(
         {"o": {"at": [0, 0], "pin": True}, "q": {"at": [100, 0], "pin": True},
          "a": [30.64, 25.71], "b": [143.19, 67.34]},
-        {"crank": {"ends": ["o", "a"], "length": 40}, "coupler": {"ends": ["a", "b"], "length": 120},
+        {"crank": {"ends": ["o", "a"], "length": 40},
+         "coupler": {"ends": ["a", "b"], "length": 120},
          "rocker": {"ends": ["q", "b"], "length": 80}},
         cranks={"drive": {"turns": "crank", "from": "ground", "about": "o"}})
 
@@ -87,12 +88,14 @@ class Lengths:
     def set(self, pose: Array) -> Array:
         """Known joints from a pose ``(n_joints, 2)``; the others as unknowns."""
         self.pose[:] = pose
-        return self.pose[self.free].ravel()
+        unknowns: Array = self.pose[self.free].ravel()
+        return unknowns
 
     def residual(self, x: Array) -> Array:
         self.pose[self.free] = x.reshape(-1, 2)
         e = self.pose[self.ends[:, 1]] - self.pose[self.ends[:, 0]]
-        return (e * e).sum(axis=1) - self.length**2
+        off: Array = (e * e).sum(axis=1) - self.length**2
+        return off
 
     def jacobian(self, x: Array) -> Array:
         self.pose[self.free] = x.reshape(-1, 2)
