@@ -20,7 +20,7 @@ from rigpose.model.equations import Array
 from rigpose.motion.branches import Search, branches_on, choice_steps, plan_of, search_on
 from rigpose.motion.branchset import Branches
 from rigpose.motion.channels import channels
-from rigpose.motion.choose import Choice, choose
+from rigpose.motion.choose import Choice, asked, choose
 from rigpose.motion.explain import explain
 from rigpose.motion.motion import Event, Motion, Span
 from rigpose.motion.rowstart import Row, row_of
@@ -110,7 +110,7 @@ class Baking:
         self.row: Row | None = None
         if self.start.choice.number >= 0:
             self.row = row_of(self.context, self.clock, self.start.frame,
-                              self.start.search, self.start.choice.number)
+                              self.start.search, self.start.choice.number, asked(shot))
 
     def _start(self, budget: Budget) -> Start:
         """The first frame that assembles; in most shots frame 0."""

@@ -35,7 +35,7 @@ def choose(shot: Shot, branches: Branches) -> Choice:
     """
     if not len(branches):
         return Choice(-1, (_nothing(shot, branches),))
-    fitting = branches.fitting(_asked(shot))
+    fitting = branches.fitting(asked(shot))
     if not len(fitting):
         return Choice(-1, (_no_such(shot, branches),))
     if not shot.near:
@@ -51,7 +51,8 @@ def choose(shot: Shot, branches: Branches) -> Choice:
     return Choice(mine)
 
 
-def _asked(shot: Shot) -> Mapping[str, str]:
+def asked(shot: Shot) -> Mapping[str, str]:
+    """The bends that a shot asks for, by joint."""
     if isinstance(shot.branch, str):
         return shot.rig.branches[shot.branch]
     return shot.branch or {}

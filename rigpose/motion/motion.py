@@ -149,7 +149,8 @@ class Motion:
     def note(self) -> str:
         """What happened, in a few lines for a person."""
         missing = int((self.state == State.NONE).sum())
-        lines = [f"{len(self)} frames of {self.rig.name}, branch {self.name}: "
+        row = f", branch {self.name}" if self.name else ", no branch taken"
+        lines = [f"{len(self)} frames of {self.rig.name}{row}: "
                  + (f"{missing} without a pose" if missing else "every frame has a pose")]
         lines += [str(s) for s in self.spans]
         lines += [str(p) for p in self.problems]

@@ -1,7 +1,8 @@
 """Where a chosen row begins: the signs of every crossing at its first frame.
 
-At a dead centre two rows begin in one pose. The one that lives longest is taken; of several the
-one that moves most evenly, and the motion says so.
+At a dead centre two rows begin in one pose. The bends that the shot asks for are those that a row
+has once it has left it. Of those that fit, the one that lives longest is taken, then the one that
+moves most evenly, and the motion says so.
 """
 
 from __future__ import annotations
@@ -12,13 +13,14 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from rigpose.ground.words import Found, State
 from rigpose.model.equations import Array
-from rigpose.motion.branches import Search
-from rigpose.motion.product import MEET
-from rigpose.motion.settle import Begin
+from rigpose.motion.branches import Search, made_from
+from rigpose.motion.branchset import Branches
+from rigpose.motion.product import MEET, PLACE, Sorted
+from rigpose.motion.settle import Begin, follow_from
 from rigpose.solve.clock import Clock, part_of_clock
-from rigpose.solve.plan import Group
-from rigpose.solve.rows import Pass, Rows, follow
+from rigpose.solve.rows import Pass, Rows
 from rigpose.solve.search import Context
 
 AHEAD = 256
@@ -46,19 +48,26 @@ class Row:
         return out
 
 
-def row_of(context: Context, clock: Clock, frame: int, search: Search, number: int) -> Row:
-    """The row that goes on from one branch of the frame at which it is chosen."""
-    begins, notes = [], []
-    for g, (group, chosen) in enumerate(zip(context.plan.groups, search.groups, strict=True)):
-        rows, row = chosen.rows, int(search.picks.index[number, g])
-        if group.binary and rows.margin[row, 0] < MEET:
-            same = _same(context, rows, row)
-            if len(same) > 1:
-                row, note = _settled(context, group, clock, frame, rows, same)
-                notes += [note] if note else []
-        begins.append(_begin(rows, row))
+def row_of(context: Context, clock: Clock, frame: int, search: Search, number: int,
+           bends: Mapping[str, str]) -> Row:
+    """The row that goes on from one branch of the frame at which it is chosen.
+
+    bends : what the shot asks for; at a dead centre it is looked for in the frames after
+    """
+    rows = [(g.rows, int(search.picks.index[number, k])) for k, g in enumerate(search.groups)]
+    same = [_same(context, r, row) for r, row in rows]
     names = search.branches.names
-    return Row(tuple(begins), names[number], names.bends(number), frame, tuple(notes))
+    name = names[number]
+    note: tuple[str, ...] = ()
+    if any(len(s) > 1 for s in same) and clock.count - frame > 2:
+        ahead = _ahead(context, clock, frame, rows, same)
+        if len(ahead.branches):
+            best, note = _best(ahead.branches, bends)
+            rows = [(r, int(s[ahead.picks.index[best, k]]))
+                    for k, ((r, _), s) in enumerate(zip(rows, same, strict=True))]
+            name, names, number = ahead.branches.names[best], ahead.branches.names, best
+    begins = tuple(_begin(r, row) for r, row in rows)
+    return Row(begins, name, names.bends(number), frame, note)
 
 
 def _begin(rows: Rows, row: int) -> Begin:
@@ -69,34 +78,43 @@ def _begin(rows: Rows, row: int) -> Begin:
 
 def _same(context: Context, rows: Rows, row: int) -> NDArray[np.intp]:
     """Live rows in the same pose, the given one first; several only at a dead centre."""
+    if not rows.group.binary or not rows.margin[row, 0] < MEET:
+        return np.array([row])
     gap = np.zeros(len(rows.codes))
     for place in rows.places:
         mine = place[:, :, 0]
         gap = np.maximum(gap, np.abs(mine - mine[:, row % mine.shape[1]][:, None]).max(axis=0))
-    near = np.flatnonzero((gap <= MEET * context.rest.reach) & rows.alive[:, 0])
+    near = np.flatnonzero((gap <= PLACE * context.rest.reach) & rows.alive[:, 0])
     return np.concatenate([[row], near[near != row]])
 
 
-def _settled(context: Context, group: Group, clock: Clock, frame: int, cells: Rows,
-             same: NDArray[np.intp]) -> tuple[int, str]:
-    high = min(frame + AHEAD, clock.count)
-    if high - frame < 3:
-        return int(same[0]), ""
-    part = part_of_clock(clock, frame, high)
-    rows = follow(context, group, part, cells.codes[same])
-    lives = np.where(rows.alive.all(axis=1), high, np.argmin(rows.alive, axis=1))
-    longest = np.flatnonzero(lives == lives.max())
-    even = _unevenness(rows)[longest]
-    chosen = int(longest[np.argmin(np.round(even, 12))])
-    why = "that lives longest" if len(longest) < len(same) else "that moves most evenly"
-    return int(same[chosen]), (f"the first pose is a dead centre in which {len(same)} rows meet; "
-                               f"the one {why} is taken")
+def _ahead(context: Context, clock: Clock, frame: int, rows: Sequence[tuple[Rows, int]],
+           same: Sequence[NDArray[np.intp]]) -> Search:
+    """The rows that begin in one pose, over some frames."""
+    part = part_of_clock(clock, frame, min(frame + AHEAD, clock.count))
+    picks = []
+    for (r, _), which in zip(rows, same, strict=True):
+        followed = follow_from(context, r.group, part, r.take(which))
+        picks.append(Sorted(followed, np.arange(len(which)), np.zeros(len(which))))
+    return made_from(context, part, np.arange(part.count, dtype=float), picks, Found.COMPLETE)
 
 
-def _unevenness(rows: Rows) -> Array:
-    """Mean squared second difference of the places ``(B,)``."""
-    total = np.zeros(len(rows.codes))
-    for place in rows.places:
-        bend = np.diff(place, n=2, axis=2)
-        total = total + np.nan_to_num(np.nanmean(np.nan_to_num(bend) ** 2, axis=(0, 2)))
-    return total
+def _best(ahead: Branches, bends: Mapping[str, str]) -> tuple[int, tuple[str, ...]]:
+    """The row that bends as asked; of several the one that lives longest, then the evenest."""
+    fitting = ahead.fitting(bends)
+    chosen = fitting if len(fitting) else np.arange(len(ahead))
+    alive = ahead.state[chosen] > State.NONE
+    lives = np.where(alive.all(axis=1), alive.shape[1], np.argmin(alive, axis=1))
+    longest = chosen[lives == lives.max()]
+    best = int(longest[np.argmin(np.round(_unevenness(ahead.positions[longest]), 12))])
+    why = "bends as asked" if len(fitting) < len(ahead) and len(chosen) == 1 else (
+        "lives longest" if len(longest) < len(chosen) else "moves most evenly")
+    return best, (f"the first pose is a dead centre in which {len(ahead)} rows meet; "
+                  f"the one that {why} is taken",)
+
+
+def _unevenness(positions: Array) -> Array:
+    """Mean squared second difference of the places ``(n_branches,)``."""
+    bend = np.nan_to_num(np.diff(positions, n=2, axis=1))
+    uneven: Array = (bend * bend).mean(axis=(1, 2, 3))
+    return uneven

@@ -64,11 +64,18 @@ def pieces(context: Context, clock: Clock, begins: Sequence[Begin],
 
 
 def _follow(context: Context, group: Group, clock: Clock, begin: Begin) -> Rows:
-    if group.binary:
-        return follow(context, group, clock, begin.codes, begin.values)
     alive = np.array([[bool(np.isfinite(begin.places[0]).all()) if begin.places else True]])
-    cells = Cells(group, begin.codes, list(begin.places), alive, np.ones((1, 1)), [],
-                  Found.COMPLETE, dict(begin.values))
+    start = Rows(group, begin.codes, list(begin.places), alive, np.ones((1, 1)),
+                 dict(begin.values))
+    return follow_from(context, group, clock, start)
+
+
+def follow_from(context: Context, group: Group, clock: Clock, start: Rows) -> Rows:
+    """Rows over a clock's frames from their poses in its first one."""
+    if group.binary:
+        return follow(context, group, clock, start.codes, start.values)
+    cells = Cells(group, start.codes, start.places, start.alive, start.margin, [],
+                  Found.COMPLETE, dict(start.values))
     return walk(context, group, clock, cells, 0, 1)
 
 

@@ -132,6 +132,10 @@ def _place(rig: Rig, joint: str, wish: object, problems: list[Problem]) -> Array
     if joint not in rig.index:
         problems.append(_unknown(rig, "joint", joint, rig.joint_names))
         return None
+    if rig.joints[rig.index[joint]].pin:
+        problems.append(Problem(rig.source, part, "moves a joint that is not pinned",
+                                "a pinned joint", "target another joint, or unpin this one"))
+        return None
     if isinstance(wish, Mapping):
         return _by_axis(rig, joint, wish, problems)
     try:
