@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import replace
 from itertools import combinations
@@ -543,7 +544,32 @@ def test_rest_tells_how_far_joints_move() -> None:
     joints: Mapping[str, Any] = {"quay": {"at": [0, 0], "pin": True}, "tip": [1.5, 0]}
     report = check(make_rig(joints, {"arm": {"ends": ["quay", "tip"], "length": 1.0}}))
     assert report.moved == {"tip": pytest.approx(0.5)}
+    assert report.unplaced == ()
     assert "tip by 0.5 m" in str(report)
+
+
+@pytest.mark.parametrize(("pin", "tip", "said"), [
+    ([3, 4], [3, 1], ", with every joint where the file puts it."),
+    ([3, 4], {}, ", with every placed joint where the file puts it; places were found for tip."),
+    ([3, 4.5], {}, " once these joints move: pin by # m; places were found for tip."),
+    ({}, {}, ", with every placed joint where the file puts it; places were found for pin, tip."),
+])
+def test_rest_tells_which_joints_have_no_place_in_the_file(pin: object, tip: object,
+                                                           said: str) -> None:
+    joints: Mapping[str, Any] = {"quay": {"at": [0, 0], "pin": True}, "pin": pin, "tip": tip}
+    report = check(make_rig(joints, {"arm": {"ends": ["quay", "pin"], "length": 5.0},
+                                     "rod": {"ends": ["pin", "tip"], "length": 3.0}}))
+    told = re.sub(r"[\d.]+ m", "# m", str(report).splitlines()[1])
+    assert told == f"At rest all lengths hold{said}"
+    assert report.as_dict()["unplaced"] == tuple(n for n in ("pin", "tip") if joints[n] == {})
+
+
+def test_a_rig_that_nothing_places_says_so() -> None:
+    report = check(make_rig({"bow": {}, "stern": {}},
+                            {"keel": {"ends": ["bow", "stern"], "length": 2.0}}))
+    assert report.unplaced == ("bow", "stern")
+    assert str(report).splitlines()[1] == (
+        "At rest all lengths hold; the file gives no places, so they were found.")
 
 
 def test_the_rest_that_is_reported_holds_all_lengths_for_the_judge() -> None:

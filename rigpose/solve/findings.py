@@ -40,6 +40,7 @@ class Report:
     joints, bones : how many; size : the largest distance between two joints at rest
     misfit : the largest departure of a length at rest, a fraction of the size; worst : its part
     moved : joints that rest moves from their written places, and how far
+    unplaced : joints that have no written place; rest has found one
     freedoms : finite mobility; freedoms_first_order : by rank at rest; freedoms_counted :
     coordinates less conditions; why : how they come to differ, in words
     moving : groups that still move; loose : joints that nothing holds
@@ -63,6 +64,7 @@ class Report:
     moved: Mapping[str, float]
     slack: float
     close: float
+    unplaced: tuple[str, ...] = ()
     freedoms: int = 0
     freedoms_first_order: int = 0
     freedoms_counted: int = 0
@@ -130,12 +132,17 @@ class Report:
         if not self.assembles:
             return (f"It does not assemble: at best '{self.worst}' is off by "
                     f"{amount(self.misfit * self.size)} {self.unit}.")
+        if len(self.unplaced) == self.joints:
+            return "At rest all lengths hold; the file gives no places, so they were found."
+        found = "" if not self.unplaced else (
+            f"; places were found for {listed(self.unplaced, SHOWN)}")
         if not self.moved:
-            return "At rest all lengths hold, with every joint where the file puts it."
+            which = "placed joint" if self.unplaced else "joint"
+            return f"At rest all lengths hold, with every {which} where the file puts it{found}."
         far = sorted(self.moved.items(), key=lambda pair: -pair[1])
         text = ", ".join(f"{name} by {amount(d)} {self.unit}" for name, d in far[:SHOWN])
         more = f" and {len(far) - SHOWN} more" if len(far) > SHOWN else ""
-        return f"At rest all lengths hold once these joints move: {text}{more}."
+        return f"At rest all lengths hold once these joints move: {text}{more}{found}."
 
     def _gap(self, g: Gap) -> str:
         return (f"Can never close: '{g.part}' holds {g.ends[0]} and {g.ends[1]} "

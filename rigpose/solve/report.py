@@ -60,7 +60,8 @@ def _at_rest(rest: Rest, verdict: Verdict) -> Report:
     return Report(
         name=rig.name, dim=rig.dim, unit=rig.unit, joints=len(rig.joints), bones=len(rig.bones),
         size=rest.size, misfit=misfit, worst=worst,
-        moved=moved, slack=rig.slack, close=rig.close)
+        moved=moved, slack=rig.slack, close=rig.close,
+        unplaced=tuple(j.name for j in rig.joints if j.at is None))
 
 
 def _lengths(report: Report, found: Study) -> Report:
