@@ -14,7 +14,7 @@ from rigpose.files.rigfile import load_rig
 from rigpose.files.shotkeys import Desk, read_keys
 from rigpose.files.shotspec import ShotSpec
 from rigpose.ground.errors import BadInput
-from rigpose.model.decode import decode
+from rigpose.model.decode import decode, fitting
 from rigpose.model.names import shown
 from rigpose.model.notes import Notes
 from rigpose.model.rig import Rig
@@ -80,11 +80,7 @@ def _spec(notes: Notes, data: Mapping[str, object]) -> ShotSpec:
     if spec is not None:
         return spec
     least = {"rigpose": VERSION, "rig": _REFUSED, "fps": 24, "frames": [1, 1]}
-    silent = Notes(lambda _: "")
-    for key, value in data.items():
-        if decode(silent, (), {**least, key: value}, ShotSpec) is not None:
-            least[key] = value
-    return msgspec.convert(least, ShotSpec)
+    return msgspec.convert(least | fitting(data, ShotSpec), ShotSpec)
 
 
 def _rig(notes: Notes, file: Path, name: str) -> Rig | None:

@@ -6,10 +6,12 @@ import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
+import msgspec
+
 from rigpose.files.shotspec import KeySpec
 from rigpose.ground.errors import BadInput
 from rigpose.model.arithmetic import read_number
-from rigpose.model.decode import decode
+from rigpose.model.decode import decode, fitting
 from rigpose.model.names import KeyPath, shown
 from rigpose.model.notes import Notes
 from rigpose.model.rig import Drive, Rig, Span
@@ -58,14 +60,12 @@ def read_keys(desk: Desk, raw: Sequence[object]) -> tuple[Key, ...]:
     keys = []
     before: float | None = None
     for place, entry in enumerate(raw):
-        path = ("keys", place)
-        spec = decode(desk.notes, path, entry, KeySpec)
-        frame = None if spec is None else desk.number((*path, "frame"), spec.frame)
-        if spec is None or frame is None:
+        key = _key(desk, ("keys", place), entry)
+        if key is None:
             continue
-        _check_order(desk.notes, (*path, "frame"), before, frame)
-        before = frame if before is None else max(frame, before)
-        keys.append(_key(desk, path, spec, frame))
+        _check_order(desk.notes, ("keys", place, "frame"), before, key.frame)
+        before = key.frame if before is None else max(key.frame, before)
+        keys.append(key)
     return tuple(keys)
 
 
@@ -80,10 +80,22 @@ def _check_order(notes: Notes, path: KeyPath, before: float | None, frame: float
                   f"frame {frame:g} after frame {before:g}", "move it up")
 
 
-def _key(desk: Desk, path: KeyPath, spec: KeySpec, frame: float) -> Key:
-    if not spec.drive and not spec.target:
+def _key(desk: Desk, path: KeyPath, raw: object) -> Key | None:
+    """One entry, or None where its frame is wrong; all else in it is looked at all the same."""
+    whole = decode(desk.notes, path, raw, KeySpec)
+    right = fitting(raw, KeySpec)
+    spec = whole or msgspec.convert({"frame": 0, **right}, KeySpec)
+    if whole is not None and not spec.drive and not spec.target:
         desk.notes.add(path, "a key has a drive or a target", "neither",
                        "write drive = { … } or target = { … }, or take the key out")
+    frame = desk.number((*path, "frame"), spec.frame) if "frame" in right else None
+    drives, targets = _asked(desk, path, spec)
+    return None if frame is None else Key(frame, drives, targets, spec.ease)
+
+
+def _asked(desk: Desk, path: KeyPath, spec: KeySpec) -> tuple[
+        dict[str, float], dict[str, tuple[float | None, ...]]]:
+    """An entry's drives and targets."""
     drives, targets = {}, {}
     for name, value in spec.drive.items():
         driven = _drive(desk, (*path, "drive", name), name, value)
@@ -93,7 +105,7 @@ def _key(desk: Desk, path: KeyPath, spec: KeySpec, frame: float) -> Key:
         place = _target(desk, (*path, "target", name), name, value)
         if place is not None:
             targets[name] = place
-    return Key(frame, drives, targets, spec.ease)
+    return drives, targets
 
 
 def _drive(desk: Desk, path: KeyPath, name: str, raw: object) -> float | None:

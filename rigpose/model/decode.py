@@ -23,6 +23,18 @@ def decode(notes: Notes, path: KeyPath, raw: object, spec: type[SpecT]) -> SpecT
         return None
 
 
+def fitting(raw: object, spec: type[msgspec.Struct]) -> dict[str, object]:
+    """The keys of ``raw`` that are known and hold what they should; none where it is no table.
+
+    So that one wrong key hides no mistake inside the others.
+    """
+    if not isinstance(raw, dict):
+        return {}
+    fields = _fields(spec)
+    return {key: value for key, value in raw.items()
+            if key in fields and _fits(value, fields[key].type)}
+
+
 @cache
 def _fields(spec: type[msgspec.Struct]) -> Mapping[str, msgspec.structs.FieldInfo]:
     return {f.encode_name: f for f in msgspec.structs.fields(spec)}

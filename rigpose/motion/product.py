@@ -206,7 +206,7 @@ def _poses(picks: Sequence[Sorted], index: Ints) -> Array:
     for g, p in enumerate(picks):
         for place in p.rows.places:
             mine = place[:, :, 0]
-            columns.append(np.broadcast_to(mine, (2, len(index))) if mine.shape[1] == 1
+            columns.append(np.broadcast_to(mine, (len(mine), len(index))) if mine.shape[1] == 1
                            else mine[:, index[:, g]])
     return np.concatenate(columns).T if columns else np.zeros((len(index), 0))
 

@@ -68,7 +68,7 @@ def _delayed(rows: Rows, frame: int, frames: int) -> Rows:
 
     b = len(rows.codes)
     return replace(
-        rows, places=[longer(np.broadcast_to(p, (2, b, frames - frame)), np.nan)
+        rows, places=[longer(np.broadcast_to(p, (len(p), b, frames - frame)), np.nan)
                       for p in rows.places],
         alive=longer(rows.alive, 0).astype(bool), margin=longer(rows.margin, np.nan),
         values={v: longer(np.broadcast_to(a, (b, frames - frame)), np.nan)

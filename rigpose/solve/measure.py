@@ -76,8 +76,8 @@ def _rail(step: Check, table: Table) -> Array:
     lines, k = table.eqs.lines, step.index
     p = table.point(step.points[0])
     if lines.along[k, 0] == GROUND:
-        d = lines.direction[k].reshape(2, 1, 1)
-        return cross(d, p - lines.through[k].reshape(2, 1, 1))
+        d = lines.direction[k].reshape(-1, 1, 1)
+        return cross(d, p - lines.through[k].reshape(-1, 1, 1))
     a, b = table.point(step.points[1]), table.point(step.points[2])
     e = b - a
     return np.asarray(cross(e, p - a) / np.sqrt(dot(e, e)))
@@ -88,7 +88,7 @@ def _along(step: Check, table: Table) -> Array:
     lines, k = table.eqs.lines, step.index
     p = table.point(step.points[0])
     if lines.along[k, 0] == GROUND:
-        return dot(lines.direction[k].reshape(2, 1, 1), p - lines.through[k].reshape(2, 1, 1))
+        return dot(lines.direction[k].reshape(-1, 1, 1), p - lines.through[k].reshape(-1, 1, 1))
     a, b = table.point(step.points[1]), table.point(step.points[2])
     e = b - a
     return np.asarray(dot(e, p - a) / np.sqrt(dot(e, e)))

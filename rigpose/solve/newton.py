@@ -31,7 +31,7 @@ def _surroundings(step: Cluster, table: Table) -> tuple[Array, Array, Array]:
     b = table.branches
     x = np.repeat(eqs.at[None], b, axis=0)
     for j in step.around:
-        x[:, j] = np.broadcast_to(table.point(j)[:, :, 0], (2, b)).T
+        x[:, j] = np.broadcast_to(table.point(j)[:, :, 0], (eqs.dim, b)).T
     values = np.full((b, len(eqs.values)), np.nan)
     for v in step.system.drives:
         values[:, v] = table.value(v)[..., 0]
@@ -45,7 +45,7 @@ def newton(
     step: Cluster, x: Array, values: Array, goal: Array, steps: int = STEPS
 ) -> tuple[Array, Array]:
     """Newton from poses ``(N, n, 2)``; returns the poses and their largest residuals ``(N,)``."""
-    columns, square = _columns(step, 2), np.array(step.square)
+    columns, square = _columns(step, step.system.eqs.dim), np.array(step.square)
     x = x.copy()
     flat = x.reshape(len(x), -1)
     active = np.arange(len(x))
@@ -76,7 +76,7 @@ def _starts(step: Cluster, x: Array, reach: float, rng: np.random.Generator, n: 
     b = len(x)
     start = np.repeat(x, n, axis=0)
     around = x[:, list(step.around)].mean(axis=1) if step.around else x.mean(axis=1)
-    places = rng.normal(size=(b * n, len(step.joints), 2)) * reach * 0.7
+    places = rng.normal(size=(b * n, len(step.joints), x.shape[2])) * reach * 0.7
     start[:, list(step.joints)] = places + np.repeat(around, n, axis=0)[:, None]
     return start
 
@@ -124,16 +124,17 @@ def solve_block(step: Cluster, table: Table) -> list[Array]:
         if turn + 1 >= LEAST_ROUNDS and quiet >= QUIET_ROUNDS and not once:
             break
     table.found = weaker(table.found, Found.PROBABLY)
-    return [np.array(k).reshape(-1, len(joints), 2) for k in known]
+    return [np.array(k).reshape(-1, len(joints), x.shape[2]) for k in known]
 
 
 def block_margin(step: Cluster, x: Array, values: Array, goal: Array) -> Array:
     """``(N,)``: one over the largest movement of a joint per unit change of a row."""
+    dim = step.system.eqs.dim
     _, jac = step.system.both(x, values, goal)
-    a = jac[:, np.array(step.square)][:, :, _columns(step, 2)]
+    a = jac[:, np.array(step.square)][:, :, _columns(step, dim)]
     move = np.linalg.pinv(a, rcond=1e-14)
     n, w, m = move.shape
-    far = np.sqrt((move.reshape(n, w // 2, 2, m) ** 2).sum(axis=2)).max(axis=(1, 2))
+    far = np.sqrt((move.reshape(n, w // dim, dim, m) ** 2).sum(axis=2)).max(axis=(1, 2))
     margin: Array = np.minimum(1.0, 1.0 / np.maximum(far, 1.0))
     return margin
 
@@ -142,7 +143,7 @@ def cluster_branches(step: Cluster, table: Table, number: int) -> None:
     """Every branch splits into the block's solutions; only for a single frame."""
     found = solve_block(step, table)
     index = np.repeat(np.arange(table.branches), [len(k) for k in found])
-    places = np.concatenate(found) if found else np.zeros((0, len(step.joints), 2))
+    places = np.concatenate(found) if found else np.zeros((0, len(step.joints), table.eqs.dim))
     table.kill(np.array([[len(k) > 0] for k in found]), number)
     for name in ("alive", "margin", "killer"):
         array = getattr(table, name)

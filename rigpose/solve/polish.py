@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from rigpose.model.equations import Array, Ints
+from rigpose.model.equations import Array, Equations, Ints
 from rigpose.model.system import System
 from rigpose.solve.plan import Plan
 from rigpose.solve.rest import Rest, solve_step
@@ -36,23 +36,23 @@ def polish(rest: Rest, plan: Plan, cells: Cells, base: Table, inputs: Inputs) ->
     whole = System(eqs, known, plan.targets, ties=False)
     if rest.misfit > 1e-13:
         whole = replace(whole, without=frozenset(plan.redundant))
-    shape = (2, *cells.alive.shape)
-    places = [np.array(np.broadcast_to(p, shape)) for p in cells.places]
+    shape = cells.alive.shape
+    places = [np.array(np.broadcast_to(p, (len(p), *shape))) for p in cells.places]
     for start in range(0, len(rows), BATCH):
         b, f = rows[start : start + BATCH], frames[start : start + BATCH]
-        x = _poses(eqs.n, base, b, f)
+        x = _poses(eqs, base, b, f)
         for j, place in zip(joints, places, strict=True):
             x[:, j] = place[:, b, f].T
         fixed = _corrected(whole, joints, x, _values(eqs.values, base, inputs, b, f),
-                           _goals(eqs.n, inputs, f))
+                           _goals(eqs, inputs, f))
         for j, place in zip(joints, places, strict=True):
             place[:, b, f] = fixed[:, j].T
     cells.places = places
 
 
-def _poses(n: int, base: Table, b: Ints, f: Ints) -> Array:
-    x = np.full((len(b), n, 2), np.nan)
-    for p in range(n):
+def _poses(eqs: Equations, base: Table, b: Ints, f: Ints) -> Array:
+    x = np.full((len(b), eqs.n, eqs.dim), np.nan)
+    for p in range(eqs.n):
         if p in base.points:
             place = base.points[p]
             x[:, p] = place[:, 0, f if place.shape[2] > 1 else np.zeros_like(f)].T
@@ -66,8 +66,8 @@ def _values(names: tuple[str, ...], base: Table, inputs: Inputs, b: Ints, f: Int
     return values
 
 
-def _goals(n: int, inputs: Inputs, f: Ints) -> Array:
-    goal = np.zeros((len(f), n, 2))
+def _goals(eqs: Equations, inputs: Inputs, f: Ints) -> Array:
+    goal = np.zeros((len(f), eqs.n, eqs.dim))
     for (j, axis), array in inputs.targets.items():
         goal[:, j, axis] = array[f]
     return goal
@@ -79,7 +79,7 @@ def _corrected(system: System, joints: list[int], x: Array, values: Array, goal:
     mine = np.zeros(system.eqs.n, dtype=bool)
     mine[joints] = True
     rows = ~system.touched[:, ~placed].any(axis=1) & system.touched[:, mine].any(axis=1)
-    columns = (np.array(joints)[:, None] * 2 + np.arange(2)).ravel()
+    columns = (np.array(joints)[:, None] * x.shape[2] + np.arange(x.shape[2])).ravel()
     filled = np.where(np.isnan(x), 0.25, x)
     flat = filled.reshape(len(x), -1)
     for _ in range(3):

@@ -182,7 +182,8 @@ def _joined(group: Group, frames: int, pieces: list[tuple[int, int, Cells]],
         codes, where = _all_codes([c.codes for _, _, c in pieces])
     b = len(codes)
     wide = any(p.shape[1] > 1 for _, _, c in pieces for p in c.places) or b > 1
-    places = [np.full((2, b if wide else 1, frames), np.nan) for _ in group.joints]
+    dims = [len(p) for p in pieces[0][2].places]
+    places = [np.full((dim, b if wide else 1, frames), np.nan) for dim in dims]
     alive, margin = np.zeros((b, frames), dtype=bool), np.full((b, frames), np.nan)
     found = Found.COMPLETE
     for (start, stop, cells), index in zip(pieces, where, strict=True):

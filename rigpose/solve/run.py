@@ -79,7 +79,7 @@ def execute(step: Step, table: Table, ways: Ways, number: int) -> None:
 
 def _local(table: Table, local: tuple[float, float] | Point) -> Array:
     if isinstance(local, tuple):
-        return np.array(local).reshape(2, 1, 1)
+        return np.array(local).reshape(-1, 1, 1)
     return table.point(local)
 
 
@@ -123,13 +123,13 @@ def _plain_line(table: Table, line: Line) -> tuple[Array, Array]:
         return p, e / np.sqrt(dot(e, e))
     if line.kind == "axis":
         given = table.inputs.targets[line.joint, line.axis][None]
-        p = np.zeros((2, *given.shape))
+        p = np.zeros((table.eqs.dim, *given.shape))
         p[line.axis] = given
         return p, np.array([1.0 - (line.axis == 0), float(line.axis == 0)]).reshape(2, 1, 1)
     if line.kind == "ray":
         return table.point(line.points[0]), _heading(table, line.heading)  # type: ignore[arg-type]
-    p = np.array(line.through).reshape(2, 1, 1)
-    d = np.array(line.direction).reshape(2, 1, 1)
+    p = np.array(line.through).reshape(-1, 1, 1)
+    d = np.array(line.direction).reshape(-1, 1, 1)
     if line.kind == "across":
         return p + d * table.value(line.value), perp(d)
     return p, d
@@ -248,8 +248,7 @@ def both(
 ) -> None:
     """Double the branches."""
     b = table.branches
-    shape = (2, b, base.shape[2])
-    place = np.empty((2, 2 * b, shape[2]))
+    place = np.empty((len(base), 2 * b, base.shape[2]))
     np.add(base, side, out=place[:, :b])
     np.subtract(base, side, out=place[:, b:])
     if table.heights_wanted:
@@ -421,9 +420,9 @@ def _(step: Gauge, table: Table, ways: Ways, number: int) -> None:
     joints = joints_of_value(eqs, step.value)
     arrays = np.broadcast_arrays(*(table.point(j) for j in joints))
     b, f = arrays[0].shape[1:]
-    x = np.zeros((b * f, eqs.n, 2))
+    x = np.zeros((b * f, eqs.n, eqs.dim))
     for j, array in zip(joints, arrays, strict=True):
-        x[:, j] = array.reshape(2, -1).T
+        x[:, j] = array.reshape(eqs.dim, -1).T
     value = measure(eqs, x, np.array([step.value]))[:, 0].reshape(b, f)
     if step.value in table.eqs.angles.value:
         value = _unwrapped(table, step.value, value)

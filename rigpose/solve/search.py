@@ -60,7 +60,7 @@ class Context:
         table = Table(self.plan.eqs, inputs, careful, tol.slack, reach, tol.rounding * reach,
                       close=tol.close, budget=self.budget)
         for j in np.flatnonzero(self.plan.eqs.pinned):
-            table.put(int(j), self.plan.eqs.at[j].reshape(2, 1, 1))
+            table.put(int(j), self.plan.eqs.at[j].reshape(-1, 1, 1))
         return table
 
 
@@ -107,7 +107,7 @@ def cells_of(group: Group, table: Table) -> Cells:
     margin = np.ones(shape) if table.margin is None else table.margin
     missing = [j for j in group.joints if j not in table.points]
     if missing:
-        nothing = np.full((2, table.branches, frames), np.nan)
+        nothing = np.full((table.eqs.dim, table.branches, frames), np.nan)
         for j in missing:
             table.put(j, nothing)
     return Cells(
@@ -178,8 +178,8 @@ def _put(cells: Cells, careful: Cells, columns: NDArray[np.intp], rows: NDArray[
     at = np.ix_(rows, columns)
     places = []
     for mine, theirs in zip(cells.places, careful.places, strict=True):
-        full = _full(mine, (2, b, f))
-        full[:, at[0], at[1]] = np.broadcast_to(theirs, (2, len(rows), len(columns)))
+        full = _full(mine, (len(mine), b, f))
+        full[:, at[0], at[1]] = np.broadcast_to(theirs, (len(full), len(rows), len(columns)))
         places.append(full)
     alive, margin = _full(cells.alive, (b, f)), _full(cells.margin, (b, f))
     alive[at], margin[at] = careful.alive, careful.margin

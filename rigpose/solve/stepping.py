@@ -108,13 +108,13 @@ def _pose(context: Context, group: Group, inputs: Inputs, cells: Cells) -> Array
     """Poses ``(B, n, 2)`` with the group's joints in; others stay at rest."""
     x = np.repeat(context.plan.eqs.at[None], len(cells.codes), axis=0)
     for j, place in zip(group.joints, cells.places, strict=True):
-        x[:, j] = np.broadcast_to(place[:, :, 0].T, (len(x), 2))
+        x[:, j] = np.broadcast_to(place[:, :, 0].T, (len(x), x.shape[2]))
     return np.nan_to_num(x, nan=0.0)
 
 
 def _empty(group: Group, start: Cells, frames: int) -> Rows:
     b = len(start.codes)
-    return Rows(group, start.codes, [np.full((2, b, frames), np.nan) for _ in group.joints],
+    return Rows(group, start.codes, [np.full((len(p), b, frames), np.nan) for p in start.places],
                 np.zeros((b, frames), dtype=bool), np.full((b, frames), np.nan),
                 {v: np.full((b, frames), np.nan) for v in start.values}, found=start.found)
 
@@ -135,8 +135,8 @@ def _fresh(context: Context, group: Group, rows: Rows, now: Cells,
     b = len(now.codes)
     if not b:
         return np.empty(0, dtype=np.intp)
-    mine = np.stack([np.broadcast_to(p[:, :, 0], (2, b)) for p in now.places], axis=2)
-    theirs = np.stack([np.broadcast_to(p[:, :, frame], (2, len(rows.codes)))
+    mine = np.stack([np.broadcast_to(p[:, :, 0], (len(p), b)) for p in now.places], axis=2)
+    theirs = np.stack([np.broadcast_to(p[:, :, frame], (len(p), len(rows.codes)))
                        for p in rows.places], axis=2)[:, rows.alive[:, frame]]
     gap = np.abs(mine[:, :, None] - theirs[:, None]).max(axis=(0, 3), initial=0.0)
     new = gap.min(axis=1, initial=np.inf) > SAME * context.rest.reach

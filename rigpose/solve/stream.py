@@ -87,12 +87,12 @@ def all_cells(context: Context, group: Group, inputs: Inputs, most: int) -> tupl
         total += len(cells.codes)
         if total > most:
             return joined(pieces), True
-    return (joined(pieces) if pieces else _none(group)), False
+    return (joined(pieces) if pieces else _none(group, context.plan.eqs.dim)), False
 
 
-def _none(group: Group) -> Cells:
+def _none(group: Group, dim: int) -> Cells:
     return Cells(group, np.zeros((0, group.bits), dtype=np.int16),
-                 [np.zeros((2, 0, 1)) for _ in group.joints], np.zeros((0, 1), dtype=bool),
+                 [np.zeros((dim, 0, 1)) for _ in group.joints], np.zeros((0, 1), dtype=bool),
                  np.zeros((0, 1)), [])
 
 
