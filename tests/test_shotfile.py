@@ -203,8 +203,34 @@ def test_everything_wrong_is_told_at_once(folder: Path) -> None:
     lines = refusal(folder, text).splitlines()
     assert [line.partition(": ")[0] for line in lines] == [
         "q010.shot.toml:3", "q010.shot.toml:5", "gate.toml:6", "q010.shot.toml:6",
-        "q010.shot.toml:8", "q010.shot.toml:11", "q010.shot.toml:14"]
+        "q010.shot.toml:7", "q010.shot.toml:8", "q010.shot.toml:11", "q010.shot.toml:14"]
     assert 'frmaes: there is no key of this name; got "frmaes"; did you mean "frames"?' in lines[1]
+
+
+def test_a_wrong_key_of_an_entry_hides_nothing_else(folder: Path) -> None:
+    """Nor does a missing frame, or one that is no number; and nothing is told twice."""
+    text = HEAD + (
+        "[[keys]]\nframe = 1\nease = 'bouncy'\ndrive = { swnig = 3, push = 7 }\n"
+        "target = { heel = [0, 0] }\n"
+        "[[keys]]\ndrive = { push = 9 }\n"
+        "[[keys]]\nframe = '1 +'\ntarget = { mitre = [1] }\n"
+        "[[keys]]\nframe = 3\ndrive = 4\n"
+        "[[keys]]\nframe = [4]\neaes = 'hold'\ndrive = { push = 1 }\n")
+    told = [line.removeprefix("q010.shot.toml:").partition(";")[0]
+            for line in refusal(folder, text).splitlines()]
+    assert told == [
+        "7: keys[0].ease: must be linear, smooth or hold",
+        "8: keys[0].drive.swnig: there is no crank, ram or rail of this name",
+        '8: keys[0].drive.push: "push" stays within its range, 2 to 6',
+        "9: keys[0].target.heel: a pinned joint can't be a target",
+        "10: keys[1]: needs the key `frame`",
+        '11: keys[1].drive.push: "push" stays within its range, 2 to 6',
+        "13: keys[2].frame: the arithmetic ends too early",
+        "14: keys[2].target.mitre: must be a list of 2 numbers",
+        "17: keys[3].drive: must be a table, drive = value",
+        "19: keys[4].frame: must be a number or arithmetic",
+        "20: keys[4].eaes: there is no key of this name",
+        '21: keys[4].drive.push: "push" stays within its range, 2 to 6']
 
 
 def test_a_missing_key_of_the_head_hides_nothing_else(folder: Path) -> None:
