@@ -727,6 +727,27 @@ f = 2
     assert line_of(text, ("unknown",)) is None
 
 
+def test_lines_of_tables_that_only_stand_around_others() -> None:
+    text = """[limits.knee]
+either = true
+[limits.fold]
+range = [0, 90]
+[[a.b.c]]
+d = 1
+[limits]
+[a]
+e = 2
+"""
+    tomllib.loads(text)
+    expected = {("limits",): 7, ("limits", "knee"): 1, ("limits", "fold", "range"): 4,
+                ("a",): 8, ("a", "b"): 5, ("a", "b", "c"): 5, ("a", "b", "c", 0, "d"): 6}
+    assert {path: line_of(text, path) for path in expected} == expected
+    # Tables that stand around others may have a header of their own, before or after them.
+    assert scan(text).repeats == []
+    above = text.partition("[limits]")[0]
+    assert (line_of(above, ("limits",)), line_of(above, ("limits", "new", "at"))) == (1, 1)
+
+
 def test_lines_of_json() -> None:
     text = '{"a": {\n "b\\u0063": [1,\n {"d": "}"}],\n "e": -1.5e3},\n "f": null}'
     json.loads(text)

@@ -42,15 +42,20 @@ class Repeat:
 
 @dataclass
 class Lines:
-    """The lines of all keys found. ``repeats`` holds keys that stood before."""
+    """The lines of all keys found. ``repeats`` holds keys that stood before.
+
+    ``implied`` are tables that only stand in headers of what is inside them, as `limits` in
+    `[limits.fold]`; kept apart, since a header of their own may follow and is no repeat.
+    """
 
     found: dict[KeyPath, int] = field(default_factory=dict)
+    implied: dict[KeyPath, int] = field(default_factory=dict)
     repeats: list[Repeat] = field(default_factory=list)
 
     def of(self, path: KeyPath) -> int | None:
         """The line of a key, else of the nearest table or list around it; None for the whole."""
         for length in range(len(path), 0, -1):
-            line = self.found.get(path[:length])
+            line = self.found.get(path[:length]) or self.implied.get(path[:length])
             if line is not None:
                 return line
         return None
@@ -127,6 +132,7 @@ class _Scanner:
         path: KeyPath = ()
         for key in keys:
             path = (*path, key)
+            self.lines.implied.setdefault(path, self.line())
             if path in self.lists:
                 path = (*path, self.lists[path])
         return path
