@@ -387,6 +387,8 @@ def test_schema_prints_json(capsys: Capture) -> None:
     assert schema["title"] == "A rig file"
     said(capsys, "schema", "--out", "rig.schema.json")
     assert json.loads(Path("rig.schema.json").read_text(encoding="utf-8")) == schema
+    shot = json.loads("\n".join(said(capsys, "schema", "--shot")))
+    assert shot["title"] == "A shot file"
 
 
 # refusals

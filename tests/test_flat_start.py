@@ -13,7 +13,8 @@ import pytest
 
 from rigpose.files.flat import flat_text
 from rigpose.files.rigfile import load_rig
-from rigpose.files.schema import json_schema
+from rigpose.files.schema import rig_schema, shot_schema
+from rigpose.files.shotspec import ShotForm
 from rigpose.files.start import start_text
 from rigpose.ground.errors import BadInput
 from rigpose.model.rig import Rig, Stand
@@ -137,7 +138,7 @@ def test_the_example_has_every_key() -> None:
     assert set(document) == {*HeadSpec.__struct_encode_fields__, *SECTIONS}
     kinds = {"rest": "RestSpec", "plane": "StandSpec", "copies": "CopySpec", "frozen": "FrozenSpec"}
     missing = set()
-    for name, kind in json_schema()["$defs"].items():
+    for name, kind in rig_schema()["$defs"].items():
         section = next((s for s, k in kinds.items() if k == name), f"{name[:-4].lower()}s")
         table = document.get(section, {})
         parts = [table] if section in ("rest", "plane") else table.values()
@@ -188,11 +189,18 @@ def test_the_schema_accepts_every_rig(path: Path) -> None:
     msgspec.convert(tomllib.loads(path.read_text(encoding="utf-8")), RigSpec)
 
 
-def test_the_schema_is_shipped_as_made() -> None:
-    shipped = json.loads((ROOT / "rigpose/files/rig.schema.json").read_text(encoding="utf-8"))
-    assert shipped == json_schema()
+@pytest.mark.parametrize("path", sorted((ROOT / "rigs").glob("*.shot.toml")),
+                         ids=lambda p: p.name.partition(".")[0])
+def test_the_schema_accepts_every_shot(path: Path) -> None:
+    msgspec.convert(tomllib.loads(path.read_text(encoding="utf-8")), ShotForm)
+
+
+@pytest.mark.parametrize(("name", "schema"), [("rig", rig_schema()), ("shot", shot_schema())])
+def test_the_schemas_are_shipped_as_made(name: str, schema: dict[str, object]) -> None:
+    file = f"{name}.schema.json"
+    assert json.loads((ROOT / "rigpose/files" / file).read_text(encoding="utf-8")) == schema
     project = tomllib.loads((ROOT / "pyproject.toml").read_text(encoding="utf-8"))
-    assert "rig.schema.json" in project["tool"]["setuptools"]["package-data"]["rigpose.files"]
+    assert file in project["tool"]["setuptools"]["package-data"]["rigpose.files"]
 
 
 def start(folder: Path, csv: str, unit: str = "m", up: str = "y") -> Rig:

@@ -15,7 +15,7 @@ from hypothesis import strategies as st
 from rigpose.files import tomltext
 from rigpose.files.lines import line_of, scan
 from rigpose.files.rigfile import load_rig
-from rigpose.files.schema import json_schema
+from rigpose.files.schema import rig_schema
 from rigpose.ground.errors import BadInput
 from rigpose.model.extent import extent
 from rigpose.model.make import make_rig
@@ -756,7 +756,7 @@ def test_lines_of_json() -> None:
 
 
 def test_the_schema_describes_every_key() -> None:
-    schema = json_schema()
+    schema = rig_schema()
     keys = schema["$defs"]["RigSpec"]["properties"]
     assert set(keys) == {*HeadSpec.__struct_encode_fields__, *SECTIONS}
     for name, part in schema["$defs"].items():

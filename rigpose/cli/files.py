@@ -5,13 +5,12 @@ from __future__ import annotations
 from pathlib import Path
 
 import click
-import msgspec
 
 from rigpose.cli.given import as_json, keep_inputs, the_rig
 from rigpose.cli.show import print_json
 from rigpose.files.disk import write_whole
 from rigpose.files.flat import flat_text
-from rigpose.files.schema import json_schema
+from rigpose.files.schema import rig_schema, schema_text, shot_schema
 from rigpose.files.start import start_text
 from rigpose.ground.errors import BadInput, Problem
 from rigpose.model.rig import METRES
@@ -51,12 +50,12 @@ def start_command(joints: str, out: str | None, unit: str, up: str, as_json: boo
     return _give(text, out, as_json, {})
 
 
-@click.command("schema", short_help="Print the JSON Schema of rig files, for editors.")
+@click.command("schema", short_help="Print the JSON Schema of rig or shot files, for editors.")
+@click.option("--shot", is_flag=True, help="That of shot files.")
 @out_option
-def schema_command(out: str | None) -> int:
-    """Print the JSON Schema of rig files, for editors that complete and check."""
-    text = msgspec.json.format(msgspec.json.encode(json_schema()), indent=2).decode()
-    return _give(text + "\n", out, False, {})
+def schema_command(out: str | None, shot: bool) -> int:
+    """Print the JSON Schema of rig files, or of shot files, for editors that complete and check."""
+    return _give(schema_text(shot_schema() if shot else rig_schema()), out, False, {})
 
 
 def _give(text: str, out: str | None, as_json: bool, facts: dict[str, object]) -> int:

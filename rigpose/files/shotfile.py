@@ -6,13 +6,14 @@ import re
 from collections.abc import Mapping
 from fractions import Fraction
 from pathlib import Path
+from typing import get_args
 
 import msgspec
 
 from rigpose.files.document import read_document
 from rigpose.files.rigfile import load_rig
 from rigpose.files.shotkeys import Desk, read_keys
-from rigpose.files.shotspec import ShotSpec
+from rigpose.files.shotspec import ShotSpec, Side
 from rigpose.ground.errors import BadInput
 from rigpose.model.decode import decode, fitting
 from rigpose.model.names import shown
@@ -23,7 +24,7 @@ from rigpose.motion.shot import Shot
 
 VERSION = 1
 MOST_FRAMES = 100_000_000
-BENDS = ("left", "right", "straight", "before", "after")
+BENDS = get_args(Side)
 
 _REFUSED = "\0"
 """Stands for a rig's path that is missing or no text, which is noted already."""
