@@ -10,7 +10,6 @@ import click
 import numpy as np
 
 from rigpose.cli.show import counted, print_json
-from rigpose.cli.why import why_nothing
 from rigpose.files.csvfile import CsvWriter, Layout, ValuesWriter
 from rigpose.files.motionfile import to_file, values_table
 from rigpose.files.scene import Outlet
@@ -18,13 +17,14 @@ from rigpose.ground.words import State
 from rigpose.motion.bake import branch_map
 from rigpose.motion.branchset import Branches
 from rigpose.motion.shot import Shot
+from rigpose.motion.why import why_nothing
 
 
 def bake_all(shot: Shot, way: Outlet, out: str | None, values: str | None, layout: Layout,
              as_json: bool) -> int:
     """Write every row; the exit code."""
     found = branch_map(shot)
-    why = () if len(found) else why_nothing(found)
+    why = why_nothing(found)
     if out is not None and len(found):
         _write(found, way, out, layout)
     if values is not None and len(found):

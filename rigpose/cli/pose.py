@@ -11,7 +11,6 @@ import numpy as np
 
 from rigpose.cli.given import as_json, frame_options, keep_inputs, read_given, the_rig
 from rigpose.cli.show import counted, print_json, print_table
-from rigpose.cli.why import why_nothing
 from rigpose.files.csvfile import CsvWriter
 from rigpose.files.motionfile import to_file
 from rigpose.files.scene import Outlet, outlet
@@ -20,6 +19,7 @@ from rigpose.ground.words import State
 from rigpose.motion.branches import find_branches
 from rigpose.motion.branchset import Branches
 from rigpose.motion.nearest import nearest_branch
+from rigpose.motion.why import why_nothing
 
 SHOWN = 24
 MOST_GAUGES = 6
@@ -59,7 +59,7 @@ def pose_command(rig: str, out: str | None, as_json: bool, **asked: Any) -> int:
     written = out if out is not None and len(found) else None
     if written is not None:
         _write(found, written, way)
-    why = () if len(every) else why_nothing(every)
+    why = why_nothing(every)
     if as_json:
         print_json({**pose_dict(found), "why": why, "out": written})
     elif len(found):

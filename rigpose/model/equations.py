@@ -81,18 +81,35 @@ class Lines:
 @dataclass(frozen=True)
 class Angles:
     """Cranks: ``line (c, 2)``, ``base (c, 2)`` (GROUND twice: the x axis), ``zero (c,)`` in
-    radians (NaN: counted from rest), ``value (c,)``."""
+    radians (NaN: counted from rest), ``value (c,)``.
+
+    In space the second joints of line and base are seen about ``axis (c, 2)``; where the base is
+    GROUND it is the direction ``toward (c, 3)``.
+    """
 
     names: tuple[str, ...]
     line: Ints
     base: Ints
     zero: Array
     value: Ints
+    axis: Ints
+    toward: Array
+
+
+@dataclass(frozen=True)
+class Planes:
+    """Joints in fixed planes: ``joint (p,)``, ``through`` and ``normal`` ``(p, 3)``."""
+
+    names: tuple[str, ...]
+    joint: Ints
+    through: Array
+    normal: Array
 
 
 @dataclass(frozen=True)
 class Fences:
-    """Limits: turns from ``first (l, 2)`` to ``second (l, 2)`` in ``low .. low + width``."""
+    """Limits: turns from ``first (l, 2)`` to ``second (l, 2)`` in ``low .. low + width``; in
+    space signed ones are about ``axis (l, 2)`` (GROUND twice: none)."""
 
     names: tuple[str, ...]
     first: Ints
@@ -100,6 +117,7 @@ class Fences:
     low: Array
     width: Array
     either: NDArray[np.bool_]
+    axis: Ints
 
 
 @dataclass(frozen=True)
@@ -117,6 +135,7 @@ class Equations:
     lines: Lines
     angles: Angles
     fences: Fences
+    planes: Planes
     values: tuple[str, ...]
     span: Array
     unit: Array

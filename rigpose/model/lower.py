@@ -18,8 +18,12 @@ from rigpose.model.equations import (
     Fences,
     Ints,
     Lines,
+    Planes,
 )
 from rigpose.model.rig import Bone, Drive, Limit, Ram, Rig
+
+POSED = (2,)
+"""Dimensions that can be posed."""
 
 
 def _frame(rig: Rig) -> tuple[float, Array, Array]:
@@ -89,6 +93,19 @@ def _angles(rig: Rig, value: dict[str, int]) -> Angles:
         base=_ints([pair(c.base) for c in rig.cranks], 2),
         zero=np.array(zero, dtype=float),
         value=np.array([value[c.name] for c in rig.cranks], dtype=np.intp),
+        axis=_ints([pair(c.axis) for c in rig.cranks], 2),
+        toward=np.array([c.toward or (np.nan,) * 3 for c in rig.cranks]).reshape(-1, 3),
+    )
+
+
+def _planes(rig: Rig, scale: float, origin: Array) -> Planes:
+    each = [(p, j) for p in rig.planes for j in p.joints]
+    through = np.array([p.through for p, _ in each]).reshape(-1, rig.dim)
+    return Planes(
+        names=tuple(p.name for p, _ in each),
+        joint=np.array([rig.index[j] for _, j in each], dtype=np.intp),
+        through=(through - origin) / scale,
+        normal=np.array([p.normal for p, _ in each]).reshape(-1, rig.dim),
     )
 
 
@@ -101,6 +118,8 @@ def _fences(limits: tuple[Limit, ...], at: dict[str, int]) -> Fences:
         low=low,
         width=np.radians([x.range[1] for x in limits]) - low,
         either=np.array([x.either for x in limits], dtype=bool),
+        axis=_ints([(at[x.axis[0]], at[x.axis[1]]) if x.axis else (GROUND, GROUND)
+                    for x in limits], 2),
     )
 
 
@@ -140,7 +159,7 @@ def _hands(rig: Rig, at: Array) -> tuple[tuple[str, tuple[int, int, int], float]
 @lru_cache(maxsize=64)
 def lower(rig: Rig) -> Equations:
     """The equations of a rig (kept for the rigs used last)."""
-    if rig.dim != 2:
+    if rig.dim not in POSED:
         raise BadInput(
             Problem(rig.source, "dim", "this version poses rigs in the plane", str(rig.dim),
                     "rigs with dim = 3 load and can be looked at, not posed yet")
@@ -166,8 +185,9 @@ def lower(rig: Rig) -> Equations:
         lines=_lines(rig, scale, origin, number),
         angles=_angles(rig, number),
         fences=_fences(rig.limits, dict(rig.index)),
+        planes=_planes(rig, scale, origin),
         values=values, span=span, unit=unit,
         tie_names=tuple(t.name for t in rig.ties),
         ties=ties, tie_equals=np.array([t.equals for t in rig.ties], dtype=float),
-        hands=_hands(rig, at),
+        hands=_hands(rig, at) if rig.dim == 2 else (),
     )

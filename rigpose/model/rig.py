@@ -85,6 +85,10 @@ class Crank(Part):
     Both are directed pairs of joints. ``turns`` and ``about`` are kept for people. The value is
     the counter-clockwise angle in degrees minus ``zero``; "rest" counts from the rest pose.
     ``base_part`` names the part that carries ``base``.
+
+    In space the angle is about ``axis``, by the right hand from its first joint to its second,
+    from the second joint of ``base`` (or the direction ``toward``, on the ground) to the second
+    joint of ``line``; all three start on the axis.
     """
 
     turns: str
@@ -94,6 +98,8 @@ class Crank(Part):
     zero: float | Literal["rest"] = 0.0
     range: Span | None = None
     base_part: str = field(default="ground", repr=False)
+    axis: Pair | None = None
+    toward: Coordinates | None = None
 
 
 Body = Bone | Plate | Ram
@@ -104,7 +110,8 @@ Drive = Crank | Ram | Rail
 class Limit(Part):
     """Allowed counter-clockwise turn from the first line to the second, in degrees.
 
-    Lines are directed pairs, both seen from ``at`` outwards; ``either`` makes it unsigned.
+    Lines are directed pairs, both seen from ``at`` outwards; ``either`` makes it unsigned. In
+    space a signed one is about ``axis``, by the right hand.
     ``first_part`` and ``second_part`` name the parts that carry the lines.
     """
 
@@ -115,6 +122,16 @@ class Limit(Part):
     either: bool = False
     first_part: str = field(default="", repr=False)
     second_part: str = field(default="", repr=False)
+    axis: Pair | None = None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Plane(Part):
+    """A plane on the ground, in space, in which joints stay; ``normal`` has unit length."""
+
+    joints: tuple[str, ...]
+    through: Coordinates
+    normal: Coordinates
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -155,6 +172,7 @@ class Rig:
     cranks: tuple[Crank, ...] = ()
     limits: tuple[Limit, ...] = ()
     ties: tuple[Tie, ...] = ()
+    planes: tuple[Plane, ...] = ()
     frozen: tuple[Frozen, ...] = ()
     branches: Mapping[str, Mapping[str, str]] = field(default_factory=dict)
     names: Mapping[str, str] = field(default_factory=dict)
@@ -193,5 +211,5 @@ class Rig:
         It stands on the parts' repr, from which what decides no pose is left out.
         """
         parts = (self.dim, self.joints, self.bones, self.plates, self.rails, self.rams,
-                 self.cranks, self.limits, self.ties, self.frozen, self.unit)
+                 self.cranks, self.limits, self.ties, self.planes, self.frozen, self.unit)
         return sha256(repr(parts).encode()).hexdigest()[:16]

@@ -16,6 +16,15 @@ from numpy.typing import NDArray
 
 from rigpose.model.equations import GROUND, Array, Body, Equations, Ints
 from rigpose.model.gauges import gauge_gradients, measure
+from rigpose.model.spacerows import (
+    BodyRows,
+    body_rows,
+    by_frame_rows,
+    fixed_line_rows,
+    moving_line_rows,
+    on_line_rows,
+    plane_rows,
+)
 
 Family = tuple[Array, Ints, Array]
 
@@ -70,7 +79,15 @@ class System:
                 np.array(weights).reshape(-1, 2), tuple(names))
 
     @cached_property
+    def space(self) -> BodyRows:
+        """Rows of bodies in space."""
+        return body_rows(self.eqs.bodies)
+
+    @cached_property
     def _bases(self) -> tuple[Ints, Array, tuple[str, ...]]:
+        if self.eqs.dim == 3:
+            return self.space.ends, self.space.length, self.space.names[0]
+
         def base(b: Body) -> tuple[int, int]:
             return int(b.joints[b.base[0]]), int(b.joints[b.base[1]])
 
@@ -101,9 +118,14 @@ class System:
         fixed = e.lines.along[:, 0] == GROUND
         names = [e.distances.names[k] for k in self.dist_rows]
         names += self._bases[2]
-        names += [n for n in self._affine[2] for _ in range(2)]
-        names += [n for n, f in zip(e.lines.names, fixed, strict=True) if f]
-        names += [n for n, f in zip(e.lines.names, fixed, strict=True) if not f]
+        kinds = self.space.names[1:] if e.dim == 3 else (self._affine[2],)
+        names += [n for kind in kinds for n in kind for _ in range(e.dim)]
+        on_fixed, on_moving = (2, 3) if e.dim == 3 else (1, 1)
+        names += [n for n, f in zip(e.lines.names, fixed, strict=True) if f
+                  for _ in range(on_fixed)]
+        names += [n for n, f in zip(e.lines.names, fixed, strict=True) if not f
+                  for _ in range(on_moving)]
+        names += e.planes.names
         names += [e.lines.names[k] for k in self._known_rails]
         names += [e.angles.names[k] for k in self._known_cranks]
         names += [e.rig.joint_names[j] for j, _ in self.targets]
@@ -134,8 +156,7 @@ class System:
         """All rows at poses ``x (N, n, dim)``; ``values (N, v)``, ``goal (N, n, dim)``."""
         yield self._distance_rows(x, values, self.dist_rows)
         yield self._base_rows(x)
-        yield self._affine_rows(x)
-        yield from self._line_rows(x)
+        yield from self._space_rows(x) if self.eqs.dim == 3 else self._plane_rows(x)
         yield self._rail_values(x, values)
         yield self._angle_rows(x, values)
         yield self._target_rows(x, goal)
@@ -192,6 +213,23 @@ class System:
     def _base_rows(self, x: Array) -> Family:
         ends, length, _ = self._bases
         return self._squared(x, ends, np.broadcast_to(length, (len(x), len(length))))
+
+    def _space_rows(self, x: Array) -> Iterator[Family]:
+        lines = self.eqs.lines
+        yield on_line_rows(x, self.space)
+        yield by_frame_rows(x, self.space)
+        fixed = np.flatnonzero(lines.along[:, 0] == GROUND)
+        yield fixed_line_rows(x, lines.joint[fixed], lines.through[fixed], lines.direction[fixed])
+        moving = np.flatnonzero(lines.along[:, 0] != GROUND)
+        yield moving_line_rows(x, np.column_stack([lines.along[moving], lines.joint[moving]]))
+        planes = self.eqs.planes
+        yield plane_rows(x, planes.joint, planes.through, planes.normal)
+
+    def _plane_rows(self, x: Array) -> Iterator[Family]:
+        yield self._affine_rows(x)
+        yield from self._line_rows(x)
+        planes = self.eqs.planes
+        yield plane_rows(x, planes.joint, planes.through, planes.normal)
 
     def _affine_rows(self, x: Array) -> Family:
         joints, weights, _ = self._affine

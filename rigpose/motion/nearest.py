@@ -129,6 +129,7 @@ def _nearest_of(rows: Rows, aim: Array, most: int) -> Rows:
 def _stacked(rows: list[Rows]) -> Rows:
     first = rows[0]
     return Rows(first.group, np.concatenate([r.codes for r in rows]),
-                [np.concatenate([np.broadcast_to(r.places[k], (len(r.places[k]), 1, 1)) for r in rows], axis=1)
-                 for k in range(len(first.places))],
+                [np.concatenate([np.broadcast_to(r.places[k], (len(p), 1, 1)) for r in rows],
+                                axis=1)
+                 for k, p in enumerate(first.places)],
                 np.concatenate([r.alive for r in rows]), np.concatenate([r.margin for r in rows]))
