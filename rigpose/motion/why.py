@@ -17,10 +17,7 @@ from rigpose.solve.search import Context
 
 
 def why_nothing(found: Branches) -> tuple[str, ...]:
-    """What holds back in a set without branches, a sentence each; nothing for a set that has some.
-
-    Where it assembles in some frames and not in others no row is missing: bake tells such spans.
-    """
+    """What holds back where a set has no branches, a sentence each; none where it has some."""
     if len(found):
         return ()
     rest, knowns = find_rest(found.rig), found.knowns
