@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from rigpose.model.rig import Coordinates, Pair, Rig
+from rigpose.model.equations import Array
+from rigpose.model.rig import Coordinates, Limit, Pair, Rig, Tie
 
 Point = Coordinates | None
 
@@ -42,7 +44,8 @@ def shuffled(rig: Rig, seed: int) -> Rig:
         return tuple(parts[k] for k in rng.permutation(len(parts)))
 
     return replace(rig, joints=mix(rig.joints), bones=mix(rig.bones), plates=mix(rig.plates),
-                   rails=mix(rig.rails), rams=mix(rig.rams), limits=mix(rig.limits))
+                   rails=mix(rig.rails), rams=mix(rig.rams), cranks=mix(rig.cranks),
+                   limits=mix(rig.limits), ties=mix(rig.ties))
 
 
 def transformed(rig: Rig, scale: float = 1.0, turn: float = 0.0,
@@ -76,4 +79,61 @@ def transformed(rig: Rig, scale: float = 1.0, turn: float = 0.0,
                      for p in rig.plates),
         rails=tuple(replace(r, through=point(r.through), direction=unit(r.direction),
                             range=span(r.range)) for r in rig.rails),
-        rams=tuple(replace(r, range=span(r.range)) for r in rig.rams))
+        rams=tuple(replace(r, range=span(r.range)) for r in rig.rams),
+        cranks=tuple(replace(c, range=None) for c in rig.cranks),
+        limits=tuple(_limit(m, mirror) for m in rig.limits),
+        ties=tuple(_tie(t, rig, scale) for t in rig.ties))
+
+
+def _limit(limit: Limit, mirror: bool) -> Limit:
+    low, high = limit.range
+    return replace(limit, range=(-high, -low)) if mirror and not limit.either else limit
+
+
+def _tie(tie: Tie, rig: Rig, scale: float) -> Tie:
+    """Ways grow with the rig, so their factors shrink."""
+    ways = {p.name for p in (*rig.rams, *rig.rails)}
+    return replace(tie, sum=tuple((n, f / scale if n in ways else f) for n, f in tie.sum))
+
+
+@dataclass(frozen=True)
+class Change:
+    """One way to write a rig differently; `changed_drives` and the rest do the same to values."""
+
+    scale: float = 1.0
+    turn: float = 0.0
+    shift: tuple[float, float] = (0.0, 0.0)
+    mirror: bool = False
+
+    def rig(self, rig: Rig) -> Rig:
+        return transformed(rig, self.scale, self.turn, self.shift, self.mirror)
+
+    def places(self, places: Array) -> Array:
+        """``(..., 2)``."""
+        c, s = np.cos(np.radians(self.turn)), np.sin(np.radians(self.turn))
+        turned = places @ np.array([[c, s], [-s, c]]) * self.scale
+        if self.mirror:
+            turned = turned * (-1.0, 1.0)
+        out: Array = turned + self.shift
+        return out
+
+    def drives(self, rig: Rig, drives: Mapping[str, Array]) -> dict[str, Array]:
+        """Cranks from the ground turn with it; mirrored, all angles change their signs."""
+        out = {}
+        for name, value in drives.items():
+            crank = next((c for c in rig.cranks if c.name == name), None)
+            if crank is None:
+                out[name] = np.asarray(value) * self.scale
+                continue
+            ground = crank.base is None and crank.zero != "rest"
+            zero = 0.0 if crank.zero == "rest" else float(crank.zero)
+            angle = np.asarray(value) + zero + (self.turn if ground else 0.0)
+            if self.mirror:
+                angle = (180.0 if ground else 0.0) - angle
+            out[name] = angle - zero
+        return out
+
+    def bends(self, bends: Mapping[str, str]) -> dict[str, str]:
+        """Mirrored, left is right; before and after stay."""
+        other = {"left": "right", "right": "left"} if self.mirror else {}
+        return {joint: other.get(word, word) for joint, word in bends.items()}
