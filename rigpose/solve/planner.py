@@ -169,7 +169,9 @@ class Planner:
             around=block.around, bit=0, parts=names))
         for number, solid in enumerate(self.net.solids):
             inside = [j for j in solid.local if j in block.joints or j in ground.place]
-            if any(j in block.joints for j in solid.local):
+            # The frame of a condensed group has choices of its own, of which the block knows
+            # nothing: whatever is inside it is left to be checked.
+            if not solid.steps and any(j in block.joints for j in solid.local):
                 ground._hold(number, inside)
         held = set(names)
         for k, name in enumerate(self.eqs.distances.names):
