@@ -8,12 +8,13 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 from scipy.optimize import root
 
 import rigpose as rp
-from rigpose.model.equations import Array
+from rigpose.model.equations import Array, Ints
 from rigpose.model.rig import Pair
 
 Form = Array
@@ -26,7 +27,7 @@ class Conditions:
 
     forms: Array
     positive: Array
-    free: Array
+    free: Ints
     pinned: Array
     size: float
 
@@ -38,7 +39,8 @@ class Conditions:
 
     def jacobian(self, x: Array) -> Array:
         """``(m, n)``."""
-        return 2.0 * (self.forms @ np.append(x, 1.0))[:, :-1]
+        slopes: Array = 2.0 * (self.forms @ np.append(x, 1.0))[:, :-1]
+        return slopes
 
     def allowed(self, x: Array) -> bool:
         """Whether nothing points the wrong way round."""
@@ -58,7 +60,8 @@ class _Writer:
         fixed = np.repeat([j.pin for j in rig.joints], 2)
         self.free = np.flatnonzero(~fixed)
         n = len(self.free)
-        self.pinned = np.array([x for j in rig.joints for x in (j.at if j.pin else (0.0, 0.0))])
+        places = [j.at if j.pin and j.at else (0.0, 0.0) for j in rig.joints]
+        self.pinned = np.array(places, dtype=float).ravel()
         lead = np.zeros((len(fixed), n + 1))
         lead[self.free, np.arange(n)] = 1.0
         lead[:, n] = self.pinned
@@ -154,7 +157,7 @@ def roots(c: Conditions, starts: Array) -> list[Array]:
     found: list[Array] = []
     for start in starts:
         # Least squares where some condition follows from others.
-        method = "hybr" if len(c.forms) == len(c.free) else "lm"
+        method: Literal["hybr", "lm"] = "hybr" if len(c.forms) == len(c.free) else "lm"
         result = root(c.residual, start, jac=c.jacobian, method=method, options={"xtol": 1e-13})
         x = result.x
         if np.abs(c.residual(x)).max() > 1e-12 or not c.allowed(x):

@@ -10,10 +10,12 @@ import pickle
 from collections.abc import Mapping
 from functools import cache
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
 from changed import Change, renamed, shuffled
+from numpy.typing import NDArray
 from random_rigs import ONE_BY_ONE, random_case
 
 import rigpose as rp
@@ -194,9 +196,10 @@ def test_what_is_given_stays_and_what_comes_back_is_sealed(name: str) -> None:
     assert (pickle.dumps((drives, targets)), s.rig.fingerprint) == before
     motion = found.pick(0).motion()
     rest = rp.find_rest(s.rig)
-    for array in (found.positions, found.state, found.margin, motion.positions, motion.state,
-                  motion.margin, rest.positions, *found.knowns.drives.values(),
-                  *found.knowns.targets.values()):
+    arrays: list[NDArray[Any]] = [
+        found.positions, found.state, found.margin, motion.positions, motion.state, motion.margin,
+        rest.positions, *found.knowns.drives.values(), *found.knowns.targets.values()]
+    for array in arrays:
         assert not array.flags.writeable
         with pytest.raises(ValueError, match="read-only"):
             array[...] = 0
