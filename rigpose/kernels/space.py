@@ -101,3 +101,12 @@ def frame(e: Array, f: Array) -> tuple[Array, Array, Array]:
     x = e / np.sqrt(dot(e, e))
     y, z = about(x, f)
     return x, y, z
+
+
+def turn_about(f: Array, p: Array, q: Array, s: Array) -> Array:
+    """The angle about the axis p to q from f to s, by the right hand, in radians."""
+    u = q - p
+    u = u / np.sqrt(dot(u, u))
+    first, second = about(u, f - p)
+    w = s - p
+    return np.asarray(np.arctan2(dot(second, w), dot(first, w)))

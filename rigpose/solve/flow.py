@@ -13,21 +13,24 @@ from rigpose.solve.plan import (
     Cluster,
     Gauge,
     Given,
+    Hang,
     Heading,
+    Hinge,
+    Junction,
     Level,
     Line,
+    Local,
     Meet,
     Orient,
     Point,
     Seat,
+    Sheet,
     Shift,
     Slide,
     Step,
     Swing,
     Tied,
 )
-
-Local = tuple[float, float] | Point
 
 
 def _points(*local: Local) -> set[Point]:
@@ -38,7 +41,9 @@ def _heading(heading: Heading | None) -> set[Point]:
     return set(heading.base) if heading and heading.base else set()
 
 
-def _curve(curve: Circle | Line) -> set[Point]:
+def _curve(curve: Circle | Line | Sheet) -> set[Point]:
+    if isinstance(curve, Sheet):
+        return set()
     if isinstance(curve, Circle):
         return {curve.centre, *(curve.radius.points or ())}
     return {*curve.points, *(curve.moved or ())} | _heading(curve.heading)
@@ -97,6 +102,22 @@ def _(step: Level) -> set[Point]:
 
 
 @reads.register
+def _(step: Junction) -> set[Point]:
+    return set[Point]().union(*(_curve(c) for c in step.curves))
+
+
+@reads.register
+def _(step: Hang) -> set[Point]:
+    return {*step.placed, *_points(*step.local, *step.base)}
+
+
+@reads.register
+def _(step: Hinge) -> set[Point]:
+    start = set() if step.start is None else {step.start}
+    return {*step.axis, *start, *_points(*step.local, *step.axis_local, step.pointer)}
+
+
+@reads.register
 def _(step: Check) -> set[Point]:
     return set(step.points)
 
@@ -105,9 +126,9 @@ def writes(step: Step) -> tuple[Point, ...]:
     """Points that a step writes."""
     if isinstance(step, Cluster):
         return step.joints
-    if isinstance(step, (Given, Meet, Slide, Shift)):
+    if isinstance(step, (Given, Meet, Junction, Slide, Shift)):
         return (step.dst,)
-    if isinstance(step, (Carry, Aim, Swing, Seat, Orient, Level)):
+    if isinstance(step, (Carry, Aim, Swing, Seat, Orient, Level, Hang, Hinge)):
         return step.dst
     return ()
 
@@ -115,13 +136,12 @@ def writes(step: Step) -> tuple[Point, ...]:
 def values_read(step: Step, eqs: Equations) -> set[int]:
     """Value numbers that a step reads."""
     found: set[int] = set()
-    if isinstance(step, Meet):
-        for curve in (step.first, step.second):
-            if isinstance(curve, Circle):
-                found.add(curve.radius.value)
-            else:
-                found.add(curve.value)
-                found.add(curve.heading.value if curve.heading else -1)
+    if isinstance(step, (Meet, Junction)):
+        curves = (step.first, step.second) if isinstance(step, Meet) else step.curves
+        for curve in curves:
+            found |= _curve_values(curve)
+    elif isinstance(step, Hinge):
+        found.add(step.value)
     elif isinstance(step, (Aim, Orient)):
         found.add(step.heading.value)
     elif isinstance(step, Slide):
@@ -131,6 +151,14 @@ def values_read(step: Step, eqs: Equations) -> set[int]:
     elif isinstance(step, Check):
         found |= _check_values(step, eqs)
     return found - {-1}
+
+
+def _curve_values(curve: Circle | Line | Sheet) -> set[int]:
+    if isinstance(curve, Circle):
+        return {curve.radius.value}
+    if isinstance(curve, Sheet):
+        return {curve.value}
+    return {curve.value, curve.heading.value if curve.heading else -1}
 
 
 def _check_values(step: Check, eqs: Equations) -> set[int]:
@@ -151,4 +179,5 @@ def value_written(step: Step) -> int:
 
 def has_choice(step: Step) -> bool:
     """Whether a step has more than one way."""
-    return isinstance(step, Cluster) or (isinstance(step, (Meet, Swing, Level)) and step.bit >= 0)
+    two_way = (Meet, Junction, Swing, Level)
+    return isinstance(step, Cluster) or (isinstance(step, two_way) and step.bit >= 0)

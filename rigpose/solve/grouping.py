@@ -7,7 +7,7 @@ from dataclasses import replace
 
 from rigpose.model.equations import Equations
 from rigpose.solve.flow import has_choice, reads, value_written, values_read, writes
-from rigpose.solve.plan import Check, Cluster, Group, Level, Meet, Step, Swing
+from rigpose.solve.plan import Check, Cluster, Group, Junction, Level, Meet, Step, Swing
 from rigpose.solve.values import joints_of_value
 
 Node = tuple[str, int]
@@ -96,7 +96,7 @@ def _group(eqs: Equations, steps: list[Step]) -> Group:
     numbered: list[Step] = []
     bits = 0
     for step in steps:
-        if isinstance(step, (Meet, Swing, Level, Cluster)) and has_choice(step):
+        if isinstance(step, (Meet, Junction, Swing, Level, Cluster)) and has_choice(step):
             numbered.append(replace(step, bit=bits))
             bits += 1
         else:

@@ -6,7 +6,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigpose.kernels.meet import Array, cross, dot
+from rigpose.kernels.space import cross3, turn_about
 from rigpose.model.equations import GROUND
+from rigpose.solve.hanging import body_misfit
 from rigpose.solve.plan import Check
 from rigpose.solve.table import Table
 
@@ -41,8 +43,14 @@ def misfit(step: Check, table: Table) -> Array:
     """By how much an equation is off, as a length ``(B or 1, F)``."""
     return {
         "distance": _distance, "body": _body, "rail": _rail, "way": _way, "angle": _angle,
-        "target": _target, "tie": _tie,
+        "target": _target, "tie": _tie, "plane": _plane,
     }[step.kind](step, table)
+
+
+def _plane(step: Check, table: Table) -> Array:
+    planes, k = table.eqs.planes, step.index
+    away = table.point(step.points[0]) - planes.through[k].reshape(-1, 1, 1)
+    return dot(away, planes.normal[k].reshape(-1, 1, 1))
 
 
 def _distance(step: Check, table: Table) -> Array:
@@ -56,6 +64,8 @@ def _distance(step: Check, table: Table) -> Array:
 def _body(step: Check, table: Table) -> Array:
     """Largest distance of a joint from where the body's base carries it, and of the base."""
     body = table.eqs.bodies[step.index]
+    if table.eqs.dim == 3:
+        return body_misfit(body, [table.point(p) for p in step.points])
     i, j = body.base
     p, q = table.point(step.points[i]), table.point(step.points[j])
     e, w = q - p, body.shape[j] - body.shape[i]
@@ -77,10 +87,18 @@ def _rail(step: Check, table: Table) -> Array:
     p = table.point(step.points[0])
     if lines.along[k, 0] == GROUND:
         d = lines.direction[k].reshape(-1, 1, 1)
-        return cross(d, p - lines.through[k].reshape(-1, 1, 1))
+        return _across(d, p - lines.through[k].reshape(-1, 1, 1))
     a, b = table.point(step.points[1]), table.point(step.points[2])
     e = b - a
-    return np.asarray(cross(e, p - a) / np.sqrt(dot(e, e)))
+    return np.asarray(_across(e, p - a) / np.sqrt(dot(e, e)))
+
+
+def _across(e: Array, w: Array) -> Array:
+    """How much of w is square to e, times e's length; signed in the plane."""
+    if len(e) == 2:
+        return cross(e, w)
+    n = cross3(e, w)
+    return np.asarray(np.sqrt(dot(n, n)))
 
 
 def _along(step: Check, table: Table) -> Array:
@@ -100,6 +118,8 @@ def _way(step: Check, table: Table) -> Array:
 
 def _angle(step: Check, table: Table) -> Array:
     angles, k = table.eqs.angles, step.index
+    if table.eqs.dim == 3:
+        return _hinge_angle(step, table)
     e = table.point(step.points[1]) - table.point(step.points[0])
     turn = np.arctan2(e[1], e[0])
     if len(step.points) == 4:
@@ -107,6 +127,17 @@ def _angle(step: Check, table: Table) -> Array:
         turn = turn - np.arctan2(f[1], f[0])
     off = turn - angles.zero[k] - table.value(int(angles.value[k]))
     return np.asarray((np.remainder(off + np.pi, 2 * np.pi) - np.pi) * np.sqrt(dot(e, e)))
+
+
+def _hinge_angle(step: Check, table: Table) -> Array:
+    """A driven angle about an axis; points are axis, pointer and, unless on the ground, start."""
+    angles, k = table.eqs.angles, step.index
+    p, q, s = (table.point(x) for x in step.points[:3])
+    f = p + angles.toward[k].reshape(3, 1, 1) if len(step.points) == 3 else (
+        table.point(step.points[3]))
+    off = turn_about(f, p, q, s) - angles.zero[k] - table.value(int(angles.value[k]))
+    arm = s - p
+    return np.asarray((np.remainder(off + np.pi, 2 * np.pi) - np.pi) * np.sqrt(dot(arm, arm)))
 
 
 def _target(step: Check, table: Table) -> Array:
@@ -143,9 +174,16 @@ def _inequality(step: Check, table: Table) -> Mask:
 
 def _fence(step: Check, table: Table, room: float) -> Mask:
     fences, k = table.eqs.fences, step.index
-    p, q, r, s = (table.point(x) for x in step.points)
+    p, q, r, s = (table.point(x) for x in step.points[:4])
     u, v = q - p, s - r
-    angle = np.arctan2(cross(u, v), dot(u, v))
+    if table.eqs.dim == 2:
+        angle = np.arctan2(cross(u, v), dot(u, v))
+    elif fences.axis[k, 0] == GROUND:
+        n = cross3(u, v)
+        angle = np.arctan2(np.sqrt(dot(n, n)), dot(u, v))
+    else:
+        a, b = (table.point(x) for x in step.points[4:])
+        angle = turn_about(a + u, a, b, a + v)
     low, width = float(fences.low[k]), float(fences.width[k])
     if fences.either[k]:
         wide = np.abs(angle)

@@ -8,9 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from rigpose.model.equations import GROUND, Equations
-from rigpose.solve.plan import Length, Point, Step
-
-Local = tuple[float, float] | Point
+from rigpose.solve.plan import Length, Local, Step
 
 
 @dataclass(frozen=True)
@@ -30,7 +28,7 @@ class Solid:
         """Between two of its joints."""
         a, b = self.local[i], self.local[j]
         if isinstance(a, tuple) and isinstance(b, tuple):
-            return Length(constant=float(np.hypot(a[0] - b[0], a[1] - b[1])))
+            return Length(constant=float(np.linalg.norm(np.subtract(a, b))))
         if isinstance(a, int) and isinstance(b, int):
             return Length(points=(a, b))
         raise TypeError("a body's places are all numbers or all points")
@@ -57,7 +55,7 @@ class Net:
         self.solids: list[Solid] = []
         self.solids_on: dict[int, list[int]] = defaultdict(list)
         for k, body in enumerate(eqs.bodies):
-            places = {int(j): (float(p[0]), float(p[1]))
+            places = {int(j): tuple(map(float, p))
                       for j, p in zip(body.joints, body.shape, strict=True)}
             self.add(Solid(body.name, dict(places), frozenset({("body", k)})))
         for k, (a, b) in enumerate(eqs.distances.ends):
@@ -87,5 +85,6 @@ class Net:
         """Distance row ``k`` seen as a body of two joints (bones only)."""
         a, b = map(int, self.eqs.distances.ends[k])
         length = float(self.eqs.distances.length[k])
-        return Solid(self.eqs.distances.names[k], {a: (0.0, 0.0), b: (length, 0.0)},
+        start, end = (0.0,) * self.eqs.dim, (length, *(0.0,) * (self.eqs.dim - 1))
+        return Solid(self.eqs.distances.names[k], {a: start, b: end},
                      frozenset({("distance", k)}))

@@ -14,6 +14,8 @@ from rigpose.model.equations import Equations
 from rigpose.model.system import System
 
 Point = int
+Local = tuple[float, ...] | Point
+"""A place in a body's own frame: numbers, or a point of a condensed group's frame."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,8 +59,21 @@ class Line:
 
 
 @dataclass(frozen=True, slots=True)
+class Sheet:
+    """A plane in space: fixed, one coordinate given as a target (``axis`` of ``joint``), square
+    to a rail at a driven way (``value``), or through an axis of two points with a heading."""
+
+    kind: str
+    through: tuple[float, ...] = ()
+    normal: tuple[float, ...] = ()
+    joint: int = -1
+    axis: int = -1
+    value: int = -1
+
+
+@dataclass(frozen=True, slots=True)
 class Circle:
-    """All places at a given length from a placed point."""
+    """All places at a given length from a placed point: a circle, in space a sphere."""
 
     centre: Point
     radius: Length
@@ -94,9 +109,9 @@ class Carry(Step):
     """Joints of a body that has two placed points; ``local`` are places or points of a frame."""
 
     dst: tuple[Point, ...]
-    local: tuple[tuple[float, float] | Point, ...]
+    local: tuple[Local, ...]
     placed: tuple[Point, Point]
-    base: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
+    base: tuple[Local, Local]
 
 
 @dataclass(frozen=True, slots=True)
@@ -104,10 +119,10 @@ class Aim(Step):
     """Joints of a body with one placed point and a line of known heading."""
 
     dst: tuple[Point, ...]
-    local: tuple[tuple[float, float] | Point, ...]
+    local: tuple[Local, ...]
     pivot: Point
-    pivot_local: tuple[float, float] | Point
-    line: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
+    pivot_local: Local
+    line: tuple[Local, Local]
     heading: Heading
 
 
@@ -116,10 +131,10 @@ class Swing(Step):
     """Joints of a body with one placed point, turned until its slot passes a placed point."""
 
     dst: tuple[Point, ...]
-    local: tuple[tuple[float, float] | Point, ...]
+    local: tuple[Local, ...]
     pivot: Point
-    pivot_local: tuple[float, float] | Point
-    slot: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
+    pivot_local: Local
+    slot: tuple[Local, Local]
     through: Point
     bit: int
 
@@ -138,7 +153,7 @@ class Seat(Step):
     """Fixes the frame of a floating group: the joints of its first body at their own places."""
 
     dst: tuple[Point, ...]
-    local: tuple[tuple[float, float] | Point, ...]
+    local: tuple[Local, ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -156,8 +171,8 @@ class Orient(Step):
     """Helper points: the places of a body turned to a known heading, about an origin of its own."""
 
     dst: tuple[Point, ...]
-    local: tuple[tuple[float, float] | Point, ...]
-    line: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
+    local: tuple[Local, ...]
+    line: tuple[Local, Local]
     heading: Heading
 
 
@@ -167,11 +182,51 @@ class Level(Step):
     lines, the second ``offset`` to the left of the first along ``direction``."""
 
     dst: tuple[Point, ...]
-    local: tuple[tuple[float, float] | Point, ...]
-    pair: tuple[tuple[float, float] | Point, tuple[float, float] | Point]
+    local: tuple[Local, ...]
+    pair: tuple[Local, Local]
     direction: tuple[float, float]
     offset: float
     bit: int
+
+
+@dataclass(frozen=True, slots=True)
+class Junction(Step):
+    """A joint in space where surfaces meet: lines first, then sheets, then spheres; ``bit`` is the
+    number of its choice (-1: one way only)."""
+
+    dst: Point
+    curves: tuple[Circle | Line | Sheet, ...]
+    bit: int = -1
+
+
+@dataclass(frozen=True, slots=True)
+class Hang(Step):
+    """Joints of a body in space carried by three placed points (two, where all lie in a line)."""
+
+    dst: tuple[Point, ...]
+    local: tuple[Local, ...]
+    placed: tuple[Point, ...]
+    base: tuple[Local, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Hinge(Step):
+    """Joints of a body in space turned about an axis of two placed points by a driven angle.
+
+    The angle is ``sign * (value + zero)`` from the placed point ``start`` (or the direction
+    ``toward``) to the body's own ``pointer``.
+    """
+
+    dst: tuple[Point, ...]
+    local: tuple[Local, ...]
+    axis: tuple[Point, Point]
+    axis_local: tuple[Local, Local]
+    pointer: Local
+    start: Point | None
+    toward: tuple[float, ...]
+    value: int
+    zero: float
+    sign: float
 
 
 @dataclass(frozen=True, slots=True)

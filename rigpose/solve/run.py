@@ -39,6 +39,7 @@ from rigpose.solve.plan import (
     Length,
     Level,
     Line,
+    Local,
     Meet,
     Orient,
     Point,
@@ -77,13 +78,15 @@ def execute(step: Step, table: Table, ways: Ways, number: int) -> None:
     raise TypeError(f"no way to run {type(step).__name__}")
 
 
-def _local(table: Table, local: tuple[float, float] | Point) -> Array:
+def local_of(table: Table, local: Local) -> Array:
+    """A place of a body's own frame, ``(dim, B or 1, F or 1)``."""
     if isinstance(local, tuple):
         return np.array(local).reshape(-1, 1, 1)
     return table.point(local)
 
 
-def _length(table: Table, length: Length) -> Array | float:
+def length_of(table: Table, length: Length) -> Array | float:
+    """A length as a number, or ``(B or 1, F or 1)``."""
     if length.points is not None:
         d = table.point(length.points[1]) - table.point(length.points[0])
         return np.sqrt(dot(d, d))
@@ -138,14 +141,14 @@ def _plain_line(table: Table, line: Line) -> tuple[Array, Array]:
 @execute.register
 def _(step: Given, table: Table, ways: Ways, number: int) -> None:
     table.put(step.dst, np.stack(
-        [table.inputs.targets[step.joint, axis][None] for axis in range(2)]))
+        [table.inputs.targets[step.joint, axis][None] for axis in range(table.eqs.dim)]))
 
 
 @execute.register
 def _(step: Meet, table: Table, ways: Ways, number: int) -> None:
     first, second = step.first, step.second
     if isinstance(first, Circle) and isinstance(second, Circle):
-        r1, r2 = _length(table, first.radius), _length(table, second.radius)
+        r1, r2 = length_of(table, first.radius), length_of(table, second.radius)
         c1, c2 = table.point(first.centre), table.point(second.centre)
         crossing = circle_circle(c1, r1, c2, r2)
         if table.careful:
@@ -154,14 +157,14 @@ def _(step: Meet, table: Table, ways: Ways, number: int) -> None:
                (first.centre, second.centre), lambda: _circle_rate(c1, r1, c2, r2))
     elif isinstance(first, Line) and isinstance(second, Circle):
         p, d = line_of(table, first)
-        radius, centre = _length(table, second.radius), table.point(second.centre)
+        radius, centre = length_of(table, second.radius), table.point(second.centre)
         crossing = line_circle(p, d, centre, radius)
         choose(step.dst, step.bit, crossing, table, ways, number,
                (second.centre, *_line_points(first)), lambda: (2.0 / radius, radius, 16 * EPS))
     elif isinstance(first, Line) and isinstance(second, Line):
         point, sine = line_line(*line_of(table, first), *line_of(table, second))
         parents = (*_line_points(first), *_line_points(second))
-        bound = _parents(table, parents) / sine if table.careful else 0.0
+        bound = parents_bound(table, parents) / sine if table.careful else 0.0
         table.put(step.dst, point, bound)
         table.kill(np.isfinite(point[0]), number)
         table.narrow(sine)
@@ -175,7 +178,7 @@ def _without_free(step: Meet, table: Table, crossing: Crossing, way: Array,
                   difference: Array | float) -> Crossing:
     """Equal circles about one point meet everywhere: the joint turns freely, which is told."""
     assert isinstance(step.first, Circle) and isinstance(step.second, Circle)
-    room = ONE_PLACE * _parents(table, (step.first.centre, step.second.centre))
+    room = ONE_PLACE * parents_bound(table, (step.first.centre, step.second.centre))
     free = (np.sqrt(dot(way, way)) <= room) & (difference <= room)
     base, side, sine2, sine = crossing
     alive = free if table.alive is None else free & table.alive
@@ -197,7 +200,8 @@ def _circle_rate(
     return 2 * np.sqrt(d2) / (r1 * r2), np.minimum(r1, r2), 4 * EPS * own
 
 
-def _parents(table: Table, points: Sequence[Point]) -> Array | float:
+def parents_bound(table: Table, points: Sequence[Point]) -> Array | float:
+    """The error bound that some points hand on."""
     total: Array | float = table.rounding
     for p in points:
         total = total + table.bound(p)
@@ -213,7 +217,7 @@ def choose(
     bound: Array | float = 0.0
     if table.careful:
         per_place, radius, own = rate()
-        delta = _parents(table, parents)
+        delta = parents_bound(table, parents)
         allowed = per_place * delta + own
         touch = np.abs(sine2) <= allowed
         if touch.any():
@@ -294,7 +298,7 @@ def _spin(step: Carry | Aim | Swing, table: Table, cos: Array, sin: Array, pivot
     """Place all joints of a body turned by (cos, sin) about a placed point."""
     shape = np.broadcast_shapes(cos.shape, pivot.shape[1:], local.shape[1:])
     for dst, place in zip(step.dst, step.local, strict=True):
-        w = _local(table, place) - local
+        w = local_of(table, place) - local
         one = w.shape[1:] == (1, 1)
         out = np.empty((2, *(shape if one else np.broadcast_shapes(shape, w.shape[1:]))))
         np.multiply(cos, w[0], out=out[0])
@@ -308,31 +312,31 @@ def _spin(step: Carry | Aim | Swing, table: Table, cos: Array, sin: Array, pivot
 @execute.register
 def _(step: Carry, table: Table, ways: Ways, number: int) -> None:
     p, q = (table.point(k) for k in step.placed)
-    a, b = (_local(table, k) for k in step.base)
+    a, b = (local_of(table, k) for k in step.base)
     e, w = q - p, b - a
     scale = 1.0 / dot(w, w)
     # Turned by placed / local as complex numbers; the length of the base is a check elsewhere.
     cos, sin = dot(w, e) * scale, cross(w, e) * scale
     long = 1.0 / np.sqrt(cos * cos + sin * sin)
-    bound = _parents(table, step.placed) * 2.0 if table.careful else 0.0
+    bound = parents_bound(table, step.placed) * 2.0 if table.careful else 0.0
     _spin(step, table, cos * long, sin * long, p, a, bound)
 
 
 @execute.register
 def _(step: Aim, table: Table, ways: Ways, number: int) -> None:
     u = _heading(table, step.heading)
-    a, b = (_local(table, k) for k in step.line)
+    a, b = (local_of(table, k) for k in step.line)
     e = b - a
     e = e / np.sqrt(dot(e, e))
     pivot = table.point(step.pivot)
-    bound = _parents(table, (step.pivot, *(step.heading.base or ()))) if table.careful else 0.0
-    _spin(step, table, dot(e, u), cross(e, u), pivot, _local(table, step.pivot_local), bound)
+    bound = parents_bound(table, (step.pivot, *(step.heading.base or ()))) if table.careful else 0.0
+    _spin(step, table, dot(e, u), cross(e, u), pivot, local_of(table, step.pivot_local), bound)
 
 
 @execute.register
 def _(step: Swing, table: Table, ways: Ways, number: int) -> None:
-    a, b = (_local(table, k) for k in step.slot)
-    pivot, c = table.point(step.pivot), _local(table, step.pivot_local)
+    a, b = (local_of(table, k) for k in step.slot)
+    pivot, c = table.point(step.pivot), local_of(table, step.pivot_local)
     e = b - a
     normal = perp(e / np.sqrt(dot(e, e)))
     w = table.point(step.through) - pivot
@@ -343,8 +347,8 @@ def _(step: Swing, table: Table, ways: Ways, number: int) -> None:
     choose(helper, step.bit, crossing, table, ways, number, (step.pivot, step.through),
            lambda: (2.0 / long, 1.0, 16 * EPS))
     heading = table.point(helper)
-    pivot, c = table.point(step.pivot), _local(table, step.pivot_local)
-    arms = [np.sqrt(dot(v, v)) for v in (_local(table, k) - c for k in step.local)]
+    pivot, c = table.point(step.pivot), local_of(table, step.pivot_local)
+    arms = [np.sqrt(dot(v, v)) for v in (local_of(table, k) - c for k in step.local)]
     reach = np.max(np.stack(np.broadcast_arrays(*arms)), axis=0)
     w = table.point(step.through) - pivot
     # The slot's offset turns the body by its change over the way along the slot.
@@ -354,9 +358,9 @@ def _(step: Swing, table: Table, ways: Ways, number: int) -> None:
 
 
 def _slot_offset(table: Table, step: Swing) -> Array:
-    a, b = (_local(table, k) for k in step.slot)
+    a, b = (local_of(table, k) for k in step.slot)
     e = b - a
-    return cross(e / np.sqrt(dot(e, e)), _local(table, step.pivot_local) - a)
+    return cross(e / np.sqrt(dot(e, e)), local_of(table, step.pivot_local) - a)
 
 
 @execute.register
@@ -364,37 +368,37 @@ def _(step: Slide, table: Table, ways: Ways, number: int) -> None:
     p, q = (table.point(k) for k in step.line)
     e = q - p
     table.put(step.dst, p + e * (table.value(step.value) / np.sqrt(dot(e, e))),
-              _parents(table, step.line) if table.careful else 0.0)
+              parents_bound(table, step.line) if table.careful else 0.0)
 
 
 @execute.register
 def _(step: Seat, table: Table, ways: Ways, number: int) -> None:
     for dst, place in zip(step.dst, step.local, strict=True):
-        table.put(dst, _local(table, place))
+        table.put(dst, local_of(table, place))
 
 
 @execute.register
 def _(step: Shift, table: Table, ways: Ways, number: int) -> None:
     place = table.point(step.point) + table.point(step.plus) - table.point(step.minus)
-    table.put(step.dst, place, _parents(table, (step.point,)) if table.careful else 0.0)
+    table.put(step.dst, place, parents_bound(table, (step.point,)) if table.careful else 0.0)
 
 
 @execute.register
 def _(step: Orient, table: Table, ways: Ways, number: int) -> None:
     u = _heading(table, step.heading)
-    a, b = (_local(table, k) for k in step.line)
+    a, b = (local_of(table, k) for k in step.line)
     e = b - a
     e = e / np.sqrt(dot(e, e))
     cos, sin = dot(e, u), cross(e, u)
     for dst, place in zip(step.dst, step.local, strict=True):
-        w = _local(table, place) - a
+        w = local_of(table, place) - a
         table.put(dst, np.stack(np.broadcast_arrays(
             cos * w[0] - sin * w[1], sin * w[0] + cos * w[1])))
 
 
 @execute.register
 def _(step: Level, table: Table, ways: Ways, number: int) -> None:
-    a, b = (_local(table, k) for k in step.pair)
+    a, b = (local_of(table, k) for k in step.pair)
     e = b - a
     long = np.sqrt(dot(e, e))
     d = np.array(step.direction).reshape(2, 1, 1)
@@ -405,11 +409,11 @@ def _(step: Level, table: Table, ways: Ways, number: int) -> None:
            lambda: (2.0 / long, 1.0, 16 * EPS))
     # The choice has doubled the branches: what was read before is read again.
     heading = table.point(-1 - number)
-    a, b = (_local(table, k) for k in step.pair)
+    a, b = (local_of(table, k) for k in step.pair)
     e = (b - a) / np.sqrt(dot(b - a, b - a))
     cos, sin = dot(e, heading), cross(e, heading)
     for dst, place in zip(step.dst, step.local, strict=True):
-        w = _local(table, place) - a
+        w = local_of(table, place) - a
         table.put(dst, np.stack(np.broadcast_arrays(
             cos * w[0] - sin * w[1], sin * w[0] + cos * w[1])), table.bound(-1 - number))
 

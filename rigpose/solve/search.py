@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from rigpose.ground.budget import Budget
 from rigpose.ground.words import Found, weaker
 from rigpose.model.equations import Array
+from rigpose.solve import runspace  # noqa: F401 - registers the steps of space
 from rigpose.solve.plan import Group, Plan
 from rigpose.solve.polish import polish
 from rigpose.solve.rest import Rest
