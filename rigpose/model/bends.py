@@ -35,12 +35,16 @@ class Bend:
     joint, first, second : joint numbers; on a rail ``first`` is the joint that it hangs on and
     ``second`` is -1
     rail : the rail's number, -1 for none
+    third : in space the third joint, -1 where a plane's normal stands for it
+    plane : the number of that plane, -1 for none
     """
 
     joint: int
     first: int
     second: int
     rail: int = -1
+    third: int = -1
+    plane: int = -1
 
     def word(self, sign: int) -> str:
         """Left, right, before, after or straight; an empty text where there is no pose."""
@@ -65,11 +69,33 @@ def bends_of(rig: Rig) -> tuple[Bend, ...]:
         if joint.name in rails:
             found.append(Bend(rig.index[joint.name], rig.index[tied[0]], -1, rails[joint.name]))
             continue
+        if rig.dim == 3:
+            found += _in_space(rig, joint.name, tied, plates)
+            continue
         together = [p for p in plates if {joint.name, tied[0]} <= p]
         second = next((t for t in tied[1:] if not any(t in p for p in together)), None)
         if second is not None:
             found.append(Bend(rig.index[joint.name], rig.index[tied[0]], rig.index[second]))
     return tuple(found)
+
+
+def _in_space(rig: Rig, joint: str, tied: list[str], plates: list[set[str]]) -> list[Bend]:
+    """To which side of the plane through its first three neighbours a joint lies; of a joint
+    that stays in a plane, to which side of its first two, seen from the tip of the normal."""
+    here = rig.index[joint]
+    plane = next((k for k, p in enumerate(rig.planes) if joint in p.joints), -1)
+    need = 2 if plane >= 0 else 3
+    chosen: list[str] = []
+    for other in tied:
+        if len(chosen) == need - 1 and any({joint, *chosen, other} <= p for p in plates):
+            continue  # all in one plate: that side can't differ
+        chosen.append(other)
+        if len(chosen) == need:
+            break
+    if len(chosen) < need:
+        return []
+    a, b, *rest = (rig.index[c] for c in chosen)
+    return [Bend(here, a, b, third=rest[0] if rest else -1, plane=plane)]
 
 
 def _ties(rig: Rig) -> dict[str, list[str]]:
@@ -101,15 +127,29 @@ def _signs(rig: Rig, block: Array, bend: Bend) -> Signs:
     away = block[bend.joint] - block[bend.first]
     if bend.rail >= 0:
         e = _rail_direction(rig, block, bend.rail)
-        share = away[0] * e[0] + away[1] * e[1]
+        share = (away * e).sum(axis=0)
+    elif rig.dim == 3:
+        e = _normal(rig, block, bend)
+        share = (away * e).sum(axis=0)
     else:
         e = block[bend.second] - block[bend.first]
         share = e[0] * away[1] - e[1] * away[0]
-    room = (e[0] * e[0] + e[1] * e[1]) * (away[0] * away[0] + away[1] * away[1])
+    room = (e * e).sum(axis=0) * (away * away).sum(axis=0)
     bent = share * share > STRAIGHT * STRAIGHT * room
     sign = np.where(bent, np.where(share > 0, np.int8(1), np.int8(-1)), np.int8(0))
     sign[np.isnan(share)] = -2
     return sign
+
+
+def _normal(rig: Rig, block: Array, bend: Bend) -> Array:
+    """What a joint's side is measured along, ``(3, m)``."""
+    e = block[bend.second] - block[bend.first]
+    if bend.plane >= 0:
+        normal: Array = np.cross(np.array(rig.planes[bend.plane].normal), e, axisb=0, axisc=0)
+        return normal
+    f = block[bend.third] - block[bend.first]
+    across: Array = np.cross(e, f, axis=0)
+    return across
 
 
 def _rail_direction(rig: Rig, block: Array, number: int) -> Array:

@@ -9,11 +9,13 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import lru_cache
+from itertools import combinations
 
 import numpy as np
 
 from rigpose.model.equations import Array
-from rigpose.model.rig import Bone, Coordinates, Limit, Pair, Plate, Rail, Ram, Rig
+from rigpose.model.rig import Bone, Coordinates, Limit, Pair, Plane, Plate, Rail, Ram, Rig
+from rigpose.model.torsion import torsion
 
 POSES = 1 << 11
 """Poses measured in one go: few enough to stay in the cache."""
@@ -76,7 +78,8 @@ def judge(rig: Rig, positions: Array, size: float) -> Verdict:
     """Measure poses ``(..., n, dim)`` in the rig's frame; NaN poses give NaN columns."""
     lead = positions.shape[:-2]
     flat = positions.reshape(-1, *positions.shape[-2:])
-    measured: list[Bone | Plate | Rail] = [*rig.bones, *rig.plates, *rig.rails]
+    measured: list[Bone | Plate | Rail | Plane] = [*rig.bones, *rig.plates, *rig.rails,
+                                                   *rig.planes]
     names = tuple(p.name for p in measured)
     over_names = tuple(p.name for p in _ranged(rig))
     broken, over = np.empty((len(names), len(flat))), np.empty((len(over_names), len(flat)))
@@ -102,8 +105,13 @@ def _ranged(rig: Rig) -> list[Ram | Rail | Limit]:
     return [*ranged, *rig.limits]
 
 
-def _departure(rig: Rig, x: Array, part: Bone | Plate | Rail) -> Array:
+def _departure(rig: Rig, x: Array, part: Bone | Plate | Rail | Plane) -> Array:
     """How far one part is off, ``(m,)``, in places ``(n, dim, m)``."""
+    if isinstance(part, Plane):
+        normal, through = np.array(part.normal), np.array(part.through)
+        gaps = [np.abs(normal @ (x[rig.index[j]] - through[:, None])) for j in part.joints]
+        worst: Array = np.max(gaps, axis=0)
+        return worst
     if isinstance(part, Bone):
         a, b = (x[rig.index[j]] for j in part.ends)
         off: Array = np.abs(_long(b - a) - part.length)
@@ -167,7 +175,36 @@ def _pairs(p: Sequence[Array], shape: Array) -> Array:
         for j in range(i):
             want = float(np.linalg.norm(shape[i] - shape[j]))
             worst = np.maximum(worst, np.abs(_long(p[i] - p[j]) - want))
-    return worst
+    return np.maximum(worst, _turned_over(p, shape))
+
+
+def _turned_over(p: Sequence[Array], shape: Array) -> Array:
+    """In space: how far a mirrored body's joints are from where they belong, ``(m,)``.
+
+    It is seen from the four joints that span the largest volume; a flat body has no hand.
+    """
+    worst = np.zeros(p[0].shape[1])
+    four = _widest(shape)
+    if four is None:
+        return worst
+    a, b, c, d = four
+    own = float(np.linalg.det(shape[[b, c, d]] - shape[a]))
+    edges = np.stack([p[k] - p[a] for k in (b, c, d)])
+    volume = np.linalg.det(edges.transpose(2, 0, 1))
+    size = float(np.linalg.norm(np.ptp(shape, axis=0)))
+    mirrored: Array = np.where(volume * own < 0, size, worst)
+    return mirrored
+
+
+def _widest(shape: Array) -> tuple[int, ...] | None:
+    """Four joints of a body that don't lie in one plane, or None."""
+    size = float(np.linalg.norm(np.ptp(shape, axis=0)))
+    best, found = 1e-6 * size**3, None
+    for four in combinations(range(min(len(shape), 12)), 4):
+        volume = abs(float(np.linalg.det(shape[list(four[1:])] - shape[four[0]])))
+        if volume > best:
+            best, found = volume, four
+    return found
 
 
 def _rail_line(rig: Rig, x: Array, rail: Rail) -> tuple[Array, Array]:
@@ -206,10 +243,24 @@ def direction_of(rig: Rig, positions: Array, pair: Pair | None) -> Array:
 
 def _limit(rig: Rig, x: Array, limit: Limit) -> Array:
     poses = x.transpose(2, 0, 1)
-    angle = direction_of(rig, poses, limit.second) - direction_of(rig, poses, limit.first)
+    angle = (limit_angle(rig, poses, limit) if rig.dim == 3 else
+             direction_of(rig, poses, limit.second) - direction_of(rig, poses, limit.first))
     low, high = limit.range
     if limit.either:
         return _outside(np.abs(np.remainder(angle + 180, 360) - 180), low, high)
     past = np.remainder(angle - low, 360.0)
     width = high - low
     return np.where(past <= width, 0.0, np.minimum(past - width, 360.0 - past))
+
+
+def limit_angle(rig: Rig, poses: Array, limit: Limit) -> Array:
+    """Degrees ``(...)`` from the first line to the second, about the limit's axis if it has one."""
+    u, v = (poses[..., rig.index[b], :] - poses[..., rig.index[a], :]
+            for a, b in (limit.first, limit.second))
+    if limit.axis is not None:
+        p, q = (poses[..., rig.index[j], :] for j in limit.axis)
+        about: Array = np.degrees(torsion(p + u, p, q, p + v))
+        return about
+    sine = np.linalg.norm(np.cross(u, v), axis=-1)
+    angle: Array = np.degrees(np.arctan2(sine, (u * v).sum(axis=-1)))
+    return angle

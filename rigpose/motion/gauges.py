@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 
 from rigpose.model.equations import Array
-from rigpose.model.judge import direction_of
+from rigpose.model.gauges import measure
+from rigpose.model.judge import direction_of, limit_angle
 from rigpose.model.rig import Crank, Limit, Rail, Ram, Rig
 from rigpose.solve.rest import find_rest
 
@@ -27,6 +28,8 @@ def _value(rig: Rig, positions: Array, part: Crank | Ram | Rail | Limit) -> Arra
     if isinstance(part, Crank):
         return _crank(rig, positions, part)
     if isinstance(part, Limit):
+        if rig.dim == 3:
+            return limit_angle(rig, positions, part)
         turn = direction_of(rig, positions, part.second) - direction_of(rig, positions, part.first)
         low = -180.0 if part.either else part.range[0]
         angle: Array = low + np.remainder(turn - low, 360.0)
@@ -51,6 +54,10 @@ def _way(rig: Rig, positions: Array, rail: Rail) -> Array:
 
 def _crank(rig: Rig, positions: Array, crank: Crank) -> Array:
     """Degrees that don't jump from frame to frame; the first lies in -180 … 180."""
+    if rig.dim == 3:
+        eqs = find_rest(rig).equations
+        number = np.array([eqs.value_index[crank.name]])
+        return unrolled(np.degrees(measure(eqs, eqs.inward(positions), number)[:, 0]))
     zero = crank.zero
     if isinstance(zero, str):
         k = [c.name for c in rig.cranks].index(crank.name)

@@ -20,6 +20,8 @@ def mirror_images(rig: Rig, poses: Array, known: Array, size: float) -> NDArray[
     """For poses ``(n_branches, n_joints, 2)`` of one frame the number of each one's image, -1 for
     none. ``known (k, 2)`` are the places of pins and whole targets."""
     none = np.full(len(poses), -1, dtype=np.intp)
+    if rig.dim != 2:
+        return none
     line = _line(known, size)
     if line is None or len(poses) < 2:
         return none

@@ -33,6 +33,7 @@ def checks_for(
     yield from _angles(eqs, frame, used)
     if frame.ground:
         yield from _targets(eqs, frame, used)
+        yield from _planes(eqs, frame, used)
         yield from _ties(eqs, frame, used)
         yield from _inequalities(eqs, frame)
 
@@ -93,6 +94,9 @@ def _angles(eqs: Equations, frame: Growth, used: frozenset[Key]) -> Iterator[Che
         if on_ground and not frame.ground:
             continue
         joints = [int(j) for j in (*angles.line[k], *angles.base[k]) if j != GROUND]
+        if eqs.dim == 3:
+            ends = [int(angles.line[k, 1])] + ([] if on_ground else [int(angles.base[k, 1])])
+            joints = [*map(int, angles.axis[k]), *ends]
         points = _inside(frame, joints)
         if points:
             yield Check(kind="angle", index=k, points=points, parts=(name,))
@@ -104,6 +108,13 @@ def _targets(eqs: Equations, frame: Growth, used: frozenset[Key]) -> Iterator[Ch
         if key not in used and j in frame.place:
             yield Check(kind="target", index=key[1], points=(j,),
                         parts=(eqs.rig.joint_names[j],))
+
+
+def _planes(eqs: Equations, frame: Growth, used: frozenset[Key]) -> Iterator[Check]:
+    for k, name in enumerate(eqs.planes.names):
+        j = int(eqs.planes.joint[k])
+        if ("plane", k) not in used and j in frame.place:
+            yield Check(kind="plane", index=k, points=(j,), parts=(name,))
 
 
 def _ties(eqs: Equations, frame: Growth, used: frozenset[Key]) -> Iterator[Check]:
@@ -126,8 +137,8 @@ def _inequalities(eqs: Equations, frame: Growth) -> Iterator[Check]:
         if np.isfinite(eqs.span[v]).any() and points:
             yield Check(kind="track", index=k, points=points, parts=(eqs.lines.names[k],))
     for k, name in enumerate(eqs.fences.names):
-        both = (*eqs.fences.first[k], *eqs.fences.second[k])
-        points = _inside(frame, [int(j) for j in both])
+        both = (*eqs.fences.first[k], *eqs.fences.second[k], *eqs.fences.axis[k])
+        points = _inside(frame, [int(j) for j in both if j != GROUND])
         if points:
             yield Check(kind="fence", index=k, points=points, parts=(name,))
     for k, (name, joints3, _) in enumerate(eqs.hands):

@@ -28,12 +28,15 @@ from rigpose.solve.plan import (
     Meet,
     Point,
     Seat,
+    Sheet,
     Slide,
     Step,
     Swing,
 )
 
 Key = tuple[str, int]
+APART = 1e-6
+"""Centres farther apart than this part of the size, at rest or close by, are two."""
 PARALLEL = 1e-7
 """Curves that cross at less than this sine, at rest and close by, do not place a joint."""
 
@@ -42,10 +45,11 @@ PARALLEL = 1e-7
 class Locus:
     """A curve that a joint lies on, with the equation behind it and its normals in the poses."""
 
-    curve: Circle | Line
+    curve: Circle | Line | Sheet
     uses: Key
     part: str
     normals: Array
+    poses_of_centre: Array | None = field(default=None, compare=False)
 
 
 @dataclass
@@ -200,7 +204,8 @@ class Growth:
         away = self.poses[:, joint] - self.poses[:, centre]
         with np.errstate(invalid="ignore", divide="ignore"):
             normal = away / np.linalg.norm(away, axis=1, keepdims=True)
-        self._offer(joint, Locus(Circle(self.place[centre], radius), uses, part, normal))
+        self._offer(joint, Locus(Circle(self.place[centre], radius), uses, part, normal,
+                                 self.poses[:, centre]))
 
     def _touch(self, number: int, joint: int) -> None:
         solid = self.net.solids[number]
@@ -259,11 +264,14 @@ class Growth:
         best = best or self._best_pair(loci)
         if best is None:
             return
-        first, second = best
+        self._meet_at(joint, *best)
+
+    def _meet_at(self, joint: int, first: Locus, second: Locus) -> None:
+        """Place a joint where two curves meet."""
         self.used |= {first.uses, second.uses}
         for kind, number in (first.uses, second.uses):
             self._hold(number if kind == "solid" else None, [joint])
-        curves = [first.curve, second.curve]
+        curves = [c for c in (first.curve, second.curve) if not isinstance(c, Sheet)]
         if isinstance(curves[0], Circle) and isinstance(curves[1], Line):
             curves.reverse()
         one_way = all(isinstance(c, Line) for c in curves)
@@ -271,6 +279,30 @@ class Growth:
         step = Meet(dst=dst, first=curves[0], second=curves[1],
                     bit=-1 if one_way else 0, parts=(first.part, second.part))
         self._placed(joint, dst, step)
+
+    def force(self) -> bool:
+        """Place a joint that nothing else places by curves that touch at rest and close by.
+
+        Two different circles, or a circle and a line, meet in finitely many points even so: such
+        a joint is stretched out for good, and stands at a dead centre. True where one was placed.
+        """
+        for joint in sorted(self.loci):
+            if joint not in self.place:
+                pair = next((p for p in combinations(self.loci[joint], 2) if self._finite(*p)),
+                            None)
+                if pair is not None:
+                    self._meet_at(joint, *pair)
+                    return True
+        return False
+
+    def _finite(self, a: Locus, b: Locus) -> bool:
+        """Whether two curves can't have a stretch in common, whatever their lengths."""
+        circles = [x for x in (a, b) if isinstance(x.curve, Circle)]
+        if len(circles) < 2:
+            return len(circles) == 1
+        first, second = (x.poses_of_centre for x in circles)
+        return first is not None and second is not None and (
+            float(np.nanmax(np.abs(first - second))) > APART)
 
     def _placed(self, joint: int, dst: Point, step: Step | None) -> None:
         if step is not None:

@@ -16,7 +16,7 @@ import numpy as np
 from rigpose.model.equations import GROUND
 from rigpose.solve.growth import Growth, Key, Locus
 from rigpose.solve.net import Solid
-from rigpose.solve.plan import Circle, Level, Line, Meet, Orient, Point, Shift, Step
+from rigpose.solve.plan import Circle, Level, Line, Meet, Orient, Point, Sheet, Shift, Step
 
 PARALLEL = 1e-9
 """Rails whose directions differ by less than this sine are parallel by intent."""
@@ -107,7 +107,8 @@ def _shifted(ground: Growth, body: Turned, points: count[int]) -> bool:
     if found is None:
         return False
     one, two = found
-    curves = sorted((one.curve, two.curve), key=lambda c: isinstance(c, Circle))
+    curves: list[Circle | Line] = [c for c in (one.curve, two.curve) if not isinstance(c, Sheet)]
+    curves.sort(key=lambda c: isinstance(c, Circle))
     bit = -1 if all(isinstance(c, Line) for c in curves) else 0
     steps.append(Meet(dst=first, first=curves[0], second=curves[1], bit=bit,
                       parts=(one.part, two.part)))
@@ -160,6 +161,7 @@ def _handed_on(locus: Locus, mine: Point, theirs: Point, same: bool, steps: list
         return locus
     if isinstance(locus.curve, Line):
         return replace(locus, curve=replace(locus.curve, moved=(mine, theirs)))
+    assert isinstance(locus.curve, Circle)  # sheets belong to space
     point = next(points)
     steps.append(Shift(dst=point, point=locus.curve.centre, minus=mine, plus=theirs,
                        parts=(locus.part,)))

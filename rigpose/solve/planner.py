@@ -33,6 +33,7 @@ from rigpose.solve.plan import (
     Tied,
 )
 from rigpose.solve.rest import Rest, find_rest
+from rigpose.solve.spacegrowth import SpaceGrowth
 from rigpose.solve.values import joints_of_value
 
 
@@ -53,8 +54,9 @@ class Planner:
     def __post_init__(self) -> None:
         self.points = count(self.eqs.n)
         self.net = Net(self.eqs)
-        self.ground = Growth(self.net, self.poses, set(self.drives), self.points.__next__,
-                             targets=self.targets, surplus=self.surplus)
+        kind = Growth if self.eqs.dim == 2 else SpaceGrowth
+        self.ground = kind(self.net, self.poses, set(self.drives), self.points.__next__,
+                           targets=self.targets, surplus=self.surplus)
 
     def run(self) -> tuple[list[Step], tuple[int, ...]]:
         """Steps in order and the joints that stay loose."""
@@ -66,8 +68,8 @@ class Planner:
                 ground._push(0, k, "crank")
         while True:
             ground.run()
-            if (self._ties() or self._condense() or turned_by_crank(ground, self.points)
-                    or turned_by_rails(ground, self.points) or self._cluster()):
+            if (self._ties() or self._condense() or self._turned() or self._cluster()
+                    or ground.force()):
                 continue
             break
         loose = tuple(j for j in range(self.eqs.n) if j not in ground.place)
@@ -137,8 +139,9 @@ class Planner:
     def _grow_from(self, number: int | None, solid: Solid) -> Solid | None:
         # Rigid groups have at least one more joint that two parts of them hold; look for one
         # candidate before growing, so that long chains stay cheap.
-        frame = Growth(self.net, self.poses, set(self.ground.known), self.points.__next__,
-                       ground=False, surplus=self.surplus)
+        kind = Growth if self.eqs.dim == 2 else SpaceGrowth
+        frame = kind(self.net, self.poses, set(self.ground.known), self.points.__next__,
+                     ground=False, surplus=self.surplus)
         frame.seat(number, solid)
         frame.run()
         if len(frame.place) == len(solid.local):
@@ -152,6 +155,11 @@ class Planner:
         checks = tuple(checks_for(self.eqs, self.net, frame, frozenset(uses)))
         uses |= {check_key(self.eqs, c) for c in checks}
         return Solid(solid.name, dict(frame.place), frozenset(uses), (*frame.steps, *checks))
+
+    def _turned(self) -> bool:
+        """Bodies of known heading in the plane."""
+        return self.eqs.dim == 2 and (turned_by_crank(self.ground, self.points)
+                                      or turned_by_rails(self.ground, self.points))
 
     # -- blocks -------------------------------------------------------------------------------
 

@@ -1,0 +1,272 @@
+"""Growing a frame in space: joints placed where three surfaces meet, bodies hung on three joints.
+
+A line counts as two surfaces. A body with one or two placed joints puts its others on spheres
+about them (two spheres are the circle of a hinge), so its hand is seen only once three are
+placed; until then it is a check.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass, field
+from itertools import combinations
+
+import numpy as np
+
+from rigpose.model.equations import GROUND, Array
+from rigpose.solve.growth import APART, PARALLEL, Growth, Key, Locus
+from rigpose.solve.net import Solid
+from rigpose.solve.plan import Circle, Given, Hang, Hinge, Junction, Length, Line, Point, Sheet
+
+MOST_LOCI = 10
+GOOD = 0.2
+"""A volume that is good enough to stop looking for a better choice."""
+ORDER = (Line, Sheet, Circle)
+
+
+@dataclass
+class SpaceGrowth(Growth):
+    """A frame being grown in space."""
+
+    lines: dict[Key, bool] = field(default_factory=dict)
+
+    # -- what is known from the start ---------------------------------------------------------
+
+    def begin_ground(self) -> None:
+        """Pins, targets, fixed planes and rails are known from the start."""
+        eqs = self.net.eqs
+        for pin in map(int, np.flatnonzero(eqs.pinned)):
+            self._placed(pin, pin, None)
+        whole = [j for j in sorted({j for j, _ in self.targets})
+                 if all((j, axis) in self.targets for axis in range(3))]
+        for j in whole:
+            self.used |= {("target", j * 3 + axis) for axis in range(3)}
+            if j not in self.place:
+                self._placed(j, j, Given(dst=j, joint=j, parts=(eqs.rig.joint_names[j],)))
+        for j, axis in sorted(self.targets):
+            if j not in whole:
+                sheet = Sheet("axis", joint=j, axis=axis)
+                normal = np.broadcast_to(np.eye(3)[axis], (len(self.poses), 3))
+                self._offer(j, Locus(sheet, ("target", j * 3 + axis), eqs.rig.joint_names[j],
+                                     normal))
+        for k in range(len(eqs.planes.names)):
+            through, normal = eqs.planes.through[k], eqs.planes.normal[k]
+            sheet = Sheet("fixed", tuple(map(float, through)), tuple(map(float, normal)))
+            self._offer(int(eqs.planes.joint[k]), Locus(
+                sheet, ("plane", k), eqs.planes.names[k],
+                np.broadcast_to(normal, (len(self.poses), 3))))
+        for k in map(int, np.flatnonzero(eqs.lines.along[:, 0] == GROUND)):
+            self._fixed_rail(k)
+
+    def _fixed_rail(self, k: int) -> None:
+        lines = self.net.eqs.lines
+        d = lines.direction[k]
+        line = Line("fixed", tuple(map(float, lines.through[k])), tuple(map(float, d)))
+        self._offer(int(lines.joint[k]), Locus(line, ("rail", k), lines.names[k],
+                                               np.broadcast_to(d, (len(self.poses), 3))))
+        if int(lines.value[k]) in self.known:
+            self._across(k, int(lines.value[k]))
+
+    def _across(self, k: int, value: int) -> None:
+        lines = self.net.eqs.lines
+        d = lines.direction[k]
+        sheet = Sheet("across", tuple(map(float, lines.through[k])), tuple(map(float, d)),
+                      value=value)
+        self._offer(int(lines.joint[k]), Locus(sheet, ("value", value), lines.names[k],
+                                               np.broadcast_to(d, (len(self.poses), 3))))
+
+    # -- what a placed joint offers -----------------------------------------------------------
+
+    def _touch(self, number: int, joint: int) -> None:
+        solid = self.net.solids[number]
+        inside = [j for j in solid.local if j in self.place]
+        missing = [j for j in solid.local if j not in self.place]
+        if len(inside) == 1:
+            self.held[number].add(joint)
+        if not missing:
+            return
+        if self._hooks(solid) is not None:
+            self._push(0, number, "solid")
+            return
+        for j in missing:
+            self._circle(j, joint, solid.length(joint, j), ("solid", number), solid.name)
+        for k in {k for j in solid.local for k in self.net.cranks_on[j]}:
+            if int(self.net.eqs.angles.value[k]) in self.known:
+                self._push(0, k, "crank")
+
+    def _rail(self, k: int) -> None:
+        lines = self.net.eqs.lines
+        a, b = map(int, lines.along[k])
+        joint = int(lines.joint[k])
+        if a == GROUND or a not in self.place or b not in self.place or joint in self.place:
+            return
+        if int(lines.value[k]) in self.known:
+            self._push(0, k, "slide")
+        e = self.poses[:, b] - self.poses[:, a]
+        direction = e / np.linalg.norm(e, axis=1, keepdims=True)
+        line = Line("points", points=(self.place[a], self.place[b]))
+        self._offer(joint, Locus(line, ("rail", k), lines.names[k], direction))
+
+    def _try_swing(self, k: int) -> None:
+        """In space a slot through a placed joint turns its body about two ways at once."""
+
+    def _offer(self, joint: int, locus: Locus) -> None:
+        if joint in self.place:
+            return
+        mine = self.loci[joint]
+        if any(x.uses == locus.uses and x.curve == locus.curve for x in mine):
+            return
+        mine.append(locus)
+        weight = sum(2 if isinstance(x.curve, Line) else 1 for x in mine)
+        if weight >= 3:
+            self._push(1 if weight > 3 else 2, joint, "joint")
+
+    # -- placing ------------------------------------------------------------------------------
+
+    def _meet(self, joint: int) -> None:
+        if joint in self.place:
+            return
+        loci = self.loci[joint]
+        chosen = self._best_set([x for x in loci if x.part not in self.surplus])
+        chosen = chosen or self._best_set(loci)
+        if chosen is not None:
+            self._join_at(joint, chosen)
+
+    def force(self) -> bool:
+        """As in the plane: spheres about three joints not in line meet in two points at most."""
+        for joint in sorted(self.loci):
+            if joint in self.place:
+                continue
+            spheres = [x for x in self.loci[joint] if x.poses_of_centre is not None]
+            for three in combinations(spheres[:MOST_LOCI], 3):
+                a, b, c = (x.poses_of_centre for x in three)
+                assert a is not None and b is not None and c is not None
+                if float(np.nanmax(np.linalg.norm(np.cross(b - a, c - a), axis=1))) > APART:
+                    self._join_at(joint, three)
+                    return True
+        return False
+
+    def _join_at(self, joint: int, chosen: tuple[Locus, ...]) -> None:
+        """Place a joint where surfaces meet."""
+        self.used |= {x.uses for x in chosen}
+        for number in {x.uses[1] for x in chosen if x.uses[0] == "solid"}:
+            spheres = sum(x.uses == ("solid", number) for x in chosen)
+            placed = sum(j in self.place for j in self.net.solids[number].local)
+            if spheres == placed <= 2:
+                self._hold(number, [joint])
+        curves = tuple(sorted((x.curve for x in chosen), key=lambda c: ORDER.index(type(c))))
+        two_ways = any(isinstance(c, Circle) for c in curves)
+        dst = joint if self.ground else self.new_point()
+        self._placed(joint, dst, Junction(dst=dst, curves=curves, bit=0 if two_ways else -1,
+                                          parts=tuple(dict.fromkeys(x.part for x in chosen))))
+
+    @staticmethod
+    def _best_set(loci: list[Locus]) -> tuple[Locus, ...] | None:
+        """The surfaces whose unit normals span the largest volume; the file's order decides."""
+        best, found = PARALLEL, None
+        for chosen in _choices(loci[:MOST_LOCI]):
+            worth = _volume(chosen)
+            if worth > best * (1 + 1e-6):
+                best, found = worth, chosen
+                if worth > GOOD:
+                    break
+        return found
+
+    def _hooks(self, solid: Solid) -> tuple[int, ...] | None:
+        """Placed joints that carry a body: three not in line, or two where all lie in one."""
+        inside = [j for j in solid.local if j in self.place][:MOST_LOCI]
+        if len(inside) < 2:
+            return None
+        best, found = 1e-6, None
+        for a, b, c in combinations(inside, 3):
+            e, f = self.poses[:, b] - self.poses[:, a], self.poses[:, c] - self.poses[:, a]
+            area = float(np.nanmax(np.linalg.norm(np.cross(e, f), axis=1)))
+            if area > best * (1 + 1e-9):
+                best, found = area, (a, b, c)
+        if found is None and self._straight(solid):
+            return max(combinations(inside, 2), key=lambda p: float(np.nanmax(
+                np.linalg.norm(self.poses[:, p[0]] - self.poses[:, p[1]], axis=1))))
+        return found
+
+    def _straight(self, solid: Solid) -> bool:
+        """Whether all joints of a body lie in one line."""
+        x = self.poses[0, list(solid.local)]
+        away = x - x[0]
+        return len(x) < 3 or float(np.linalg.svd(away, compute_uv=False)[1]) < 1e-9
+
+    def _carry(self, number: int) -> None:
+        solid = self.net.solids[number]
+        missing = [j for j in solid.local if j not in self.place]
+        hooks = self._hooks(solid)
+        if not missing or hooks is None:
+            return
+        self._hold(number, missing)
+        local = tuple(solid.local[j] for j in missing)
+        placed = tuple(self.place[j] for j in hooks)
+        base = tuple(solid.local[j] for j in hooks)
+        self._spread(missing, lambda dst: Hang(
+            dst=dst, local=local, placed=placed, base=base, parts=(solid.name,)))
+
+    def _aim(self, k: int) -> None:
+        """Turn a body about a placed axis by a driven angle."""
+        angles = self.net.eqs.angles
+        value = int(angles.value[k])
+        if value not in self.known or ("value", value) in self.used:
+            return
+        p, q = map(int, angles.axis[k])
+        if p not in self.place or q not in self.place:
+            return
+        s, f = int(angles.line[k, 1]), int(angles.base[k, 1])
+        if s not in self.place and ((f == GROUND and self.ground) or f in self.place):
+            self._turn(k, (p, q), s, None if f == GROUND else f, 1.0)
+        elif f != GROUND and f not in self.place and s in self.place:
+            self._turn(k, (p, q), f, s, -1.0)
+
+    def _turn(self, k: int, axis: tuple[int, int], pointer: int, start: int | None,
+              sign: float) -> None:
+        for number in self.net.solids_on[pointer]:
+            solid = self.net.solids[number]
+            if axis[0] in solid.local and axis[1] in solid.local:
+                self._turn_solid(k, number, axis, pointer, start, sign)
+                return
+
+    def _turn_solid(self, k: int, number: int, axis: tuple[int, int], pointer: int,
+                    start: int | None, sign: float) -> None:
+        angles, solid = self.net.eqs.angles, self.net.solids[number]
+        missing = [j for j in solid.local if j not in self.place]
+        self.used.add(("value", int(angles.value[k])))
+        self._hold(number, missing)
+        toward = () if start is not None else tuple(map(float, angles.toward[k]))
+        here = self.place[axis[0]], self.place[axis[1]]
+        begin: Point | None = None if start is None else self.place[start]
+        self._spread(missing, lambda dst: Hinge(
+            dst=dst, local=tuple(solid.local[j] for j in missing), axis=here,
+            axis_local=(solid.local[axis[0]], solid.local[axis[1]]),
+            pointer=solid.local[pointer], start=begin, toward=toward,
+            value=int(angles.value[k]), zero=float(angles.zero[k]), sign=sign,
+            parts=(angles.names[k], solid.name)))
+
+    def _circle(self, joint: int, centre: int, radius: Length, uses: Key, part: str) -> None:
+        if not radius.constant and radius.value < 0 and radius.points is None:
+            return
+        super()._circle(joint, centre, radius, uses, part)
+
+
+def _choices(loci: list[Locus]) -> Iterator[tuple[Locus, ...]]:
+    """Sets of a line and a surface, and of three surfaces."""
+    lines = [x for x in loci if isinstance(x.curve, Line)]
+    others = [x for x in loci if not isinstance(x.curve, Line)]
+    for line in lines:
+        for other in others:
+            yield line, other
+    yield from combinations(others, 3)
+
+
+def _volume(chosen: tuple[Locus, ...]) -> float:
+    """What the unit normals span in the better of the two poses."""
+    if len(chosen) == 2:
+        volume = (chosen[0].normals * chosen[1].normals).sum(axis=1)
+    else:
+        volume = np.linalg.det(np.stack([x.normals for x in chosen], axis=1))
+    size: Array = np.abs(volume)
+    return float(np.nanmax(size)) if np.isfinite(size).any() else 0.0
