@@ -16,8 +16,6 @@ from random_rigs import Case, random_case
 
 import rigpose as rp
 
-FALSE_FRAME = "a floating body's frame is trusted where the ground places three of its joints"
-
 
 def compared(case: Case, starts: int, seed: int) -> tuple[int, int]:
     """Numbers of our branches and of SciPy's roots, after comparing them one by one."""
@@ -76,12 +74,9 @@ def test_rigs_of_every_kind() -> None:
 
 
 @pytest.mark.parametrize(("kinds", "seed", "steps"), [
-    pytest.param("ONE_BY_ONE", 12, 3, marks=pytest.mark.xfail(strict=True, reason=FALSE_FRAME)),
-    pytest.param("PRUNED", 7, 5, marks=pytest.mark.xfail(strict=True, reason=FALSE_FRAME)),
-    pytest.param("PRUNED", 209, 5, marks=pytest.mark.xfail(strict=True, reason=FALSE_FRAME)),
-    pytest.param("PRUNED", 266, 5, marks=pytest.mark.xfail(strict=True, reason=FALSE_FRAME)),
-])
+    ("ONE_BY_ONE", 12, 3), ("PRUNED", 7, 5), ("PRUNED", 209, 5), ("PRUNED", 266, 5)])
 def test_rigs_that_went_wrong_once(kinds: str, seed: int, steps: int) -> None:
+    """A floating body's frame was trusted where the ground places three of its joints."""
     compared(random_case(seed, steps, getattr(random_rigs, kinds)), 40, seed)
 
 
