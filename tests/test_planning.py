@@ -7,6 +7,7 @@ surplus lengths are checked and told, and whatever still moves is named.
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 
 import numpy as np
 import pytest
@@ -184,7 +185,7 @@ def test_of_a_surplus_set_the_last_in_the_file_gives_way() -> None:
 
 
 def as_plates(shape: list[list[float]], names: list[str], lengths: dict[str, float],
-              legs: dict[str, list[str]], feet: dict[str, object]) -> int:
+              legs: dict[str, list[str]], feet: Mapping[str, object]) -> int:
     """How many poses a rigid body of this shape has on its legs."""
     rig = rp.make_rig({**feet, **{n: {} for n in names}},
                       {k: {"ends": v, "length": lengths[k]} for k, v in legs.items()},
@@ -331,7 +332,7 @@ def test_a_target_along_which_its_joint_cannot_move_is_named() -> None:
 def ribs(count: int) -> rp.Rig:
     """Ribs of two dyads each, side by side."""
     joints: dict[str, object] = {}
-    bones = {}
+    bones: dict[str, object] = {}
     for k in range(count):
         x = 3.0 * k
         joints |= {f"a{k}": {"at": [x, 0], **PIN}, f"b{k}": {"at": [x + 1, 0], **PIN},
@@ -359,7 +360,7 @@ def test_a_long_chain_of_dyads_keeps_its_lengths() -> None:
     """300 dyads, one on the other: rounding grows on the way and is taken back at the end."""
     rng = np.random.default_rng(4)
     joints: dict[str, object] = {"a0": ORIGIN, "b0": {"at": [0, 1], **PIN}}
-    bones = {}
+    bones: dict[str, object] = {}
     for k in range(1, 301):
         joints |= {f"a{k}": [k + rng.uniform(-.2, .2), rng.uniform(-.2, .2)],
                    f"b{k}": [k + rng.uniform(-.2, .2), 1 + rng.uniform(-.2, .2)]}
