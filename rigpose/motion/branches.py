@@ -99,13 +99,22 @@ def search_on(rest: Rest, clock: Clock, frames: Array, budget: Budget,
     context = Context(rest, plan, budget)
     picks, done = [], Found.COMPLETE
     for k, group in enumerate(plan.groups):
-        if not go_on(watch, "groups", k, len(plan.groups)):
+        if done is Found.STOPPED or not go_on(watch, "groups", k, len(plan.groups)):
+            # Half a pose is none: without this group there are no branches to show.
             done = Found.STOPPED
-            break
+            picks.append(kept(rest, no_rows(group, clock.count, plan.eqs.dim)))
+            continue
         rows, cut = group_rows(context, group, clock, budget, watch)
         done = weaker(done, Found.BUDGET if cut else rows.found)
         picks.append(kept(rest, rows))
     return made_from(context, clock, frames, picks, done)
+
+
+def no_rows(group: Group, frames: int, dim: int) -> Rows:
+    """A group of which nothing was found."""
+    return Rows(group, np.zeros((0, group.bits), dtype=np.int16),
+                [np.zeros((dim, 0, frames)) for _ in group.joints],
+                np.zeros((0, frames), dtype=bool), np.zeros((0, frames)))
 
 
 def group_rows(context: Context, group: Group, clock: Clock, budget: Budget,

@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
+from rigpose.ground.tolerance import EPS
 from rigpose.model.equations import Array
 from rigpose.solve.clock import Clock
 from rigpose.solve.run import run_steps
@@ -28,6 +29,8 @@ ROUNDS = 5
 FINE = 33
 WIDEST, NARROWEST = 0.32, 1e-3
 """Frames to both sides from which the order of a zero is read: wide, so that a high order shows."""
+LOW = 1e-10
+"""A height that the fitted zero must come below: it is placed to a part of its own width only."""
 ZERO = 1e-13
 """Squared sine that counts as zero: rounding of a placing, carried through a long chain."""
 FIT = np.array([-4.0, -3.0, -2.0, -1.0, 1.0, 2.0, 3.0, 4.0])
@@ -53,6 +56,8 @@ class _Heights:
                  choice: int) -> None:
         self.context, self.rows, self.clock = context, rows, clock
         self.flips, self.choice = flips, choice
+        # Squared sines below this are zero as far as the file's own numbers tell.
+        self.zero = ZERO + 16.0 * context.rounding / context.rest.reach - 256.0 * EPS
 
     def __call__(self, rows: Ints, times: Array) -> Array:
         """``(m, k)`` for rows ``(m,)`` and times ``(m, k)``; NaN past an earlier dead one."""
@@ -83,7 +88,7 @@ def _touching(heights: _Heights, hits: Hits) -> list[tuple[int, float, str]]:
         times = low[:, None] + (high - low)[:, None] * grid
         g = heights(row, times)
         size = np.nan_to_num(np.abs(g), nan=np.inf)
-        least = size <= np.maximum(size.min(axis=1, keepdims=True), 0.1 * ZERO)
+        least = size <= np.maximum(size.min(axis=1, keepdims=True), 0.1 * heights.zero)
         # A zero of high order is flat: the middle of what can't be told from zero.
         centre = np.where(least, times, 0.0).sum(axis=1) / least.sum(axis=1)
         step = (high - low) / (POINTS - 1)
@@ -100,9 +105,9 @@ def _single(heights: _Heights, hits: Hits) -> tuple[Ints, Array, Array, NDArray[
     times = hits.low[:, None] + (hits.high - hits.low)[:, None] * grid
     g = heights(hits.row, times)
     with np.errstate(invalid="ignore"):
-        middle = np.abs(g[:, 1:-1])
+        middle, zero = np.abs(g[:, 1:-1]), heights.zero
         lowest = (middle <= np.abs(g[:, :-2])) & (middle < np.abs(g[:, 2:]))
-        shut = (g[:, 1:-1] < -ZERO) | (g[:, :-2] < -ZERO) | (g[:, 2:] < -ZERO)
+        shut = (g[:, 1:-1] < -zero) | (g[:, :-2] < -zero) | (g[:, 2:] < -zero)
     which, at = np.nonzero(lowest)
     return (hits.row[which], times[which, at], times[which, at + 2], shut[which, at])
 
@@ -121,15 +126,15 @@ def _fitted(heights: _Heights, row: Ints, centre: Array,
     with np.errstate(invalid="ignore", divide="ignore"):
         h = signs * g ** (0.5 / np.maximum(p, 1.0))[:, None]
         secant = times[:, 0] - h[:, 0] * (times[:, -1] - times[:, 0]) / (h[:, -1] - h[:, 0])
-    clear = np.nanmin(np.abs(g), axis=1) > 1e3 * ZERO
+    clear = np.nanmin(np.abs(g), axis=1) > 1e3 * heights.zero
     zero = np.where(clear, _inverse(h, times), np.nan_to_num(secant, nan=-1e300))
     zero = np.where(np.abs(zero - centre) < 4 * reach, zero, centre)
     at = heights(row, zero[:, None])[:, 0]
     out = []
     for k in range(len(row)):
-        if (g[k] < -ZERO).any() or at[k] < -ZERO or opened[k]:
+        if (g[k] < -heights.zero).any() or at[k] < -heights.zero or opened[k]:
             out.append((int(row[k]), float(centre[k]), "gap"))
-        elif at[k] <= 1e3 * ZERO and p[k] >= 1:
+        elif at[k] <= LOW + heights.zero and p[k] >= 1:
             out.append((int(row[k]), float(zero[k]), "passed" if p[k] % 2 else "touched"))
     return _one_gap(out)
 
@@ -181,6 +186,6 @@ def _resting(heights: _Heights, hits: Hits) -> list[tuple[int, float, str]]:
         dot += sum(float((before.targets[t][0] - inside.targets[t][0])
                          * (after.targets[t][0] - inside.targets[t][0])) for t in inside.targets)
         at = float(heights(np.array([row]), np.array([[low + 1.0]]))[0, 0])
-        if abs(at) <= 1e3 * ZERO and dot != 0.0:
+        if abs(at) <= LOW + heights.zero and dot != 0.0:
             out.append((int(row), float(high - 1), "passed" if dot < 0 else "touched"))
     return out

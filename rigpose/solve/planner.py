@@ -32,7 +32,7 @@ from rigpose.solve.plan import (
     Step,
     Tied,
 )
-from rigpose.solve.rest import Rest, find_rest
+from rigpose.solve.rest import DENSE, Rest, find_rest, giving_way
 from rigpose.solve.spacegrowth import SpaceGrowth
 from rigpose.solve.values import joints_of_value
 
@@ -206,7 +206,7 @@ def make_plan(
     """Plan for value numbers and (joint, axis) pairs that will be known."""
     eqs = rest.equations
     poses = nearby(rest)
-    planner = Planner(eqs, drives, targets, poses, rest.surplus)
+    planner = Planner(eqs, drives, targets, poses, rest.surplus or _last_of_sets(rest, poses))
     steps, loose = planner.run()
     ground = planner.ground
     used = set(ground.used)
@@ -224,6 +224,13 @@ def make_plan(
     return Plan(eqs=eqs, drives=tuple(eqs.values[v] for v in sorted(drives)),
                 targets=tuple(sorted(targets)), base=base, groups=groups, loose=loose,
                 redundant=redundant, points=next(planner.points))
+
+
+def _last_of_sets(rest: Rest, poses: Array) -> frozenset[str]:
+    """Bones that add nothing to the bones before them: of surplus lengths the last gives way."""
+    if rest.scaled.size > DENSE:
+        return frozenset()
+    return giving_way(System(rest.equations), poses[1])
 
 
 def _with_solids(planner: Planner, steps: list[Step]) -> list[Step]:

@@ -217,16 +217,17 @@ def find_rest(rig: Rig) -> Rest:
         start = _big(system, start, values[0]) if big else _nearest(system, start, values)
         misfit = np.abs(system.residual(start[None], values)).max(initial=0.0)
         if misfit > AGREE and not big:
-            surplus = _giving_way(system, start, values)
+            surplus = giving_way(system, start)
             if surplus:
                 pose = _nearest(replace(system, without=surplus), start, values)
                 return replace(_make(rig, eqs, system, pose, values), surplus=surplus)
     return _make(rig, eqs, system, start, values)
 
 
-def _giving_way(system: System, x: Array, values: Array) -> frozenset[str]:
-    """Bones whose rows add nothing to the rows before them, bodies and rails first, then bones
-    in the file's order."""
+def giving_way(system: System, x: Array) -> frozenset[str]:
+    """Bones whose rows at a pose (n, dim) add nothing to the rows before them: bodies and rails
+    come first, then bones in the file's order."""
+    values = np.full((1, len(system.eqs.values)), np.nan)
     _, jacobian = system.both(x[None], values)
     rows = jacobian[0][:, system.free]
     bones = len(system.dist_rows)

@@ -7,6 +7,7 @@ centre are run again with error bounds carried along, and what rounding has left
 from __future__ import annotations
 
 from dataclasses import dataclass, field, replace
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -55,10 +56,18 @@ class Context:
     plan: Plan
     budget: Budget = field(default_factory=Budget)
 
+    @cached_property
+    def rounding(self) -> float:
+        """What a placing may be off by: of its own, and of the file's coordinates, which are
+        known to four units in the last place of the largest."""
+        far = float(np.abs(self.rest.positions).max(initial=0.0))
+        of_file = 4.0 * float(np.spacing(far)) / self.plan.eqs.scale
+        return self.rest.tolerances.rounding * self.rest.reach + of_file
+
     def table(self, inputs: Inputs, careful: bool) -> Table:
         """An empty table with the pins in."""
         tol, reach = self.rest.tolerances, self.rest.reach
-        table = Table(self.plan.eqs, inputs, careful, tol.slack, reach, tol.rounding * reach,
+        table = Table(self.plan.eqs, inputs, careful, tol.slack, reach, self.rounding,
                       close=tol.close, budget=self.budget)
         for j in np.flatnonzero(self.plan.eqs.pinned):
             table.put(int(j), self.plan.eqs.at[j].reshape(-1, 1, 1))
