@@ -57,8 +57,10 @@ def _split(context: Context, group: Group, table: Table, start: int) -> Iterator
     for k in range(start, len(group.steps)):
         run_steps(group.steps[k:k + 1], table, None, offset + k)
         if table.branches == 0:
-            if table.turning:
-                yield table  # nothing is left, but what turns freely is to be told
+            if table.turning or table.flagged is not None:
+                # Nothing is left, but what turns freely is to be told, and what died close to a
+                # dead centre is to be looked at again.
+                yield table
             return
         if table.branches > BLOCK and k + 1 < len(group.steps):
             for a in range(0, table.branches, BLOCK):
