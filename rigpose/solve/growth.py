@@ -163,6 +163,16 @@ class Growth:
                 self._across(r, value)
             self._push(0, r, "slide")
 
+    def settled(self) -> set[Key]:
+        """Equations that the places keep: those used, and bodies all of whose joints were placed
+        in keeping with their shape. What is left is to be checked."""
+        uses = {key for key in self.used if key[0] != "solid"}
+        for number, joints in self.held.items():
+            solid = self.net.solids[number]
+            if joints >= solid.local.keys():
+                uses |= {("solid", number), *solid.uses}
+        return uses
+
     # -- a joint has been placed --------------------------------------------------------------
 
     def _hold(self, number: int | None, joints: list[int]) -> None:

@@ -75,7 +75,7 @@ class Net:
         """Put a group in; the bodies and bones that it is made of are not offered any more."""
         self.absorbed |= solid.uses
         for kind, k in solid.uses:
-            if kind == "solid":
+            if kind in ("solid", "body"):
                 for j in self.solids[k].local:
                     if k in self.solids_on[j]:
                         self.solids_on[j].remove(k)

@@ -146,12 +146,7 @@ class Planner:
         frame.run()
         if len(frame.place) == len(solid.local):
             return None
-        uses = set(frame.used)
-        for n in frame.held:
-            inside = self.net.solids[n].local
-            if all(j in frame.place for j in inside):
-                uses.add(("solid", n))
-                uses |= self.net.solids[n].uses
+        uses = frame.settled()
         checks = tuple(checks_for(self.eqs, self.net, frame, frozenset(uses)))
         uses |= {check_key(self.eqs, c) for c in checks}
         return Solid(solid.name, dict(frame.place), frozenset(uses), (*frame.steps, *checks))
@@ -209,12 +204,7 @@ def make_plan(
     planner = Planner(eqs, drives, targets, poses, rest.surplus or _last_of_sets(rest, poses))
     steps, loose = planner.run()
     ground = planner.ground
-    used = set(ground.used)
-    used |= {("tie", t) for t in planner.settled_ties}
-    for number, solid in enumerate(planner.net.solids):
-        if ground.held[number] >= set(solid.local):
-            used |= solid.uses
-            used.add(("solid", number))
+    used = ground.settled() | {("tie", t) for t in planner.settled_ties}
     steps = _with_solids(planner, steps)
     checks = list(checks_for(eqs, planner.net, ground, frozenset(used)))
     base, groups = grouped(eqs, steps, checks)
