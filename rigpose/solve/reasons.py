@@ -20,7 +20,8 @@ def reasons(found: Study, report: Report) -> Iterator[str]:
     if not report.assembles:
         yield "Measured where the lengths come closest, as the rig does not assemble."
     if len(rig.joints) > 1 and not any(j.pin for j in rig.joints) and not rig.rails:
-        yield "Nothing is pinned: 3 of the freedoms move the rig as a whole."
+        whole = rig.dim * (rig.dim + 1) // 2
+        yield f"Nothing is pinned: {whole} of the freedoms move the rig as a whole."
     for m in found.motions:
         joints = listed([names[j] for j in m.piece.joints])
         if m.structural:
