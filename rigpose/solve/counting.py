@@ -1,10 +1,14 @@
 """Freedoms by counting alone: coordinates of unpinned joints less the conditions on them.
 
 Bodies count as bodies, 2k - 3 conditions for k joints of a plate in the plane and 3k - 6 in space
-(Maxwell 1864, Grübler 1917, Laman 1970; from memory). What lies between pinned joints only is the ground and counts nothing.
+(Maxwell 1864, Grübler 1917, Laman 1970; from memory). What lies between pinned joints only is the
+ground and counts nothing.
 """
 
 from __future__ import annotations
+
+from collections import Counter
+from itertools import combinations
 
 import numpy as np
 from numpy.typing import NDArray
@@ -32,7 +36,18 @@ def counted_freedoms(rig: Rig) -> int:
     single += sum(j not in pinned for p in rig.planes for j in p.joints)
     plates = sum(_plate(rig, p, pinned) for p in rig.plates)
     groups = sum(_group(rig, group, pinned) for group in rig.frozen)
+    plates -= _hinges(rig, pinned) if rig.dim == 3 else 0
     return rig.dim * (len(rig.joints) - len(pinned)) - single - plates - groups
+
+
+def _hinges(rig: Rig, pinned: set[str]) -> int:
+    """Distances that two bodies have in common because they share a hinge's axis: one each.
+
+    Counted once, a closed loop of four hinges has -2 freedoms, as the Kutzbach criterion has it.
+    """
+    shared = Counter(pair for p in rig.plates for pair in combinations(sorted(p.joints), 2)
+                     if not set(pair) <= pinned)
+    return sum(many - 1 for many in shared.values())
 
 
 def _plate(rig: Rig, plate: Plate, pinned: set[str]) -> int:
