@@ -179,7 +179,6 @@ def test_a_braced_square_on_two_bars_that_is_driven() -> None:
     assert rp.judge(rig, found.positions, found.size).worst()[0] < 1e-12
 
 
-@pytest.mark.xfail(strict=True, reason="another one of the six gives way")
 def test_of_a_surplus_set_the_last_in_the_file_gives_way() -> None:
     assert rp.find_branches(braced(2), {"turn": 90.0}).redundant == {"qs"}
 
