@@ -45,8 +45,9 @@ def _hinges(rig: Rig, pinned: set[str]) -> int:
 
     Counted once, a closed loop of four hinges has -2 freedoms, as the Kutzbach criterion has it.
     """
-    shared = Counter(pair for p in rig.plates for pair in combinations(sorted(p.joints), 2)
-                     if not set(pair) <= pinned)
+    shared: Counter[tuple[str, ...]] = Counter(
+        pair for p in rig.plates for pair in combinations(sorted(p.joints), 2)
+        if not set(pair) <= pinned)
     return sum(many - 1 for many in shared.values())
 
 
@@ -61,14 +62,14 @@ def _conditions(shape: NDArray[np.float64]) -> int:
 
     In space a body that is a straight line has five freedoms, not six: its spin is none.
     """
-    k, dim = shape.shape
+    k, dim = (int(n) for n in shape.shape)
     if k < 2:
         return 0
     own = dim * (dim + 1) // 2
     if dim == 3:
         flat = np.linalg.svd(shape - shape.mean(axis=0), compute_uv=False)
         own -= int(k == 2 or flat[1] <= STRAIGHT * flat[0])
-    return dim * k - own
+    return int(dim * k) - own
 
 
 def _group(rig: Rig, group: Frozen, pinned: set[str]) -> int:

@@ -7,7 +7,6 @@ placed; until then it is a check.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import dataclass, field
 from itertools import combinations
 
@@ -163,14 +162,18 @@ class SpaceGrowth(Growth):
     @staticmethod
     def _best_set(loci: list[Locus]) -> tuple[Locus, ...] | None:
         """The surfaces whose unit normals span the largest volume; the file's order decides."""
-        best, found = PARALLEL, None
-        for chosen in _choices(loci[:MOST_LOCI]):
-            worth = _volume(chosen)
-            if worth > best * (1 + 1e-6):
-                best, found = worth, chosen
-                if worth > GOOD:
-                    break
-        return found
+        some = loci[:MOST_LOCI]
+        lines = [k for k, x in enumerate(some) if isinstance(x.curve, Line)]
+        others = [k for k, x in enumerate(some) if not isinstance(x.curve, Line)]
+        sets: list[tuple[int, ...]] = [(a, b) for a in lines for b in others]
+        sets += combinations(others, 3)
+        if not sets:
+            return None
+        worth = np.nan_to_num(_volumes(some, sets), nan=0.0)
+        best = float(worth.max())
+        # The first that is good enough or as good as any: the same on every machine.
+        chosen = int(np.argmax(worth >= min(GOOD, best * (1.0 - 1e-6))))
+        return tuple(some[k] for k in sets[chosen]) if best > PARALLEL else None
 
     def _hooks(self, solid: Solid) -> tuple[int, ...] | None:
         """Placed joints that carry a body: three not in line, or two where all lie in one."""
@@ -252,21 +255,17 @@ class SpaceGrowth(Growth):
         super()._circle(joint, centre, radius, uses, part)
 
 
-def _choices(loci: list[Locus]) -> Iterator[tuple[Locus, ...]]:
-    """Sets of a line and a surface, and of three surfaces."""
-    lines = [x for x in loci if isinstance(x.curve, Line)]
-    others = [x for x in loci if not isinstance(x.curve, Line)]
-    for line in lines:
-        for other in others:
-            yield line, other
-    yield from combinations(others, 3)
-
-
-def _volume(chosen: tuple[Locus, ...]) -> float:
-    """What the unit normals span in the better of the two poses."""
-    if len(chosen) == 2:
-        volume = (chosen[0].normals * chosen[1].normals).sum(axis=1)
-    else:
-        volume = np.linalg.det(np.stack([x.normals for x in chosen], axis=1))
-    size: Array = np.abs(volume)
-    return float(np.nanmax(size)) if np.isfinite(size).any() else 0.0
+def _volumes(loci: list[Locus], sets: list[tuple[int, ...]]) -> Array:
+    """What the unit normals of each set span in the better of the two poses, ``(n_sets,)``."""
+    normals = np.stack([x.normals for x in loci])
+    pairs = [s for s in sets if len(s) == 2]
+    triples = np.array(sets[len(pairs):], dtype=np.intp).reshape(-1, 3)
+    first = [np.abs((normals[a] * normals[b]).sum(axis=1)) for a, b in pairs]
+    p, q, r = (normals[triples[:, k]] for k in range(3))
+    across = np.stack([p[..., 1] * q[..., 2] - p[..., 2] * q[..., 1],
+                       p[..., 2] * q[..., 0] - p[..., 0] * q[..., 2],
+                       p[..., 0] * q[..., 1] - p[..., 1] * q[..., 0]], axis=-1)
+    every = np.concatenate([np.array(first).reshape(len(pairs), normals.shape[1]),
+                            np.abs((across * r).sum(axis=-1))])
+    largest: Array = np.fmax.reduce(every, axis=1)
+    return largest
