@@ -1,8 +1,8 @@
 """Which branches are mirror images of each other.
 
-There are mirror images only where everything known lies on one line. Whether a branch's image is
-a branch too is then seen from the places: a handed plate off the line or a driven angle leaves
-none.
+There are mirror images only where everything known lies on one line, in space in one plane. Whether
+a branch's image is a branch too is then seen from the places: a handed plate off the line or a
+driven angle leaves none.
 """
 
 from __future__ import annotations
@@ -17,32 +17,29 @@ NEAR = 1e-8
 
 
 def mirror_images(rig: Rig, poses: Array, known: Array, size: float) -> NDArray[np.intp]:
-    """For poses ``(n_branches, n_joints, 2)`` of one frame the number of each one's image, -1 for
-    none. ``known (k, 2)`` are the places of pins and whole targets."""
+    """For poses ``(n_branches, n_joints, dim)`` of one frame the number of each one's image, -1 for
+    none. ``known (k, dim)`` are the places of pins and whole targets."""
     none = np.full(len(poses), -1, dtype=np.intp)
-    if rig.dim != 2:
+    normal = _normal(known, size)
+    if normal is None or len(poses) < 2:
         return none
-    line = _line(known, size)
-    if line is None or len(poses) < 2:
-        return none
-    through, d = line
-    w = poses - through
-    image = through + 2.0 * (w @ d)[..., None] * d - w
+    w = poses - known[0]
+    image = poses - 2.0 * (w @ normal)[..., None] * normal
     return _matched(poses, image, size, none)
 
 
-def _line(known: Array, size: float) -> tuple[Array, Array] | None:
-    """A point and a unit direction of the line through all known places."""
-    if len(known) < 2:
+def _normal(known: Array, size: float) -> Array | None:
+    """The unit normal of the line (in space: the plane) through all known places, None where
+    they lie on none, or on many."""
+    if len(known) < known.shape[1]:
         return None
-    far = known - known[0]
-    k = int(np.argmax(np.linalg.norm(far, axis=1)))
-    long = float(np.linalg.norm(far[k]))
-    if long <= NEAR * size:
+    _, spread, axes = np.linalg.svd(known - known[0], full_matrices=True)
+    wide = np.zeros(known.shape[1])
+    wide[:len(spread)] = spread
+    if wide[-1] > NEAR * size or wide[-2] <= NEAR * size:
         return None
-    d = far[k] / long
-    off = np.abs(far[:, 0] * d[1] - far[:, 1] * d[0]).max()
-    return (known[0], d) if off <= NEAR * size else None
+    normal: Array = axes[-1]
+    return normal
 
 
 def _matched(poses: Array, image: Array, size: float, none: NDArray[np.intp]) -> NDArray[np.intp]:

@@ -15,15 +15,16 @@ import numpy as np
 
 from rigpose.model.equations import Array, Equations
 from rigpose.solve.flow import has_choice, reads, writes
-from rigpose.solve.plan import Check, Circle, Group, Meet, Step
+from rigpose.solve.plan import Check, Circle, Group, Junction, Meet, Step
 
 
 @dataclass(frozen=True)
 class Cut:
-    """One choice as a reflection: the two joints of the line, and the joints that turn over."""
+    """One choice as a reflection: the two joints of the line (in space the three of the plane),
+    and the joints that turn over."""
 
     choice: int
-    line: tuple[int, int]
+    line: tuple[int, ...]
     side: tuple[int, ...]
 
 
@@ -45,10 +46,15 @@ def cuts_of(eqs: Equations, group: Group) -> tuple[Cut, ...] | None:
 
 def _cut(eqs: Equations, steps: Sequence[Step], k: int, choice: int) -> Cut | None:
     step = steps[k]
-    if not isinstance(step, Meet) or not (
-            isinstance(step.first, Circle) and isinstance(step.second, Circle)):
+    curves: tuple[object, ...] = ()
+    if isinstance(step, Meet):
+        curves = (step.first, step.second)
+    elif isinstance(step, Junction):
+        curves = step.curves
+    if not curves or not all(isinstance(c, Circle) for c in curves):
         return None
-    line = (step.first.centre, step.second.centre)
+    line = tuple(c.centre for c in curves if isinstance(c, Circle))
+    assert isinstance(step, (Meet, Junction))  # only these have curves
     if max(*line, step.dst) >= eqs.n or _bodied(eqs, step):
         return None
     side = {step.dst}
@@ -68,15 +74,18 @@ def _bodied(eqs: Equations, step: Step) -> bool:
 
 
 def reflected(poses: Array, cut: Cut) -> Array:
-    """Poses ``(n_poses, n_joints, 2)`` with one side turned over."""
-    a, b = poses[:, cut.line[0]], poses[:, cut.line[1]]
-    e = b - a
-    e = e / np.sqrt((e * e).sum(axis=1, keepdims=True))
+    """Poses ``(n_poses, n_joints, dim)`` with one side turned over."""
+    a = poses[:, cut.line[0]]
+    e = poses[:, cut.line[1]] - a
+    if len(cut.line) == 3:
+        normal = np.cross(e, poses[:, cut.line[2]] - a)
+    else:
+        normal = np.stack([-e[:, 1], e[:, 0]], axis=1)
+    normal /= np.sqrt((normal * normal).sum(axis=1, keepdims=True))
     out = poses.copy()
     side = list(cut.side)
-    w = poses[:, side] - a[:, None]
-    along = (w * e[:, None]).sum(axis=2, keepdims=True)
-    out[:, side] = a[:, None] + 2.0 * along * e[:, None] - w
+    off = ((poses[:, side] - a[:, None]) * normal[:, None]).sum(axis=2, keepdims=True)
+    out[:, side] -= 2.0 * off * normal[:, None]
     return out
 
 
