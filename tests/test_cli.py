@@ -6,7 +6,6 @@ have to come out whole. Expected texts are what a newcomer can act on.
 
 from __future__ import annotations
 
-import csv
 import json
 import os
 import re
@@ -14,10 +13,10 @@ import shutil
 import subprocess
 import sys
 from pathlib import Path
-from typing import Any
 
 import numpy as np
 import pytest
+from calling import Capture, data, leftovers, refused, said, table, write
 
 from rigpose.cli.main import run
 from rigpose.files.csvfile import CsvWriter
@@ -29,7 +28,6 @@ from rigpose.motion.bake import bake
 from rigpose.motion.branches import find_branches
 
 ROOT = Path(__file__).resolve().parent.parent
-Capture = pytest.CaptureFixture[str]
 
 
 @pytest.fixture(autouse=True)
@@ -38,43 +36,6 @@ def quay(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     shutil.copytree(ROOT / "rigs", tmp_path, dirs_exist_ok=True)
     monkeypatch.chdir(tmp_path)
     return tmp_path
-
-
-def said(capsys: Capture, *words: str, code: int = 0) -> list[str]:
-    """Run the command, require its exit code, and give the lines that it prints."""
-    assert run(list(words)) == code
-    out, err = capsys.readouterr()
-    assert err == ""
-    return out.splitlines()
-
-
-def data(capsys: Capture, *words: str, code: int = 0) -> dict[str, Any]:
-    """What it prints with --json."""
-    found: dict[str, Any] = json.loads("\n".join(said(capsys, *words, "--json", code=code)))
-    return found
-
-
-def refused(capsys: Capture, *words: str) -> list[str]:
-    """The lines of a refusal: exit code 2, nothing but messages, no traceback."""
-    assert run(list(words)) == 2
-    out, err = capsys.readouterr()
-    assert out == ""
-    assert "Traceback" not in err
-    return err.splitlines()
-
-
-def table(path: str | Path) -> list[list[str]]:
-    with Path(path).open(encoding="utf-8", newline="") as file:
-        return list(csv.reader(file))
-
-
-def write(name: str, text: str) -> str:
-    Path(name).write_text(text, encoding="utf-8")
-    return name
-
-
-def leftovers(folder: Path) -> list[str]:
-    return [path.name for path in folder.iterdir() if path.name.endswith(".part")]
 
 
 # check

@@ -9,47 +9,16 @@ import tomllib
 from pathlib import Path
 
 import pytest
-from hypothesis import given
-from hypothesis import strategies as st
+from loading import FRAME, load, told
 
-from rigpose.files import tomltext
-from rigpose.files.lines import line_of, scan
 from rigpose.files.rigfile import load_rig
 from rigpose.files.schema import rig_schema
 from rigpose.ground.errors import BadInput
 from rigpose.model.extent import extent
 from rigpose.model.make import make_rig
-from rigpose.model.rig import Rig
 from rigpose.model.spec import SECTIONS, HeadSpec
 
 RIGS = Path(__file__).parent.parent / "rigs"
-
-FRAME = """
-[joints]
-foot = { at = [0, 0], pin = true }
-mast = { at = [0, 4], pin = true }
-elbow = [3, 4]
-hook = [6, 2]
-loose = {}
-[bones]
-boom = ["foot", "elbow"]
-fall = ["elbow", "hook"]
-"""
-
-
-def told(folder: Path, text: str, *, frame: str = FRAME, name: str = "crane.toml") -> str:
-    """What loading says of a rig with these lines, which stand from line 2 on."""
-    file = folder / name
-    file.write_text(f"rigpose = 1\n{text}{frame}", encoding="utf-8")
-    with pytest.raises(BadInput) as caught:
-        load_rig(file)
-    return str(caught.value)
-
-
-def load(folder: Path, text: str) -> Rig:
-    file = folder / "crane.toml"
-    file.write_text(f"rigpose = 1\n{text}", encoding="utf-8")
-    return load_rig(file)
 
 
 def test_the_first_example_loads() -> None:
@@ -502,130 +471,6 @@ def test_a_byte_order_mark_and_windows_line_ends_are_no_harm(tmp_path: Path) -> 
     assert load_rig(tmp_path / "crane.toml").bones[0].length == 5.0
 
 
-def test_a_plate_from_lengths(tmp_path: Path) -> None:
-    """A right triangle with sides 3, 4 and 5, and a fourth joint in the middle of the longest.
-
-    That this middle is half of it away from all three corners is Thales's theorem (Euclid,
-    Elements III.31, by its converse).
-    """
-    text = """
-[joints]
-a = {}
-b = {}
-c = {}
-m = {}
-[plates]
-left = { joints = ["a", "b", "c"], hand = "left", lengths = [
-  ["a", "b", 3], ["b", "c", 4], ["a", "c", "10 / 2"]] }
-right = { joints = ["a", "b", "c", "m"], hand = "right", lengths = [
-  ["a", "b", 3], ["b", "c", 4], ["a", "c", 5], ["m", "a", 2.5], ["b", "m", 2.5], ["c", "m", 2.5]] }
-"""
-    left, right = load(tmp_path, text).plates
-    for plate, sign in ((left, 1), (right, -1)):
-        a, b, c = (complex(*p) for p in plate.shape[:3])
-        assert abs(b - a) == pytest.approx(3, abs=1e-14)
-        assert (c - b) / (b - a) == pytest.approx(4 / 3 * sign * 1j, abs=1e-14)
-    middle = complex(*right.shape[3])
-    assert middle == pytest.approx((complex(*right.shape[0]) + complex(*right.shape[2])) / 2,
-                                   abs=1e-14)
-    assert sum(complex(*p) for p in right.shape) == pytest.approx(0, abs=1e-14)
-
-
-@pytest.mark.parametrize(("lengths", "message"), [
-    ('["m", "a", 2.5], ["b", "m", 2.5], ["c", "m", 2.6]',
-     r'plates.p.lengths: the lengths of a plate must agree with one another; got 2.[56] for '
-     r'\["[abc]", "m"\], where the others make it 2'),
-    ('["m", "a", 2.5], ["b", "m", 2.5]',
-     r"plates.p.lengths: every further joint of a plate needs three lengths, from joints that are "
-     r'not in line; got "m" has 2, from a, b; add a length, or give'),
-    ('["m", "a", 9.5], ["b", "m", 2.5], ["c", "m", 2.5]',
-     r"plates.p.lengths: the lengths of a plate must agree with one another; got 9.5 for "
-     r'\["a", "m"\], where the others make it '),
-])
-def test_a_plates_lengths_that_say_too_little_or_disagree(tmp_path: Path, lengths: str,
-                                                          message: str) -> None:
-    text = f"""
-[joints]
-a = {{}}
-b = {{}}
-c = {{}}
-m = {{}}
-[plates]
-p = {{ joints = ["a", "b", "c", "m"], hand = "left", lengths = [
-  ["a", "b", 3], ["b", "c", 4], ["a", "c", 5], {lengths}] }}
-"""
-    assert re.search(message, told(tmp_path, text, frame=""))
-
-
-@given(st.lists(st.tuples(st.floats(-5, 5), st.floats(-5, 5)), min_size=3, max_size=7),
-       st.booleans())
-def test_plates_from_lengths_measure_as_drawn(points: list[tuple[float, float]],
-                                              mirror: bool) -> None:
-    """Build a shape first, measure it, and require those lengths and that hand again."""
-    first, second, third = (complex(*p) for p in points[:3])
-    way = (third - first) * (second - first).conjugate()
-    apart = min((math.dist(p, q) for k, p in enumerate(points) for q in points[:k]), default=0)
-    if apart < 0.1 or abs(way.imag) < 0.5:
-        return
-    names = [f"j{k}" for k in range(len(points))]
-    lengths = [[names[i], names[k], math.dist(points[i], points[k])]
-               for i in range(len(points)) for k in range(i)]
-    left = (way.imag > 0) != mirror
-    rig = make_rig({n: {} for n in names}, plates={
-        "p": {"joints": names, "lengths": lengths, "hand": "left" if left else "right"}})
-    shape = rig.plates[0].shape
-    for i in range(len(points)):
-        for k in range(i):
-            assert math.dist(shape[i], shape[k]) == pytest.approx(math.dist(points[i], points[k]),
-                                                                  abs=1e-6)
-    a, b, c = (complex(*p) for p in shape[:3])
-    assert (((c - a) * (b - a).conjugate()).imag > 0) == left
-
-
-def test_plates_may_lie_in_line() -> None:
-    rig = make_rig({"a": [0, 0], "b": [1, 1], "c": [3, 3]}, plates={"p": ["a", "b", "c"]})
-    assert math.dist(rig.plates[0].shape[0], rig.plates[0].shape[2]) == pytest.approx(18 ** 0.5)
-    flat = make_rig({"a": {}, "b": {}, "c": {}}, plates={"p": {
-        "joints": ["a", "b", "c"], "hand": "left",
-        "lengths": [["a", "b", 1], ["b", "c", 2], ["a", "c", 3]]}})
-    assert [y for _, y in flat.plates[0].shape] == [0, 0, 0]
-
-
-def test_lines_of_cranks_and_limits() -> None:
-    """Bones are seen from `about` and `at` outwards, plates along the lines that are named."""
-    joints = {"a": {"at": [0, 0], "pin": True}, "b": [1, 0], "c": [2, 1], "d": [3, 0]}
-    rig = make_rig(
-        joints, {"ab": ["a", "b"], "bc": ["b", "c"]}, plates={"p": ["b", "c", "d"]},
-        cranks={"plain": {"turns": "ab"}, "out": {"turns": "ab", "about": "b"},
-                "rel": {"turns": "bc", "from": "ab", "about": "b"},
-                "plate": {"turns": "p", "line": ["d", "b"], "from": "ab", "zero": "rest"}},
-        limits={"l": {"from": "ab", "to": "bc", "at": "b", "range": [10, 170]},
-                "m": {"from": "ab", "to": "p", "to_line": ["b", "d"], "at": "b",
-                      "range": [10, 170], "either": True}},
-    )
-    plain, out, rel, plate = rig.cranks
-    assert (plain.line, plain.base, plain.base_part) == (("a", "b"), None, "ground")
-    assert out.line == ("b", "a")
-    assert (rel.line, rel.base) == (("b", "c"), ("b", "a"))
-    assert (plate.line, plate.base, plate.zero) == (("d", "b"), ("a", "b"), "rest")
-    assert (rig.limits[0].first, rig.limits[0].second) == (("b", "a"), ("b", "c"))
-    assert (rig.limits[1].second, rig.limits[1].either) == (("b", "d"), True)
-    assert rig.drive_names == ("plain", "out", "rel", "plate")
-
-
-def test_slots_on_a_plate_a_bone_and_the_ground() -> None:
-    joints = {"a": {"at": [0, 0], "pin": True}, "b": {"at": [4, 0], "pin": True}, "c": [2, 1],
-              "d": [3, 2], "e": [1, 1]}
-    rig = make_rig(joints, {"cd": ["c", "d"]}, plates={"p": ["a", "c", "e"]}, rails={
-        "ground": {"joint": "d", "along": ["a", "b"]},
-        "bone": {"joint": "e", "along": ["d", "c"], "range": [0, 1]},
-        "plate": {"joint": "d", "along": ["e", "c"]}})
-    assert [r.along for r in rig.rails] == [("a", "b"), ("d", "c"), ("e", "c")]
-    with pytest.raises(BadInput, match="the two joints of a slot stand apart; got both at"):
-        make_rig({**joints, "b": {"at": [0, 0], "pin": True}}, {}, rails={
-            "r": {"joint": "d", "along": ["a", "b"]}})
-
-
 def test_rigs_in_space(tmp_path: Path) -> None:
     rig = make_rig({"a": {"at": [0, 0, 0], "pin": True}, "b": [1, 2, 2]}, {"ab": ["a", "b"]}, dim=3,
                    rails={"r": {"joint": "b", "through": [1, 2, 0], "direction": [0, 0, 5]}})
@@ -682,77 +527,6 @@ def test_what_people_note_does_not_change_the_fingerprint() -> None:
     assert plain.fingerprint != moved.fingerprint
     assert (noted.joints[0].note, noted.joints[0].layer, noted.joints[0].skin) == ("n", 2.0, "s")
     assert noted.studio == {"shot": 3}
-
-
-KEYS = st.text(st.characters(codec="utf-8", exclude_characters="\r"), max_size=6)
-SCALARS = st.integers(-9, 9) | st.booleans() | st.floats(allow_nan=False) | KEYS
-VALUES = st.recursive(SCALARS, lambda v: st.lists(v, max_size=3) | st.dictionaries(
-    KEYS, v, max_size=3), max_leaves=8)
-
-
-@given(st.dictionaries(KEYS, VALUES, max_size=4))
-def test_our_toml_reads_back_with_pythons_reader(data: dict[str, object]) -> None:
-    text = "".join(f"{tomltext.key(k)} = {tomltext.value(v)}\n" for k, v in data.items())
-    assert tomllib.loads(text) == data
-    lines = scan(text)
-    assert [lines.of((k,)) for k in data] == list(range(1, len(data) + 1))
-    assert not lines.repeats
-
-
-def test_lines_of_all_that_toml_allows() -> None:
-    text = '''title = "a # b" # c
-"quoted key".x = 1
-[[keys]]
-frame = 1
-drive = { slew = 0.0, luff = { deep = 2 } }
-[[keys]]
-frame = [ # here
-  1,
-  2 ] # there
-[keys.inner]
-note = """
-[not] = "a header"
-"""
-[a.'b.c']
-d = 1979-05-27 07:32:00
-e = \'\'\'it\'s\'\'\'
-f = 2
-'''
-    tomllib.loads(text)
-    expected = {("title",): 1, ("quoted key", "x"): 2, ("keys", 0, "frame"): 4,
-                ("keys", 0, "drive", "luff", "deep"): 5, ("keys", 1): 6, ("keys", 1, "frame", 1): 9,
-                ("keys", 1, "inner", "note"): 11, ("a", "b.c", "d"): 15, ("a", "b.c", "e"): 16,
-                ("a", "b.c", "f"): 17, ("keys", 1, "nothing"): 6, ("a", "b.c", "f", "g"): 17}
-    assert {path: line_of(text, path) for path in expected} == expected
-    assert line_of(text, ("unknown",)) is None
-
-
-def test_lines_of_tables_that_only_stand_around_others() -> None:
-    text = """[limits.knee]
-either = true
-[limits.fold]
-range = [0, 90]
-[[a.b.c]]
-d = 1
-[limits]
-[a]
-e = 2
-"""
-    tomllib.loads(text)
-    expected = {("limits",): 7, ("limits", "knee"): 1, ("limits", "fold", "range"): 4,
-                ("a",): 8, ("a", "b"): 5, ("a", "b", "c"): 5, ("a", "b", "c", 0, "d"): 6}
-    assert {path: line_of(text, path) for path in expected} == expected
-    # Tables that stand around others may have a header of their own, before or after them.
-    assert scan(text).repeats == []
-    above = text.partition("[limits]")[0]
-    assert (line_of(above, ("limits",)), line_of(above, ("limits", "new", "at"))) == (1, 1)
-
-
-def test_lines_of_json() -> None:
-    text = '{"a": {\n "b\\u0063": [1,\n {"d": "}"}],\n "e": -1.5e3},\n "f": null}'
-    json.loads(text)
-    expected = {("a",): 1, ("a", "bc"): 2, ("a", "bc", 1, "d"): 3, ("a", "e"): 4, ("f",): 5}
-    assert {path: line_of(text, path, "json") for path in expected} == expected
 
 
 def test_the_schema_describes_every_key() -> None:
