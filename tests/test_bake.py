@@ -164,8 +164,8 @@ def test_spans_tell_each_stretch_that_does_not_assemble() -> None:
     assert np.array_equal(motion.state == rp.State.NONE, out)
     assert np.array_equal(np.isnan(motion.positions).any(axis=(1, 2)), out)
     assert np.array_equal(np.isnan(motion.margin), out)
-    starts = np.flatnonzero(np.diff(out.astype(int)) == 1) + 2
-    ends = np.flatnonzero(np.diff(out.astype(int)) == -1) + 1
+    starts = (np.flatnonzero(np.diff(out.astype(int)) == 1) + 2.0).tolist()
+    ends = (np.flatnonzero(np.diff(out.astype(int)) == -1) + 1.0).tolist()
     assert np.array_equal([(s.first, s.last) for s in motion.spans], np.stack([starts, ends], 1))
     for span in motion.spans:
         assert set(span.parts) == {"coupler", "follower"}
