@@ -32,6 +32,9 @@ from rigpose.solve.search import Context, base_table, cells_of, group_table
 from rigpose.solve.stream import part_of
 from rigpose.solve.table import Table
 
+SAME = 1e-9
+"""A branch that is off by less than this part of the reach is the goal itself."""
+
 
 def nearest_branch(rig: Rig, drives: Given | None = None, targets: Wished | None = None, *,
                    near: Mapping[str, npt.ArrayLike] | None = None) -> Branches:
@@ -79,6 +82,9 @@ def nearest_rows(context: Context, group: Group, clock: Clock, most: int,
     if not group.binary:
         return _nearest_of(whole_group(context, group, clock), aim, most)
     base = base_table(context, clock.whole(slice(0, 1)), False)
+    straight = _straight_on(context, group, base, aim) if most == 1 else None
+    if straight is not None:
+        return straight
     tables = _best_first(context, group, group_table(base, None), aim, most)
     if any(t.flagged is not None and t.flagged.any() for t in (base, *tables)):
         return _nearest_of(whole_group(context, group, clock), aim, most)
@@ -87,6 +93,26 @@ def nearest_rows(context: Context, group: Group, clock: Clock, most: int,
     cells = [cells_of(group, t) for t in tables]
     rows = [Rows(group, c.codes, c.places, c.alive, c.margin, c.values) for c in cells]
     return rows[0] if len(rows) == 1 else _stacked(rows)
+
+
+def _straight_on(context: Context, group: Group, base: Table, aim: Array) -> Rows | None:
+    """The branch that takes the nearer way at each choice, if it ends in the goal itself: then
+    none is nearer, and a rig of many thousand joints needs no list of open nodes."""
+    if np.isnan(aim).any():
+        return None
+    table = group_table(base, 1)
+    table.guess = aim[None]
+    ways = {k: np.ones((1, 1)) for k in range(group.bits)}
+    run_steps(group.steps, table, ways, len(context.plan.base))
+    if table.flagged is not None or (table.alive is not None and not table.alive.all()):
+        return None
+    cells = cells_of(group, table)
+    off = max((float(np.abs(p[:, 0, 0] - aim[j]).max())
+               for j, p in zip(group.joints, cells.places, strict=True)), default=0.0)
+    if not off <= SAME * context.rest.reach:
+        return None
+    return Rows(group, np.ones((1, group.bits), dtype=np.int16), cells.places, cells.alive,
+                cells.margin, cells.values)
 
 
 def _best_first(context: Context, group: Group, start: Table, aim: Array,
