@@ -14,8 +14,8 @@ class Budget:
     """Limits of one call.
 
     poses : how many poses a held set may have
-    seconds : wall time after which a search returns what it has
-    bytes : memory for intermediate arrays
+    seconds : wall time after which a search for branches of one frame returns what it has
+    bytes : memory for the arrays of one block of branches
     """
 
     poses: int = 4096

@@ -29,9 +29,11 @@ from rigpose.solve.plan import Group
 from rigpose.solve.rows import Rows
 from rigpose.solve.run import run_steps
 from rigpose.solve.search import Context, base_table, cells_of, group_table
-from rigpose.solve.stream import part_of
+from rigpose.solve.stream import part_of, stream_cells
 from rigpose.solve.table import Table
 
+MOST_NODES = 2048
+"""Nodes after which best-first gives way to looking at all branches in blocks."""
 SAME = 1e-9
 """A branch that is off by less than this part of the reach is the goal itself."""
 
@@ -86,6 +88,8 @@ def nearest_rows(context: Context, group: Group, clock: Clock, most: int,
     if straight is not None:
         return straight
     tables = _best_first(context, group, group_table(base, None), aim, most)
+    if tables is None:
+        return _best_of_stream(context, group, clock, aim, most)
     if any(t.flagged is not None and t.flagged.any() for t in (base, *tables)):
         return _nearest_of(whole_group(context, group, clock), aim, most)
     if not tables:
@@ -116,12 +120,16 @@ def _straight_on(context: Context, group: Group, base: Table, aim: Array) -> Row
 
 
 def _best_first(context: Context, group: Group, start: Table, aim: Array,
-                most: int) -> list[Table]:
+                most: int) -> list[Table] | None:
+    """The nearest branches; None where too many nodes are as good as one another."""
     ticket, offset = count(), len(context.plan.base)
     done: list[Table] = []
-    heap: list[tuple[float, int, int, Table]] = [(0.0, next(ticket), 0, start)]
-    while heap and len(done) < most:
-        cost, _, k, table = heappop(heap)
+    heap: list[tuple[float, int, int, Table]] = [(0.0, 0, next(ticket), start)]
+    for _ in range(MOST_NODES):
+        if not heap or len(done) >= most:
+            return done
+        cost, ahead, _, table = heappop(heap)
+        k = -ahead
         if k == len(group.steps):
             done.append(table)
             continue
@@ -131,8 +139,21 @@ def _best_first(context: Context, group: Group, start: Table, aim: Array,
             part = table if table.branches == 1 else part_of(table, row, row + 1)
             if part.alive is not None and not part.alive.any():
                 continue
-            heappush(heap, (cost + _added(part, writes(step), aim), next(ticket), k + 1, part))
-    return done
+            # Of equals the one farthest on comes first.
+            heappush(heap, (cost + _added(part, writes(step), aim), -(k + 1), next(ticket), part))
+    return None
+
+
+def _best_of_stream(context: Context, group: Group, clock: Clock, aim: Array, most: int) -> Rows:
+    """The nearest of all branches, block by block: where the goal's joints are placed last, each
+    node has to be looked at anyway."""
+    best: Rows | None = None
+    for cells in stream_cells(context, group, clock.whole(slice(0, 1))):
+        rows = Rows(group, cells.codes, cells.places, cells.alive, cells.margin, cells.values,
+                    found=cells.found)
+        near = _nearest_of(rows, aim, most)
+        best = near if best is None else _nearest_of(_stacked([best, near]), aim, most)
+    return best if best is not None else whole_group(context, group, clock)
 
 
 def _added(table: Table, points: tuple[int, ...], aim: Array) -> float:
@@ -154,8 +175,14 @@ def _nearest_of(rows: Rows, aim: Array, most: int) -> Rows:
 
 def _stacked(rows: list[Rows]) -> Rows:
     first = rows[0]
+
+    def all_of(k: int) -> Array:
+        wide = [np.broadcast_to(r.places[k], (len(r.places[k]), len(r.codes), 1)) for r in rows]
+        whole: Array = np.concatenate(wide, axis=1)
+        return whole
+
     return Rows(first.group, np.concatenate([r.codes for r in rows]),
-                [np.concatenate([np.broadcast_to(r.places[k], (len(p), 1, 1)) for r in rows],
-                                axis=1)
-                 for k, p in enumerate(first.places)],
-                np.concatenate([r.alive for r in rows]), np.concatenate([r.margin for r in rows]))
+                [all_of(k) for k in range(len(first.places))],
+                np.concatenate([r.alive for r in rows]), np.concatenate([r.margin for r in rows]),
+                {v: np.concatenate([np.broadcast_to(r.values[v], (len(r.codes), 1)) for r in rows])
+                 for v in first.values})

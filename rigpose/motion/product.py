@@ -250,6 +250,7 @@ def _gather(part: Array, place: Array, which: Ints | None, frames: slice) -> Non
     elif mine.shape[2] == 1:
         for axis in range(len(part)):
             np.take(mine[axis, :, 0], which, out=part[axis, :, 0], mode="clip")
+        part[:, :, 1:] = part[:, :, :1]
     else:
         part[...] = mine[:, which] if len(which) < mine.shape[1] or len(which) > 1 else mine
 

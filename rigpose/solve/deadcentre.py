@@ -7,6 +7,7 @@ negative between two frames there is no pose for a moment (gap). A low point abo
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -24,6 +25,8 @@ if TYPE_CHECKING:
 
 Ints = NDArray[np.intp]
 Found = list[tuple[int, int, float, str]]
+AT_END = 1e-6
+"""Frames within which a zero is at the very first or last frame."""
 POINTS = 9
 ROUNDS = 5
 FINE = 33
@@ -40,13 +43,14 @@ def classify(context: Context, rows: Rows, clock: Clock, flips: Flips, choice: i
              hits: Hits) -> Found:
     """(row, choice, time, kind) of every true dead centre among the low points."""
     heights = _Heights(context, rows, clock, flips, choice)
-    keep = (hits.low >= 0) & (hits.high <= clock.count - 1)
-    hits = hits.take(keep)
-    if not len(hits):
-        return []
+    last = clock.count - 1
+    hits = replace(hits, high=np.minimum(hits.high, last))
+    # A rest at either end is no passing: where a motion begins or ends at a dead centre, nothing
+    # comes before or after it.
+    rests = hits.rests & (hits.low > 0) & (hits.high < last)
     found = _touching(heights, hits.take(~hits.rests))
-    found += _resting(heights, hits.take(hits.rests))
-    return [(row, choice, time, kind) for row, time, kind in found]
+    found += _resting(heights, hits.take(rests))
+    return [(row, choice, time, kind) for row, time, kind in found if AT_END < time < last - AT_END]
 
 
 class _Heights:

@@ -75,7 +75,7 @@ class Screen:
         last = np.append(first[1:] - 1, len(row) - 1)
         # Two frames to both sides of a dead centre are low as well; only at zero they rest there.
         rests = (np.maximum.reduceat(height, first) < FLAT) & (last > first)
-        return Hits(row[fresh], frame[fresh] - 1, frame[last] + 1, rests)
+        return Hits(row[fresh], np.maximum(frame[fresh] - 1, 0), frame[last] + 1, rests)
 
 
 def _for_all(g: Array, row: Ints, frame: Ints, first: int, rows: int) -> tuple[Ints, Ints, Array]:
@@ -89,14 +89,19 @@ def _for_all(g: Array, row: Ints, frame: Ints, first: int, rows: int) -> tuple[I
 
 def _low_points(g: Array) -> tuple[Ints, Ints]:
     """Where a height is no higher than at both neighbours and lower than a step away from it."""
-    if g.shape[1] < 3:
+    if g.shape[1] < 2:
         return np.empty(0, dtype=np.intp), np.empty(0, dtype=np.intp)
-    # Most motions stay clear of dead centres: look closer only where some height is small.
+    # Most motions stay clear of dead centres: look closer only where some height is small. The
+    # ends count as well: a zero may lie between the first two frames.
     steps = np.abs(np.diff(g, axis=1))
-    middle = g[:, 1:-1]
+    low = np.empty(g.shape, dtype=bool)
     with np.errstate(invalid="ignore"):
-        largest = np.maximum(steps[:, :-1], steps[:, 1:])
-        low = (middle <= np.maximum(largest, FLAT)) & (middle >= 0)
-        low &= (middle <= np.maximum(g[:, :-2], FLAT)) & (middle <= np.maximum(g[:, 2:], FLAT))
+        largest = np.maximum(np.maximum(steps[:, :-1], steps[:, 1:]), FLAT)
+        low[:, 1:-1] = g[:, 1:-1] <= largest
+        low[:, 0] = g[:, 0] <= np.maximum(steps[:, 0], FLAT)
+        low[:, -1] = g[:, -1] <= np.maximum(steps[:, -1], FLAT)
+        low &= g >= 0
+        low[:, 1:] &= g[:, 1:] <= np.maximum(g[:, :-1], FLAT)
+        low[:, :-1] &= g[:, :-1] <= np.maximum(g[:, 1:], FLAT)
     row, frame = np.nonzero(low)
-    return row, frame + 1
+    return row, frame

@@ -5,6 +5,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from copy import copy
+from time import monotonic
 from typing import Any
 
 import numpy as np
@@ -54,6 +55,9 @@ def _tables(context: Context, group: Group, inputs: Inputs, careful: bool) -> It
 
 def _split(context: Context, group: Group, table: Table, start: int) -> Iterator[Table]:
     offset = len(context.plan.base)
+    # A point of a branch takes as many numbers as the rig has dimensions, and some on the way.
+    a_branch = 16 * context.plan.eqs.dim * max(context.plan.points, 1)
+    block = max(1, min(BLOCK, int(context.budget.bytes // a_branch)))
     for k in range(start, len(group.steps)):
         run_steps(group.steps[k:k + 1], table, None, offset + k)
         if table.branches == 0:
@@ -62,9 +66,9 @@ def _split(context: Context, group: Group, table: Table, start: int) -> Iterator
                 # dead centre is to be looked at again.
                 yield table
             return
-        if table.branches > BLOCK and k + 1 < len(group.steps):
-            for a in range(0, table.branches, BLOCK):
-                yield from _split(context, group, part_of(table, a, a + BLOCK), k + 1)
+        if table.branches > block and k + 1 < len(group.steps):
+            for a in range(0, table.branches, block):
+                yield from _split(context, group, part_of(table, a, a + block), k + 1)
             return
     yield table
 
@@ -83,11 +87,11 @@ def part_of(table: Table, start: int, stop: int) -> Table:
 def all_cells(context: Context, group: Group, inputs: Inputs, most: int) -> tuple[Cells, bool]:
     """The branches of one frame as one value, at most about ``most``; whether that cut it short."""
     pieces: list[Cells] = []
-    total = 0
+    total, end = 0, monotonic() + context.budget.seconds
     for cells in stream_cells(context, group, inputs):
         pieces.append(cells)
         total += len(cells.codes)
-        if total > most:
+        if total > most or monotonic() > end:
             return joined(pieces), True
     return (joined(pieces) if pieces else _none(group, context.plan.eqs.dim)), False
 
