@@ -14,18 +14,18 @@ from rigpose.files.copyplan import MOST_COPIES, bring_in, make_plan, numbered
 from rigpose.files.document import read_document
 from rigpose.files.restplaces import rest_places
 from rigpose.ground.errors import BadInput
-from rigpose.model.assemble import assemble
+from rigpose.model.assemble import Built, build
 from rigpose.model.bench import Bench
 from rigpose.model.decode import decode
 from rigpose.model.head import Head
 from rigpose.model.names import KeyPath, shown
-from rigpose.model.rig import METRES, Coordinates, Rig
+from rigpose.model.rig import METRES, Coordinates
 from rigpose.model.spec import CopySpec
 
 MOST_JOINTS = 1_000_000
 """Files that bring in one another multiply; this bounds what a few lines can ask for."""
 
-Loaded = dict[tuple[Path, tuple[tuple[str, float], ...]], Rig | None]
+Loaded = dict[tuple[Path, tuple[tuple[str, float], ...]], Built | None]
 
 
 @dataclass(frozen=True)
@@ -67,18 +67,19 @@ class Folder:
 
     def _add(self, bench: Bench, head: Head, name: str, spec: CopySpec) -> bool:
         before = len(bench.notes)
-        rig = self._rig(bench, head, name, spec)
-        plan = make_plan(bench, name, spec, rig, METRES[head.unit]) if rig else None
-        if rig is None or plan is None or len(bench.notes) > before:
+        built = self._built(bench, head, name, spec)
+        plan = make_plan(bench, name, spec, built.rig, METRES[head.unit]) if built else None
+        if built is None or plan is None or len(bench.notes) > before:
             return False
+        rig = built.rig
         if len(bench.parts.joints) + len(rig.joints) * len(plan.names) > MOST_JOINTS:
             bench.notes.add(("copies", name), f"a rig has at most {MOST_JOINTS} joints",
                             f"{len(plan.names)} copies of {len(rig.joints)} joints",
                             "bring in fewer")
             return False
-        return bring_in(bench, plan, rig)
+        return bring_in(bench, plan, built)
 
-    def _rig(self, bench: Bench, head: Head, name: str, spec: CopySpec) -> Rig | None:
+    def _built(self, bench: Bench, head: Head, name: str, spec: CopySpec) -> Built | None:
         """The rig that a copy is of, with its own sizes, or None once that is told."""
         path = ("copies", name)
         values = {s: bench.number((*path, "sizes", s), v) for s, v in spec.sizes.items()}
@@ -94,15 +95,15 @@ class Folder:
         key = (file, tuple(sorted(sizes.items())))
         if key not in self.loaded:
             self.loaded[key] = self._load(bench, (*path, "sizes"), file, sizes)
-        rig = self.loaded[key]
-        if rig is not None and rig.dim != head.dim:
+        built = self.loaded[key]
+        if built is not None and built.rig.dim != head.dim:
             bench.notes.add((*path, "of"), f"a copy has the dimension of the rig, {head.dim}",
-                            f"dim = {rig.dim} in {spec.of}", "bring in another file")
+                            f"dim = {built.rig.dim} in {spec.of}", "bring in another file")
             return None
-        return rig
+        return built
 
     def _load(self, bench: Bench, path: KeyPath, file: Path, sizes: Mapping[str, float]) -> (
-        Rig | None
+        Built | None
     ):
         inner = replace(self, chain=(*self.chain, file))
         try:
@@ -112,8 +113,8 @@ class Folder:
             for size in [s for s in sizes if s not in known]:
                 bench.notes.unknown((*path, size), f"size in {file.name}", size, known)
             given = {s: v for s, v in sizes.items() if s in known}
-            return assemble(document.data, name=file.stem, where=document.where, outside=inner,
-                            sizes=given, source=str(file))
+            return build(document.data, name=file.stem, where=document.where, outside=inner,
+                         sizes=given, source=str(file))
         except BadInput as bad:
             bench.notes.take(bad.problems)
             return None

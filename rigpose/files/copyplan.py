@@ -5,10 +5,11 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
 
+from rigpose.model.assemble import Built
 from rigpose.model.bench import Bench
 from rigpose.model.head import unit_vector
 from rigpose.model.names import KeyPath, shown
-from rigpose.model.placed import Move, placed, plane_move, space_move
+from rigpose.model.placed import Move, placed, placed_axes, plane_move, space_move
 from rigpose.model.rig import METRES, Coordinates, Rig
 from rigpose.model.spec import CopySpec
 
@@ -124,8 +125,9 @@ def _moves(bench: Bench, path: KeyPath, spec: CopySpec, scale: float) -> tuple[M
     return tuple(space_move(t, axis, spec.mirror, scale) for t in turns)
 
 
-def bring_in(bench: Bench, plan: Plan, rig: Rig) -> bool:
+def bring_in(bench: Bench, plan: Plan, built: Built) -> bool:
     """Add all copies of a plan to the bench; False after noting what is wrong."""
+    rig = built.rig
     for k, (name, move) in enumerate(zip(plan.names, plan.moves, strict=True)):
         joined = dict(plan.join)
         if k > 0:
@@ -137,8 +139,9 @@ def bring_in(bench: Bench, plan: Plan, rig: Rig) -> bool:
                             f"{name} has two at {shown(_twice(list(joined.values())))}",
                             "join or chain other joints")
             return False
-        shift = _shift(bench, plan, rig, joined, k)
-        bench.parts.add(placed(rig, replace(move, shift=shift), name, joined))
+        there = replace(move, shift=_shift(bench, plan, rig, joined, k))
+        bench.parts.add(placed(rig, there, name, joined))
+        bench.hinges.update(placed_axes(built.hinges, there, name, joined))
         bench.also.update({f"{name}/{own}": joint for own, joint in joined.items()})
     return True
 

@@ -13,6 +13,7 @@ from rigpose.model.rig import (
     Joint,
     Limit,
     Part,
+    Plane,
     Plate,
     Rail,
     Ram,
@@ -48,6 +49,7 @@ def _sections(rig: Rig) -> Iterator[str]:
         "joints": {j.name: _joint(j) for j in rig.joints},
         "bones": {b.name: _bone(b) for b in rig.bones},
         "plates": {p.name: _plate(p) for p in rig.plates},
+        "planes": {p.name: _plane(p) for p in rig.planes},
         "rails": {r.name: _rail(r) for r in rig.rails},
         "rams": {r.name: _ram(r) for r in rig.rams},
         "cranks": {c.name: _crank(c) for c in rig.cranks},
@@ -84,6 +86,11 @@ def _plate(plate: Plate) -> Table:
     return _common(plate, {"joints": plate.joints, "shape": plate.shape})
 
 
+def _plane(plane: Plane) -> Table:
+    return _common(plane, {"joints": plane.joints, "through": plane.through,
+                           "normal": plane.normal})
+
+
 def _rail(rail: Rail) -> Table:
     return _common(rail, {"joint": rail.joint, "through": rail.through,
                           "direction": rail.direction, "along": rail.along, "range": rail.range})
@@ -95,13 +102,14 @@ def _ram(ram: Ram) -> Table:
 
 def _crank(crank: Crank) -> Table:
     return _common(crank, {"turns": crank.turns, "line": crank.line, "from": crank.base_part,
-                           "from_line": crank.base, "about": crank.about, "zero": crank.zero,
+                           "from_line": crank.base, "about": crank.about,
+                           "axis": crank.axis, "zero": crank.zero, "toward": crank.toward,
                            "range": crank.range})
 
 
 def _limit(limit: Limit) -> Table:
     return _common(limit, {"from": limit.first_part, "to": limit.second_part, "at": limit.at,
-                           "range": limit.range, "from_line": limit.first,
+                           "axis": limit.axis, "range": limit.range, "from_line": limit.first,
                            "to_line": limit.second, "either": limit.either or None})
 
 

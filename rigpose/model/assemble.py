@@ -3,19 +3,25 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import dataclass
 from typing import Protocol
 
-from rigpose.model.bench import Bench
+from rigpose.model.bench import REST, Bench
 from rigpose.model.bodies import add_bones, add_joints, add_plates, add_rams
 from rigpose.model.consistent import check_whole
 from rigpose.model.drives import add_cranks, add_limits, add_rails, add_ties
 from rigpose.model.extent import extent
+from rigpose.model.fittings import Fittings
 from rigpose.model.groups import add_branches, add_frozen, read_names
 from rigpose.model.head import Head, check_version, read_head
+from rigpose.model.hinges import add_hinges, add_universals, refuse_in_the_plane
 from rigpose.model.names import KeyPath, shown
 from rigpose.model.notes import Notes, Where
-from rigpose.model.rig import Coordinates, Rig
+from rigpose.model.planes import add_planes
+from rigpose.model.rig import Coordinates, Pair, Rig
 from rigpose.model.sizes import resolve_sizes
+from rigpose.model.sliders import add_sliders
+from rigpose.model.spec import SECTIONS
 
 Document = Mapping[str, object]
 
@@ -47,6 +53,14 @@ class Nothing:
             bench.lose("copy", name)
 
 
+@dataclass(frozen=True)
+class Built:
+    """A rig and the axes of its hinges, which are mere joints in the rig itself."""
+
+    rig: Rig
+    hinges: Mapping[str, Pair]
+
+
 def assemble(document: Document, *, name: str, where: Where, outside: Outside | None = None,
              sizes: Mapping[str, float] | None = None, source: str = "") -> Rig:
     """Build a rig from a document: nested dicts, lists, numbers and texts as in a rig file.
@@ -54,29 +68,31 @@ def assemble(document: Document, *, name: str, where: Where, outside: Outside | 
     ``name`` stands in for a missing one, ``where`` tells file and line of a key path, ``sizes``
     win over the document's own. Raises BadInput with every problem found, up to 20.
     """
+    return build(document, name=name, where=where, outside=outside, sizes=sizes,
+                 source=source).rig
+
+
+def build(document: Document, *, name: str, where: Where, outside: Outside | None = None,
+          sizes: Mapping[str, float] | None = None, source: str = "") -> Built:
+    """As `assemble`, with what a rig that brings this one in may name besides its parts."""
     bench = Bench(Notes(where))
     check_version(bench, document)
     tables = {section: _table(bench, document, section) for section in document
-              if section in _SECTIONS}
+              if section in SECTIONS}
     given = dict(tables.get("sizes", {}))
     _override(bench, given, sizes or {})
     bench.sizes = resolve_sizes(bench.notes, given)
     head = read_head(bench, document, name)
     bench.dim, bench.slack, bench.slash = head.dim, head.slack, head.flat
     for size in given:
-        bench.taken.setdefault("sizes, limits, ties, frozen groups, copies and branches", {})[
-            size] = "sizes"
+        bench.taken.setdefault(REST, {})[size] = "sizes"
     _fill(bench, head, document, tables, outside or Nothing())
     names = read_names(bench, tables.get("names", {}))
     studio = tables.get("studio", {})
     _check_studio(bench, ("studio",), studio)
     check_whole(bench)
     bench.notes.stop_if_any()
-    return _rig(bench, head, names, studio, source)
-
-
-_SECTIONS = ("sizes", "joints", "bones", "plates", "rails", "rams", "cranks", "limits", "ties",
-             "frozen", "copies", "branches", "names", "studio")
+    return Built(_rig(bench, head, names, studio, source), bench.hinges)
 
 
 def _table(bench: Bench, document: Document, section: str) -> Mapping[str, object]:
@@ -115,9 +131,23 @@ def _fill(bench: Bench, head: Head, document: Document, tables: Mapping[str, Doc
     for section, add in (("rams", add_rams), ("bones", add_bones), ("plates", add_plates)):
         add(bench, tables.get(section, {}))
     bench.size = bench.size or extent([], [b.length for b in bench.parts.bones.values()])
-    for section, add in (("rails", add_rails), ("cranks", add_cranks), ("limits", add_limits),
-                         ("ties", add_ties), ("frozen", add_frozen), ("branches", add_branches)):
+    _join(bench, tables)
+    for section, add in (("planes", add_planes), ("rails", add_rails), ("cranks", add_cranks),
+                         ("limits", add_limits), ("ties", add_ties), ("frozen", add_frozen),
+                         ("branches", add_branches)):
         add(bench, tables.get(section, {}))
+
+
+def _join(bench: Bench, tables: Mapping[str, Document]) -> None:
+    """Hinges and the like, after the parts that they join and before all that may name them."""
+    if bench.dim == 2:
+        refuse_in_the_plane(bench, tables)
+        return
+    fit = Fittings(bench)
+    for section, add in (("hinges", add_hinges), ("universals", add_universals),
+                         ("sliders", add_sliders)):
+        add(fit, tables.get(section, {}))
+    fit.finish()
 
 
 def _check_studio(bench: Bench, path: KeyPath, value: object) -> None:
@@ -140,7 +170,8 @@ def _rig(bench: Bench, head: Head, names: Mapping[str, str], studio: Mapping[str
         bones=tuple(parts.bones.values()), plates=tuple(parts.plates.values()),
         rails=tuple(parts.rails.values()), rams=tuple(parts.rams.values()),
         cranks=tuple(parts.cranks.values()), limits=tuple(parts.limits.values()),
-        ties=tuple(parts.ties.values()), frozen=tuple(parts.frozen.values()),
+        ties=tuple(parts.ties.values()), planes=tuple(parts.planes.values()),
+        frozen=tuple(parts.frozen.values()),
         branches=parts.branches, names=names, unit=head.unit, slack=head.slack, close=head.close,
         plane=head.plane, up=head.up, note=head.note, source=source, studio=studio,
     )

@@ -21,6 +21,7 @@ from rigpose.model.rig import (
     Joint,
     Limit,
     Pair,
+    Plane,
     Plate,
     Rail,
     Ram,
@@ -50,6 +51,7 @@ class Parts:
     rams: dict[str, Ram] = field(default_factory=dict)
     cranks: dict[str, Crank] = field(default_factory=dict)
     limits: dict[str, Limit] = field(default_factory=dict)
+    planes: dict[str, Plane] = field(default_factory=dict)
     ties: dict[str, Tie] = field(default_factory=dict)
     frozen: dict[str, Frozen] = field(default_factory=dict)
     branches: dict[str, dict[str, str]] = field(default_factory=dict)
@@ -78,19 +80,25 @@ class Parts:
         return [*self.cranks, *self.rams, *self.rails]
 
 
+BODIES = "bones, plates and rams"
+DRIVES = "cranks, rams and rails"
+REST = "sizes, limits, ties, frozen groups, copies and branches"
 SPACES = {
     "joints": "joints",
-    "bones": "bones, plates and rams", "plates": "bones, plates and rams",
-    "rails": "cranks, rams and rails", "cranks": "cranks, rams and rails",
-    **dict.fromkeys(("sizes", "limits", "ties", "frozen", "copies", "branches"),
-                    "sizes, limits, ties, frozen groups, copies and branches"),
+    **dict.fromkeys(("bones", "plates", "universals"), BODIES),
+    **dict.fromkeys(("rails", "cranks", "sliders"), DRIVES),
+    **dict.fromkeys(("sizes", "limits", "planes", "hinges", "ties", "frozen", "copies",
+                     "branches"), REST),
 }
-"""Which sections share names. Rams are bodies and drives."""
+"""Which sections share names. Rams are bodies and drives; a universal is its cross, a slider its
+first rail."""
+IN_SPACE = {BODIES: "universals", DRIVES: "sliders", REST: "planes, hinges"}
+"""What else has names in these spaces, in space."""
 
 
 def spaces_of(section: str) -> tuple[str, ...]:
     """The name spaces in which a section's parts live."""
-    return (SPACES["bones"], SPACES["cranks"]) if section == "rams" else (SPACES[section],)
+    return (BODIES, DRIVES) if section == "rams" else (SPACES[section],)
 
 
 @dataclass
@@ -99,7 +107,8 @@ class Bench:
 
     ``lost`` holds what was refused already, as (kind, name): it raises no second complaint.
     ``also`` maps the names that a copy's joints gave up in joining to those they became.
-    ``size`` is that of the given places, 0 where there are none.
+    ``size`` is that of the given places, 0 where there are none. ``hinges`` maps a hinge to the
+    two joints of its axis, ``rods`` a plate that was a bone before it was hinged to its ends.
     """
 
     notes: Notes
@@ -112,6 +121,8 @@ class Bench:
     also: dict[str, str] = field(default_factory=dict)
     lost: set[tuple[str, str]] = field(default_factory=set)
     taken: dict[str, dict[str, str]] = field(default_factory=dict)
+    hinges: dict[str, Pair] = field(default_factory=dict)
+    rods: dict[str, Pair] = field(default_factory=dict)
 
     def claim(self, section: str, name: str) -> bool:
         """Whether a part may have this name; takes it, or notes why not."""
@@ -119,13 +130,17 @@ class Bench:
         if fault:
             self.notes.add((section, name), fault[0], shown(name), fault[1])
             return False
-        for space in spaces_of(section):
-            holder = self.taken.setdefault(space, {}).setdefault(name, section)
-            if holder != section:
-                rule = f"{space} share their names, and [{holder}] has this one already"
-                self.notes.add((section, name), rule, shown(name), "rename one of them")
-                return False
-        return True
+        return all(self.reserve(space, name, section, (section, name))
+                   for space in spaces_of(section))
+
+    def reserve(self, space: str, name: str, section: str, path: KeyPath) -> bool:
+        """Take a name in one space for a section, or note that another section has it."""
+        holder = self.taken.setdefault(space, {}).setdefault(name, section)
+        if holder != section:
+            kinds = f"{IN_SPACE[space]}, {space}" if self.dim == 3 and space in IN_SPACE else space
+            self.notes.add(path, f"{kinds} share their names, and [{holder}] has this one already",
+                           shown(name), "rename one of them")
+        return holder == section
 
     def lose(self, kind: str, name: str) -> None:
         """Remember that a joint, body, drive or copy was refused."""

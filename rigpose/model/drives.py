@@ -4,13 +4,17 @@ from __future__ import annotations
 
 from typing import Literal
 
+from msgspec import UNSET
+
 from rigpose.model.bench import Bench, joints_of
 from rigpose.model.bodies import GROUND, Table
 from rigpose.model.decode import decode
 from rigpose.model.head import unit_vector
 from rigpose.model.names import KeyPath, shown
+from rigpose.model.planes import add_plane_of_rail
 from rigpose.model.rig import Body, Coordinates, Crank, Limit, Pair, Plate, Rail, Span, Tie
 from rigpose.model.spec import CrankSpec, LimitSpec, RailSpec, TieSpec
+from rigpose.model.turns import limit_axis, limit_lines, space_crank
 
 WHOLE_TURN = 360.0
 
@@ -20,6 +24,9 @@ def add_rails(bench: Bench, table: Table) -> None:
     for name, raw in table.items():
         spec = decode(bench.notes, ("rails", name), raw, RailSpec)
         good = bench.claim("rails", name)
+        if spec is not None and spec.normal is not None:
+            add_plane_of_rail(bench, name, spec)
+            continue
         rail = None if spec is None else _rail(bench, name, spec)
         if rail is None or not good:
             bench.lose("drive", name)
@@ -47,9 +54,10 @@ def _ground_line(bench: Bench, path: KeyPath, spec: RailSpec) -> (
 ):
     if spec.through is None or spec.direction is None:
         have = [k for k in ("through", "direction") if getattr(spec, k) is not None]
+        point = "[x, y]" if bench.dim == 2 else "[x, y, z]"
         bench.notes.add(path, "a rail needs `through` and `direction`, or `along`",
                         f"`{have[0]}` alone" if have else "none of them",
-                        "write through = [x, y], direction = [x, y], or along = [joint, joint]")
+                        f"write through = {point}, direction = {point}, or along = [joint, joint]")
         return None, None
     through = bench.coordinates((*path, "through"), spec.through)
     way = bench.coordinates((*path, "direction"), spec.direction)
@@ -76,7 +84,8 @@ def add_cranks(bench: Bench, table: Table) -> None:
     for name, raw in table.items():
         spec = decode(bench.notes, ("cranks", name), raw, CrankSpec)
         good = bench.claim("cranks", name)
-        crank = None if spec is None else _crank(bench, name, spec)
+        read = _crank if bench.dim == 2 else space_crank
+        crank = None if spec is None else read(bench, name, spec)
         if crank is None or not good:
             bench.lose("drive", name)
         else:
@@ -85,10 +94,6 @@ def add_cranks(bench: Bench, table: Table) -> None:
 
 def _crank(bench: Bench, name: str, spec: CrankSpec) -> Crank | None:
     path = ("cranks", name)
-    if bench.dim != 2:
-        bench.notes.add(path, "cranks belong to plane rigs in this version", "dim = 3",
-                        "drive a ram or a rail instead")
-        return None
     before = len(bench.notes)
     about = None if spec.about is None else bench.joint((*path, "about"), spec.about)
     line = _line(bench, path, ("turns", "line"), spec.turns, written=spec.line, about=about)
@@ -102,8 +107,8 @@ def _crank(bench: Bench, name: str, spec: CrankSpec) -> Crank | None:
     if spec.from_ == spec.turns:
         bench.notes.add((*path, "from"), "a crank's angle is between two different parts",
                         f"{shown(spec.turns)} twice", 'write from = "ground" or another part')
-    zero: float | Literal["rest"] | None = "rest" if spec.zero == "rest" else (
-        bench.number((*path, "zero"), spec.zero))
+    _refuse_axis(bench, path, spec)
+    zero = _zero(bench, path, spec)
     span = bench.span((*path, "range"), spec.range)
     common = bench.common(path, spec)
     if line is None or zero is None or len(bench.notes) > before:
@@ -114,6 +119,25 @@ def _crank(bench: Bench, name: str, spec: CrankSpec) -> Crank | None:
                  range=span, base_part=spec.from_, **common)
 
 
+def _zero(bench: Bench, path: KeyPath, spec: CrankSpec) -> float | Literal["rest"] | None:
+    if isinstance(spec.zero, list):
+        bench.notes.add((*path, "zero"), "in the plane an angle counts as 0, no direction",
+                        shown(spec.zero), 'write degrees, or "rest"')
+        return None
+    if spec.zero is UNSET:
+        return 0.0
+    return "rest" if spec.zero == "rest" else bench.number((*path, "zero"), spec.zero)
+
+
+def _refuse_axis(bench: Bench, path: KeyPath, spec: CrankSpec | LimitSpec) -> None:
+    """Note what only a rig in space has."""
+    for key in ("axis", "toward"):
+        value = getattr(spec, key, None)
+        if value is not None:
+            bench.notes.add((*path, key), f"a plane rig turns in its plane: it has no `{key}`",
+                            shown(value), f"take `{key}` out")
+
+
 def _line(bench: Bench, path: KeyPath, key: tuple[str, str], part: str, *,
           written: list[str] | None, about: str | None) -> Pair | None:
     """The directed line of a part whose angle counts: as written, or the bone's own ends."""
@@ -122,11 +146,14 @@ def _line(bench: Bench, path: KeyPath, key: tuple[str, str], part: str, *,
         return None
     if written is not None:
         return _line_of(bench, (*path, key[1]), body, written)
-    if isinstance(body, Plate):
+    ends = bench.rods.get(body.name)
+    if ends is None and not isinstance(body, Plate):
+        ends = body.ends
+    if ends is None:
         bench.notes.add(path, f"`{key[0]}` is the plate {shown(part)}, so `{key[1]}` is needed",
                         "none", f"write {key[1]} = [joint, joint], two joints of the plate")
         return None
-    first, second = body.ends
+    first, second = ends
     return (second, first) if about == second else (first, second)
 
 
@@ -155,24 +182,40 @@ def add_limits(bench: Bench, table: Table) -> None:
 
 def _limit(bench: Bench, name: str, spec: LimitSpec) -> Limit | None:
     path = ("limits", name)
-    if bench.dim != 2 and not spec.either:
-        bench.notes.add(path, "in space a limit has no sign in this version", "either = false",
-                        "write either = true and a range between 0 and 180")
+    before = len(bench.notes)
     if spec.from_ == spec.to and spec.from_line == spec.to_line:
         bench.notes.add((*path, "to"), "a limit is between two different lines",
                         f"{shown(spec.to)} twice", "name another part")
         return None
-    at = bench.joint((*path, "at"), spec.at)
     span = _limit_range(bench, (*path, "range"), spec)
     common = bench.common(path, spec)
+    seen = len(bench.notes)
+    axis = limit_axis(bench, path, spec) if bench.dim == 3 else None
+    if bench.dim == 2:
+        _refuse_axis(bench, path, spec)
+    lines = limit_lines(bench, path, spec, axis) if axis is not None else (
+        _lines_at(bench, path, spec) if len(bench.notes) == seen else None)
+    if lines is None or span is None or len(bench.notes) > before:
+        return None
+    return Limit(name=name, first=lines[0], second=lines[1], at=lines[0][0], range=span,
+                 either=spec.either, axis=axis, first_part=spec.from_, second_part=spec.to,
+                 **common)
+
+
+def _lines_at(bench: Bench, path: KeyPath, spec: LimitSpec) -> tuple[Pair, Pair] | None:
+    """Both lines of a limit at a joint."""
+    if bench.is_lost("hinge", spec.at):
+        return None
+    if bench.dim == 3 and not spec.either:
+        bench.notes.add(path, "in space a limit has a sign about a hinge or an `axis` only",
+                        f"at = {shown(spec.at)}", "name a hinge, or write either = true and a "
+                        "range between 0 and 180")
+    at = bench.joint((*path, "at"), spec.at)
     if at is None:
         return None
     first = _seen(bench, path, "from", spec.from_, written=spec.from_line, at=at)
     second = _seen(bench, path, "to", spec.to, written=spec.to_line, at=at)
-    if first is None or second is None or span is None:
-        return None
-    return Limit(name=name, first=first, second=second, at=at, range=span, either=spec.either,
-                 first_part=spec.from_, second_part=spec.to, **common)
+    return None if first is None or second is None else (first, second)
 
 
 def _limit_range(bench: Bench, path: KeyPath, spec: LimitSpec) -> Span | None:

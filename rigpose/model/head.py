@@ -16,6 +16,8 @@ VERSION = 1
 SQUARE = 1e-9
 """How far from a right angle (cosine) the two axes of `plane` may be."""
 MOST_TOLERANCE = 0.1
+ROUNDED = 4e-15
+"""How far from 1 rounding takes the length of a direction that was turned."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -130,8 +132,8 @@ def unit_vector(bench: Bench, path: KeyPath, vector: Coordinates | None) -> Coor
                         "give it a number other than 0")
         return None
     # Divided by the largest first: squares of very large or small numbers would run over.
-    scaled = vector if 0.5 <= largest <= 1 else tuple(c / largest for c in vector)
+    scaled = vector if 0.5 <= largest <= 1 + ROUNDED else tuple(c / largest for c in vector)
     length = math.hypot(*scaled)
-    if abs(length - 1) <= 4e-15:
+    if abs(length - 1) <= ROUNDED:
         return scaled
     return tuple(c / length for c in scaled)

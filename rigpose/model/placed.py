@@ -1,8 +1,10 @@
 """A whole rig moved, turned, mirrored, scaled and renamed, as one copy inside another.
 
 The copy's ground moves with it: a crank of the copy has the same value in the same pose as in
-its own file. In a mirrored copy angles stay counter-clockwise, so their values change sign, and
-with them ranges, ties and the sides of named branches.
+its own file. In a mirrored copy of the plane angles stay counter-clockwise, so their values change
+sign, and with them ranges and ties. In space it is the axis that is turned round: a mirror image
+by the right hand about the axis is the image about the opposite one, so all values stay. The sides
+of named branches change in both.
 """
 
 from __future__ import annotations
@@ -12,6 +14,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import TypeVar
 
+from rigpose.model.bodies import GROUND
 from rigpose.model.rig import (
     Bone,
     Coordinates,
@@ -20,6 +23,7 @@ from rigpose.model.rig import (
     Joint,
     Limit,
     Pair,
+    Plane,
     Plate,
     Rail,
     Ram,
@@ -29,7 +33,7 @@ from rigpose.model.rig import (
 )
 
 Matrix = tuple[Coordinates, ...]
-PartT = TypeVar("PartT", Joint, Bone, Plate, Rail, Ram, Crank, Limit, Tie, Frozen)
+PartT = TypeVar("PartT", Joint, Bone, Plate, Plane, Rail, Ram, Crank, Limit, Tie, Frozen)
 
 QUARTERS = {0.0: (1.0, 0.0), 90.0: (0.0, 1.0), 180.0: (-1.0, 0.0), 270.0: (0.0, -1.0)}
 """Cosine and sine that must come out exactly: quarter turns are what people build with."""
@@ -66,9 +70,18 @@ class Move:
         """A range of lengths after the move."""
         return None if span is None else (span[0] * self.scale, span[1] * self.scale)
 
+    @property
+    def sign(self) -> float:
+        """What values of angles are multiplied by; in space their axes turn round instead."""
+        return -1.0 if self.mirrored and len(self.matrix) == 2 else 1.0
+
     def angles(self, span: Span) -> Span:
         """A range of signed angles after the move."""
-        return (0.0 - span[1], 0.0 - span[0]) if self.mirrored else span
+        return (0.0 - span[1], 0.0 - span[0]) if self.sign < 0 else span
+
+    def axis(self, axis: Pair) -> Pair:
+        """The two joints of an axis in space, in the order that keeps the sense of turning."""
+        return (axis[1], axis[0]) if self.mirrored else axis
 
 
 def cosine_sine(degrees: float) -> tuple[float, float]:
@@ -139,6 +152,7 @@ def placed(rig: Rig, move: Move, prefix: str, joined: Mapping[str, str]) -> Rig:
                             play=b.play * move.scale) for b in rig.bones),
         plates=tuple(_plate(n.of(p), move, n) for p in rig.plates),
         rails=tuple(_rail(n.of(r), move, n) for r in rig.rails),
+        planes=tuple(_plane(n.of(p), move, n) for p in rig.planes),
         rams=tuple(replace(n.of(r), ends=n.pair(r.ends), range=move.span(r.range))
                    for r in rig.rams),
         cranks=tuple(_crank(n.of(c), move, n) for c in rig.cranks),
@@ -147,6 +161,13 @@ def placed(rig: Rig, move: Move, prefix: str, joined: Mapping[str, str]) -> Rig:
         frozen=tuple(replace(n.of(f), bones=tuple(map(n.part, f.bones))) for f in rig.frozen),
         branches=_branches(rig, move, n), names={},
     )
+
+
+def placed_axes(hinges: Mapping[str, Pair], move: Move, prefix: str,
+                joined: Mapping[str, str]) -> dict[str, Pair]:
+    """The axes of a rig's hinges after a move, by their new names."""
+    n = _Naming(prefix, joined)
+    return {n.part(name): n.pair(move.axis(axis)) for name, axis in hinges.items()}
 
 
 def _joint(joint: Joint, move: Move) -> Joint:
@@ -168,34 +189,50 @@ def _rail(rail: Rail, move: Move, n: _Naming) -> Rail:
     )
 
 
+def _plane(plane: Plane, move: Move, n: _Naming) -> Plane:
+    return replace(plane, joints=tuple(map(n.joint, plane.joints)),
+                   through=move.place(plane.through), normal=move.way(plane.normal))
+
+
 def _crank(crank: Crank, move: Move, n: _Naming) -> Crank:
     zero = crank.zero
     if not isinstance(zero, str):
-        sign = -1.0 if move.mirrored else 1.0
-        start = 0.0 if crank.base else move.x_axis
-        zero = start + sign * zero
+        start = 0.0 if crank.base or crank.axis else move.x_axis
+        zero = start + move.sign * zero
+    axis = None if crank.axis is None else n.pair(move.axis(crank.axis))
     return replace(
-        crank, turns=n.part(crank.turns), line=n.pair(crank.line), zero=zero,
-        base=None if crank.base is None else n.pair(crank.base),
+        crank, turns=n.part(crank.turns), line=_from_axis(n.pair(crank.line), axis), zero=zero,
+        base=None if crank.base is None else _from_axis(n.pair(crank.base), axis),
         base_part=crank.base_part if crank.base is None else n.part(crank.base_part),
-        about=None if crank.about is None else n.joint(crank.about),
+        about=None if crank.about is None else n.joint(crank.about), axis=axis,
+        toward=None if crank.toward is None else move.way(crank.toward),
         range=None if crank.range is None else move.angles(crank.range),
     )
 
 
+def _from_axis(line: Pair, axis: Pair | None) -> Pair:
+    """In space a line starts at the first joint of its axis."""
+    return line if axis is None else (axis[0], line[1])
+
+
 def _limit(limit: Limit, move: Move, n: _Naming) -> Limit:
+    axis = None if limit.axis is None else n.pair(move.axis(limit.axis))
+    first, second = (_from_axis(n.pair(line), axis) for line in (limit.first, limit.second))
     return replace(
-        limit, first=n.pair(limit.first), second=n.pair(limit.second), at=n.joint(limit.at),
-        first_part=n.part(limit.first_part), second_part=n.part(limit.second_part),
+        limit, first=first, second=second, at=first[0], axis=axis,
+        first_part=_part(limit.first_part, n), second_part=_part(limit.second_part, n),
         range=limit.range if limit.either else move.angles(limit.range),
     )
 
 
+def _part(name: str, n: _Naming) -> str:
+    return name if name == GROUND else n.part(name)
+
+
 def _tie(tie: Tie, move: Move, n: _Naming, cranks: set[str]) -> Tie:
     """The same condition on the copy's values: mirrored angles and scaled ways undo it."""
-    turn = -1.0 if move.mirrored else 1.0
     return replace(tie, sum=tuple(
-        (n.part(drive), factor * turn if drive in cranks else factor / move.scale)
+        (n.part(drive), factor * move.sign if drive in cranks else factor / move.scale)
         for drive, factor in tie.sum))
 
 

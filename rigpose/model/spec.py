@@ -22,7 +22,22 @@ Range = Annotated[
 ]
 Ends = Annotated[Names, Meta(description="a list of two joint names; from the first to the second")]
 Line = Annotated[
-    Names | None, Meta(description="a list of two joint names; a directed line of the part")
+    Names | None,
+    Meta(
+        description="a list of two joint names; a directed line of the part; in space from the "
+        "axis to a joint off it"
+    ),
+]
+AxisLine = Annotated[
+    Names | None,
+    Meta(description="a list of two joint names; in space, the axis, by the right hand"),
+]
+Vector = Annotated[
+    list[Number], Meta(description="a list of three coordinates; of any length but zero")
+]
+Parts = Annotated[
+    Names,
+    Meta(description='a list of two names of bones or plates; one of them may be "ground"'),
 ]
 
 
@@ -78,7 +93,7 @@ class PlateSpec(PartSpec, kw_only=True, forbid_unknown_fields=True):
 
 
 class RailSpec(PartSpec, kw_only=True, forbid_unknown_fields=True):
-    """a table with `joint` and a line; a straight line on which a joint slides."""
+    """a table with `joint` and a line; a line, or in space a plane, on which a joint slides."""
 
     joint: Annotated[str, Meta(description="a joint name; the joint that slides")]
     through: Annotated[
@@ -87,6 +102,13 @@ class RailSpec(PartSpec, kw_only=True, forbid_unknown_fields=True):
     ] = None
     direction: Annotated[
         list[Number] | None, Meta(description="a list of coordinates; of any length but zero")
+    ] = None
+    normal: Annotated[
+        list[Number] | None,
+        Meta(
+            description="a list of three coordinates; in space, with `through`: the joint stays "
+            "in this plane, and the rail has no value"
+        ),
     ] = None
     along: Annotated[
         Names | None,
@@ -114,12 +136,27 @@ class CrankSpec(PartSpec, kw_only=True, forbid_unknown_fields=True):
         Meta(description='"ground" or the name of a bone, ram or plate; where the angle starts'),
     ] = field(default="ground", name="from")
     about: Annotated[
-        str | None, Meta(description="a joint name; bones are seen from it outwards")
+        str | None,
+        Meta(
+            description="a joint name, in space a hinge's; bones are seen from the joint outwards; "
+            "the hinge is what the part turns about"
+        ),
     ] = None
+    axis: AxisLine = None
     zero: Annotated[
-        Number,
-        Meta(description='a number or arithmetic, or "rest"; the angle that counts as 0'),
-    ] = 0.0
+        Number | list[Number] | UnsetType,
+        Meta(
+            description='a number or arithmetic, "rest", or in space a direction; what counts as '
+            '0; left out: 0, in space "rest"'
+        ),
+    ] = UNSET
+    toward: Annotated[
+        list[Number] | None,
+        Meta(
+            description="a list of three coordinates; in space, from which direction of the "
+            "ground the angle counts; left out: where the part points at `at`"
+        ),
+    ] = None
     line: Line = None
     from_line: Line = None
     range: Range = None
@@ -132,19 +169,72 @@ class LimitSpec(PartSpec, kw_only=True, forbid_unknown_fields=True):
         field(name="from")
     )
     to: Annotated[str, Meta(description="the name of a bone, ram or plate; the second line")]
-    at: Annotated[str, Meta(description="a joint name; both lines are seen from it outwards")]
+    at: Annotated[
+        str,
+        Meta(
+            description="a joint name, in space also a hinge's; both lines are seen from it "
+            "outwards"
+        ),
+    ]
     range: Annotated[
         list[Number],
         Meta(
             description="a list of two numbers, lowest and highest; degrees counter-clockwise, "
-            "modulo 360"
+            "in space by the right hand about the hinge or `axis`, modulo 360"
         ),
     ]
+    axis: AxisLine = None
     either: Annotated[
         bool, Meta(description="true or false; true takes the angle without its sign, 0 to 180")
     ] = False
     from_line: Line = None
     to_line: Line = None
+
+
+class PlaneSpec(PartSpec, kw_only=True, forbid_unknown_fields=True):
+    """a table with `joints`, `through` and `normal`; in space, a plane in which joints stay."""
+
+    joints: Annotated[Names, Meta(description="a list of joint names")]
+    through: Annotated[
+        list[Number], Meta(description="a list of three coordinates; a point of the plane")
+    ]
+    normal: Vector
+
+
+class HingeSpec(PartSpec, kw_only=True, forbid_unknown_fields=True):
+    """a table with `parts`, `at` and `axis`; in space, two parts that turn about one axis."""
+
+    parts: Parts
+    at: Annotated[str, Meta(description="a joint name; the axis runs through its place at rest")]
+    axis: Vector
+
+
+class UniversalSpec(PartSpec, kw_only=True, forbid_unknown_fields=True):
+    """a table with `parts`, `at` and `axes`; in space, two parts joined by a cross."""
+
+    parts: Parts
+    at: Annotated[str, Meta(description="a joint name; the middle of the cross")]
+    axes: Annotated[
+        list[list[Number]],
+        Meta(description="a list of two axes; the cross turns in the first part about the first"),
+    ]
+
+
+class SliderSpec(PartSpec, kw_only=True, forbid_unknown_fields=True):
+    """a table with `parts`, `at` and `axis`; in space, a part that slides without turning."""
+
+    parts: Annotated[
+        Names,
+        Meta(
+            description='a list of two names of bones or plates; the second slides along the '
+            'first; one of them may be "ground"'
+        ),
+    ]
+    at: Annotated[
+        str, Meta(description="a joint name; a joint of the part that slides; its place counts 0")
+    ]
+    axis: Vector
+    range: Range = None
 
 
 class TieSpec(PartSpec, kw_only=True, forbid_unknown_fields=True):
@@ -275,6 +365,10 @@ class RigSpec(HeadSpec, kw_only=True, forbid_unknown_fields=True):
     rams: dict[str, RamSpec] | UnsetType = UNSET
     cranks: dict[str, CrankSpec] | UnsetType = UNSET
     limits: dict[str, LimitSpec] | UnsetType = UNSET
+    planes: dict[str, PlaneSpec] | UnsetType = UNSET
+    hinges: dict[str, HingeSpec] | UnsetType = UNSET
+    universals: dict[str, UniversalSpec] | UnsetType = UNSET
+    sliders: dict[str, SliderSpec] | UnsetType = UNSET
     ties: dict[str, TieSpec] | UnsetType = UNSET
     frozen: dict[str, Names | FrozenSpec] | UnsetType = UNSET
     copies: dict[str, CopySpec] | UnsetType = UNSET
@@ -291,7 +385,9 @@ class RigSpec(HeadSpec, kw_only=True, forbid_unknown_fields=True):
     ] = UNSET
 
 
+IN_SPACE = ("planes", "hinges", "universals", "sliders")
+"""Sections that only a rig in space has."""
 SECTIONS = (
-    "sizes", "joints", "bones", "plates", "rails", "rams", "cranks", "limits", "ties", "frozen",
-    "copies", "branches", "names", "studio",
+    "sizes", "joints", "bones", "plates", "rails", "rams", "cranks", "limits", *IN_SPACE, "ties",
+    "frozen", "copies", "branches", "names", "studio",
 )
