@@ -106,6 +106,8 @@ class Baking:
         self.shot, self.rest = shot, find_rest(shot.rig)
         self.clock = clock_of(shot, self.rest)
         self.context = Context(self.rest, plan_of(self.rest, self.clock.knowns), budget)
+        eqs = self.rest.equations
+        self.places = np.empty((self.clock.count, eqs.n, eqs.dim))
         self.start = self._start(budget)
         self.row: Row | None = None
         if self.start.choice.number >= 0:
@@ -141,13 +143,14 @@ class Baking:
         if low:
             yield self._nothing(0, low)
         part = part_of_clock(self.clock, low, self.clock.count)
-        for piece in pieces(self.context, part, self.row.begins):
+        for piece in pieces(self.context, part, self.row.begins, out=self.places[low:]):
             moved = tuple((g, Pass(0, p.choice, p.time + low, p.kind)) for g, p in piece.passes)
             yield replace(piece, start=piece.start + low, stop=piece.stop + low, passes=moved)
 
     def _nothing(self, start: int, stop: int) -> Piece:
-        n, eqs = stop - start, self.rest.equations
-        none = np.full((n, eqs.n, eqs.dim), np.nan)
+        n = stop - start
+        none = self.places[start:stop]
+        none[...] = np.nan
         return Piece(start, stop, none, np.zeros(n, dtype=bool), np.full(n, np.nan), {}, ())
 
     def motion(self, done: Sequence[Piece]) -> Motion:
@@ -163,7 +166,7 @@ class Baking:
                 for v in {v for p in done for v in p.values}}
         motion = Motion(
             rig=self.shot.rig, frames=frames,
-            positions=_sealed(_joined([p.positions for p in done])),
+            positions=_sealed(self.places[:len(frames)]),
             state=_sealed(np.where(alive, np.uint8(State.MET), np.uint8(State.NONE))),
             margin=_sealed(_joined([p.margin for p in done]).astype(np.float32)),
             name=row.name if row else "", bends=row.bends if row else {},

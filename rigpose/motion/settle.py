@@ -46,9 +46,12 @@ class Piece:
     passes: tuple[tuple[int, Pass], ...]
 
 
-def pieces(context: Context, clock: Clock, begins: Sequence[Begin],
-           window: int = WINDOW) -> Iterator[Piece]:
-    """The row that begins with the given signs at frame 0, in pieces of ``window`` frames."""
+def pieces(context: Context, clock: Clock, begins: Sequence[Begin], window: int = WINDOW,
+           out: Array | None = None) -> Iterator[Piece]:
+    """The row that begins with the given signs at frame 0, in pieces of ``window`` frames.
+
+    out : (n_frames, n_joints, dim) where the positions are written, each piece a view of it
+    """
     state = list(begins)
     for start in range(0, clock.count, window):
         stop = min(start + window, clock.count)
@@ -59,7 +62,8 @@ def pieces(context: Context, clock: Clock, begins: Sequence[Begin],
             row = _follow(context, group, part, begin)
             rows.append(row)
             after.append(_next(row, begin, max(stop - HALO, 0) - low))
-        yield _piece(context, part, rows, low, start, stop)
+        here = None if out is None else out[start:stop]
+        yield _piece(context, part, rows, low, start, stop, here)
         state = after
 
 
@@ -91,7 +95,7 @@ def _next(row: Rows, begin: Begin, frame: int) -> Begin:
 
 
 def _piece(context: Context, clock: Clock, rows: Sequence[Rows], low: int, start: int,
-           stop: int) -> Piece:
+           stop: int, out: Array | None) -> Piece:
     eqs = context.plan.eqs
     base, base_alive = base_places(context, clock)
     cut = slice(start - low, stop - low)
@@ -110,7 +114,7 @@ def _piece(context: Context, clock: Clock, rows: Sequence[Rows], low: int, start
         columns[j * eqs.dim:(j + 1) * eqs.dim] = mine
     for j in set(range(eqs.n)) - sources.keys():
         columns[j * eqs.dim:(j + 1) * eqs.dim] = np.nan
-    positions = _turned(columns, eqs)
+    positions = _turned(columns, eqs, out)
     positions[~alive] = np.nan
     margin[~alive] = np.nan
     passes = tuple((g, Pass(p.row, p.choice, p.time + low, p.kind))
@@ -119,13 +123,14 @@ def _piece(context: Context, clock: Clock, rows: Sequence[Rows], low: int, start
     return Piece(start, stop, positions, alive, margin, values, passes)
 
 
-def _turned(columns: Array, eqs: Equations) -> Array:
+def _turned(columns: Array, eqs: Equations, into: Array | None) -> Array:
     """``(n_joints * dim, n)`` of the equations' frame to ``(n, n_joints, dim)`` in the rig's."""
     width, n = columns.shape
-    out = np.empty((n, width))
+    out = np.empty((n, eqs.n, eqs.dim)) if into is None else into
+    flat = out.reshape(n, width)
     for start in range(0, n, BLOCK):
-        block = out[start:start + BLOCK]
+        block = flat[start:start + BLOCK]
         np.multiply(columns[:, start:start + BLOCK].T, eqs.scale, out=block)
         if eqs.origin.any():
             block += np.tile(eqs.origin, eqs.n)
-    return out.reshape(n, eqs.n, eqs.dim)
+    return out

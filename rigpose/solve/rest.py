@@ -139,11 +139,12 @@ def _nearest(system: System, start: Array, values: Array) -> Array:
     """
     x, _ = assemble(system, start[None], values)
     free = system.free
-    aim = start.reshape(-1)[free]
+    # Joints without a written place have none to be near to.
+    aim = system.eqs.at.reshape(-1)[free]
     best = _merit(system, x, values, aim)
     for _ in range(60):
         r, jac = system.both(x, values)
-        away = aim - x.reshape(-1)[free]
+        away = np.nan_to_num(aim - x.reshape(-1)[free])
         step = away - _shortest(jac[0][:, free], jac[0][:, free] @ away + r[0], 1e-7)
         if np.abs(step).max(initial=0.0) < 1e-13:
             break
@@ -173,7 +174,7 @@ def _part_way(system: System, x: Array, values: Array, aim: Array, step: Array,
 def _merit(system: System, x: Array, values: Array, aim: Array) -> float:
     """Distance to the aim, and the misfit weighed so that it can't pay."""
     off = system.residual(x, values)[0]
-    far = float(np.linalg.norm(x.reshape(-1)[system.free] - aim))
+    far = float(np.linalg.norm(np.nan_to_num(x.reshape(-1)[system.free] - aim)))
     return far + 10.0 * float(np.abs(off).sum())
 
 
@@ -212,7 +213,7 @@ def find_rest(rig: Rig) -> Rest:
     if missing.any():
         start = _start_missing(system, eqs, start, missing)
     residual = system.residual(start[None], values)[0]
-    if np.abs(residual).max(initial=0.0) > 2e-15:
+    if missing.any() or np.abs(residual).max(initial=0.0) > 2e-15:
         big = start.size > DENSE
         start = _big(system, start, values[0]) if big else _nearest(system, start, values)
         misfit = np.abs(system.residual(start[None], values)).max(initial=0.0)

@@ -85,7 +85,8 @@ def base_table(context: Context, inputs: Inputs, careful: bool, **more: object) 
 
 def shared_base(context: Context, inputs: Inputs, **more: object) -> Table:
     """The fast base table of some inputs, run once for all groups."""
-    if context.plan.reads_values or len(context.plan.groups) < 2 or "guess" in more:
+    alone = len(context.plan.groups) < 2 and inputs.frames > 1
+    if context.plan.reads_values or alone or "guess" in more:
         return base_table(context, inputs, False, **more)
     if inputs.base is None:
         inputs.base = base_table(context, inputs, False, **more)

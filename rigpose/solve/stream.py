@@ -14,7 +14,7 @@ from rigpose.ground.words import Found, weaker
 from rigpose.solve.plan import Group
 from rigpose.solve.polish import polish
 from rigpose.solve.run import run_steps
-from rigpose.solve.search import Cells, Context, base_table, cells_of, group_table
+from rigpose.solve.search import Cells, Context, base_table, cells_of, group_table, shared_base
 from rigpose.solve.table import Inputs, Table
 
 BLOCK = 1 << 14
@@ -43,7 +43,7 @@ def stream_cells(context: Context, group: Group, inputs: Inputs) -> Iterator[Cel
 
 
 def _tables(context: Context, group: Group, inputs: Inputs, careful: bool) -> Iterator[Table]:
-    base = base_table(context, inputs, careful)
+    base = base_table(context, inputs, True) if careful else shared_base(context, inputs)
     base.heights_wanted = False  # a single frame passes no dead centre
     if base.alive is not None and not base.alive.any():
         return

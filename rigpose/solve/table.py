@@ -83,9 +83,9 @@ class Table:
         if array.shape[axis] == 1 or level == self.level:
             return array
         index = self.maps[level]
-        for k in range(level + 1, self.level):
-            index = index[self.maps[k]]
-        return np.take(array, index, axis=axis)
+        for later in self.maps[level + 1:]:
+            index = index[later]
+        return array.take(index, axis=axis)
 
     def point(self, p: Point) -> Array:
         """A point over today's branches (or with a branch axis of one)."""
