@@ -486,8 +486,8 @@ def test_rigs_in_space(tmp_path: Path) -> None:
         "plane: only a plane rig (`dim = 2`) stands on a plane; got dim = 3; take `plane` out",
         "plates.p.lengths: only a plate in the plane has its shape from lengths; got dim = 3; give "
         "the joints' places with `at`, or `shape`",
-        'cranks.k: in space a crank says what it turns about; got neither `about` nor `axis`; write '
-        'about = "HINGE", or axis = [joint, joint]',
+        "cranks.k: in space a crank says what it turns about; got neither `about` nor `axis`; "
+        'write about = "HINGE", or axis = [joint, joint]',
         'limits.l: in space a limit has a sign about a hinge or an `axis` only; got at = "b"; name '
         "a hinge, or write either = true and a range between 0 and 180",
     ]

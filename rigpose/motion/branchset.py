@@ -24,7 +24,7 @@ SOON = 256
 """Frames within which a row that begins at a dead centre is looked at for its bends."""
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Branches:
     """Branches (rows) over frames, nearest to the rest pose first. All arrays are read-only.
 
@@ -59,6 +59,10 @@ class Branches:
 
     def __iter__(self) -> Iterator[Branches]:
         return (self.take([k]) for k in range(len(self)))
+
+    def __repr__(self) -> str:
+        return (f"<Branches of {self.rig.name!r}: {len(self)} over {len(self.frames)} frames, "
+                f"{self.found.value}>")
 
     def __str__(self) -> str:
         frames = "" if len(self.frames) == 1 else f" over {len(self.frames)} frames"

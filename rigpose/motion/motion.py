@@ -55,7 +55,7 @@ class Span:
         return f"{frames}: {self.why}"
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Motion:
     """Poses over frames. All arrays are read-only.
 
@@ -86,6 +86,9 @@ class Motion:
 
     def __len__(self) -> int:
         return len(self.frames)
+
+    def __repr__(self) -> str:
+        return f"<Motion of {self.rig.name!r}: {len(self)} frames, branch {self.name!r}>"
 
     def __getitem__(self, joint: str) -> Array:
         """A joint's path, (n_frames, dim). Raises KeyError for an unknown joint."""

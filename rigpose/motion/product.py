@@ -121,7 +121,8 @@ def _gaps(rest: Rest, rows: Rows) -> Array:
     each = np.arange(len(first))
     total = np.zeros(len(first))
     for j, place in zip(rows.group.joints, rows.places, strict=True):
-        mine = place[:, :, 0] if single else place[:, each if place.shape[1] > 1 else 0, first]
+        at = np.minimum(first, place.shape[2] - 1)
+        mine = place[:, :, 0] if single else place[:, each if place.shape[1] > 1 else 0, at]
         gap = mine - rest.scaled[j][:, None]
         gap *= gap
         total += gap.sum(axis=0)

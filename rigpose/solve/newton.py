@@ -132,6 +132,13 @@ def block_margin(step: Cluster, x: Array, values: Array, goal: Array) -> Array:
     dim = step.system.eqs.dim
     _, jac = step.system.both(x, values, goal)
     a = jac[:, np.array(step.square)][:, :, _columns(step, dim)]
+    known = np.isfinite(a).all(axis=(1, 2))
+    if not known.all():
+        # What the block hangs on is dead in some of these.
+        out = np.full(len(x), np.nan)
+        if known.any():
+            out[known] = block_margin(step, x[known], values[known], goal[known])
+        return out
     move = np.linalg.pinv(a, rcond=1e-14)
     n, w, m = move.shape
     far = np.sqrt((move.reshape(n, w // dim, dim, m) ** 2).sum(axis=2)).max(axis=(1, 2))
