@@ -204,8 +204,20 @@ def _put(cells: Cells, careful: Cells, columns: NDArray[np.intp], rows: NDArray[
                    turning=cells.turning | careful.turning)
 
 
+def _none_like(cells: Cells, frames: int) -> Cells:
+    """A run that lost all its branches before its last crossing, as no branches at all."""
+    return Cells(cells.group, cells.codes[:0],
+                 [np.zeros((len(p), 0, frames)) for p in cells.places],
+                 np.zeros((0, frames), dtype=bool), np.zeros((0, frames)),
+                 [np.zeros((0, frames)) for _ in cells.sines], cells.found)
+
+
 def _merge(cells: Cells, careful: Cells, columns: NDArray[np.intp]) -> Cells:
     """Branches of both runs by their codes; those of one run are dead in the other's frames."""
+    if cells.codes.shape[1] < careful.codes.shape[1]:
+        cells = _none_like(careful, cells.alive.shape[1])
+    elif careful.codes.shape[1] < cells.codes.shape[1]:
+        careful = _none_like(cells, len(columns))
     b, f = cells.alive.shape
     everything = np.concatenate([cells.codes, careful.codes])
     if not len(everything):
