@@ -27,13 +27,14 @@ _SECTIONS = """
 
 # Joints that slide on a line: on the ground, or in a slot that two joints carry.
 # [rails]
-# NAME = { joint = "JOINT", through = [0, 0], direction = [1, 0], range = [-1, 1] }
+# NAME = { joint = "JOINT", through = ORIGIN, direction = XAXIS, range = [-1, 1] }
 # NAME = { joint = "JOINT", along = ["JOINT", "JOINT"] }
 
 # Bones whose length is driven, or free within its range.
 # [rams]
 # NAME = { ends = ["JOINT", "JOINT"], range = [1, 2] }
-
+"""
+_TURNS = """
 # Angles that may be driven, in degrees counter-clockwise.
 # [cranks]
 # NAME = { turns = "BONE", from = "ground", about = "JOINT", zero = "rest" }
@@ -41,6 +42,29 @@ _SECTIONS = """
 # Angles between two bones that may not be left.
 # [limits]
 # NAME = { from = "BONE", to = "BONE", at = "JOINT", range = [10, 170] }
+"""
+_TURNS_IN_SPACE = """
+# Bones or plates that turn about one axis; without it they meet in a ball joint.
+# [hinges]
+# NAME = { parts = ["ground", "BONE"], at = "JOINT", axis = [0, 1, 0] }
+
+# Parts that slide along one another and never turn; universals have a cross between them.
+# [sliders]
+# NAME = { parts = ["BONE", "BONE"], at = "JOINT", axis = [0, 0, 1], range = [-1, 1] }
+# [universals]
+# NAME = { parts = ["BONE", "BONE"], at = "JOINT", axes = [[1, 0, 0], [0, 1, 0]] }
+
+# Joints that stay in a plane on the ground.
+# [planes]
+# NAME = { joints = ["JOINT"], through = [0, 0, 0], normal = [0, 0, 1] }
+
+# Angles that may be driven, in degrees by the right hand about the hinge.
+# [cranks]
+# NAME = { turns = "BONE", from = "ground", about = "HINGE" }
+
+# Angles about a hinge that may not be left.
+# [limits]
+# NAME = { from = "BONE", to = "BONE", at = "HINGE", range = [10, 170] }
 """
 
 _PLANES = ((2, (0, 1), ([1, 0, 0], [0, 1, 0])), (1, (0, 2), ([1, 0, 0], [0, 0, 1])),
@@ -69,7 +93,15 @@ def start_text(csv_path: str | Path, unit: str = "m", up: str = "y") -> str:
         head.append(plane[1])
     joints = [f"{tomltext.key(names[n])} = {tomltext.value([p[a] for a in axes])}"
               for n, p in found.places.items()]
-    return "\n".join([*head, "", "[joints]", *joints, *_studio_names(names), _SECTIONS])
+    return "\n".join([*head, "", "[joints]", *joints, *_studio_names(names),
+                      _sections(plane is None)])
+
+
+def _sections(in_space: bool) -> str:
+    """All other sections as comments."""
+    zeros, one = ("[0, 0, 0]", "[1, 0, 0]") if in_space else ("[0, 0]", "[1, 0]")
+    shared = _SECTIONS.replace("ORIGIN", zeros).replace("XAXIS", one)
+    return shared + (_TURNS_IN_SPACE if in_space else _TURNS)
 
 
 def _check_frame(unit: str, up: str) -> None:

@@ -60,11 +60,16 @@ class Fittings:
             return False
         if isinstance(body, Ram):
             notes.add(path, f"a {kind} joins bones and plates: a ram changes its length",
-                      shown(name), "join the ram's ends to plates, or write a slider for the ram")
+                      shown(name), "name what the ram's ends belong to")
             return False
         if isinstance(body, Bone) and body.play:
             notes.add(path, f"a {kind} makes a plate of a bone, and a plate has no `play`",
                       f"play = {body.play!r} of {shown(name)}", "take `play` out")
+            return False
+        group = next((f.name for f in self.bench.parts.frozen.values() if name in f.bones), None)
+        if group is not None:
+            notes.add(path, f"a {kind} makes a plate of a bone, and a frozen group is of bones",
+                      f"{shown(name)} of the group {shown(group)}", "take it out of the group")
             return False
         return self._is_drawn(path, body, kind)
 
@@ -139,7 +144,8 @@ class Fittings:
         bench = self.bench
         fault = name_fault(name, slash=bench.slash)
         if fault:
-            bench.notes.add(path, fault[0], f"{shown(name)} for its helper joint", fault[1])
+            if name_fault(str(path[1]), slash=bench.slash) is None:  # else that is told already
+                bench.notes.add(path, fault[0], f"{shown(name)} for its helper joint", fault[1])
             return None
         if name in bench.parts.joints or name in bench.also:
             bench.notes.add(path, "its helper joint has a name that no other joint has",

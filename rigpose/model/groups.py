@@ -32,7 +32,10 @@ def _frozen(bench: Bench, name: str, spec: FrozenSpec) -> Frozen | None:
     if not bones:
         bench.notes.add((*path, "bones"), "must list one bone or more", "none", "list the bones")
     for k, bone in enumerate(bones):
-        if bone not in bench.parts.bones and not bench.is_lost("body", bone):
+        if bone in bench.rods:
+            bench.notes.add((*path, "bones", k), "a hinge makes a plate of a bone, and a plate "
+                            "keeps its shape anyway", shown(bone), "take it out of the group")
+        elif bone not in bench.parts.bones and not bench.is_lost("body", bone):
             bench.notes.unknown((*path, "bones", k), "bone", bone, bench.parts.bones)
     if len(set(bones)) < len(bones):
         twice = next(b for k, b in enumerate(bones) if b in bones[:k])

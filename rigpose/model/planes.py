@@ -12,8 +12,8 @@ from rigpose.model.spec import PlaneSpec, RailSpec
 
 
 def add_planes(bench: Bench, table: Table) -> None:
-    """Add all planes."""
-    for name, raw in table.items():
+    """Add all planes; in a plane rig the section as a whole has been refused."""
+    for name, raw in table.items() if bench.dim == 3 else ():
         spec = decode(bench.notes, ("planes", name), raw, PlaneSpec)
         good = bench.claim("planes", name)
         plane = None if spec is None else _plane(bench, name, spec)
