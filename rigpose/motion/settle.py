@@ -17,7 +17,9 @@ from rigpose.solve.rows import Codes, Pass, Rows, follow
 from rigpose.solve.search import Cells, Context
 from rigpose.solve.stepping import walk
 
-WINDOW = 4096
+WINDOW = 1 << 14
+"""Frames of a window of a small rig; a large one has fewer, so that its first rows come as soon."""
+PLACES = 1 << 19
 HALO = 2
 BLOCK = 512
 
@@ -46,13 +48,15 @@ class Piece:
     passes: tuple[tuple[int, Pass], ...]
 
 
-def pieces(context: Context, clock: Clock, begins: Sequence[Begin], window: int = WINDOW,
+def pieces(context: Context, clock: Clock, begins: Sequence[Begin], window: int = 0,
            out: Array | None = None) -> Iterator[Piece]:
-    """The row that begins with the given signs at frame 0, in pieces of ``window`` frames.
+    """The row that begins with the given signs at frame 0, in pieces of ``window`` frames (0: as
+    many as the rig's size suggests).
 
     out : (n_frames, n_joints, dim) where the positions are written, each piece a view of it
     """
     state = list(begins)
+    window = window or max(64, min(WINDOW, PLACES // context.plan.eqs.n))
     for start in range(0, clock.count, window):
         stop = min(start + window, clock.count)
         low, high = max(start - HALO, 0), min(stop + HALO, clock.count)
