@@ -10,15 +10,17 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
+from functools import cached_property
 
 import numpy as np
 
 from rigpose.model.bench import Bench, Common, joints_of
 from rigpose.model.bodies import GROUND
-from rigpose.model.equations import Array
 from rigpose.model.names import KeyPath, name_fault, shown
 from rigpose.model.rig import Body, Bone, Coordinates, Joint, Pair, Plate, Ram
-from rigpose.model.vectors import along, less
+from rigpose.model.vectors import along, dot, less
+
+Matrix = tuple[Coordinates, ...]
 
 SAME = 1e-9
 """Places nearer than this part of the rig's extent are one, and a plate this near to its drawing
@@ -66,7 +68,7 @@ class Fittings:
             notes.add(path, f"a {kind} makes a plate of a bone, and a plate has no `play`",
                       f"play = {body.play!r} of {shown(name)}", "take `play` out")
             return False
-        group = next((f.name for f in self.bench.parts.frozen.values() if name in f.bones), None)
+        group = self._frozen.get(name)
         if group is not None:
             notes.add(path, f"a {kind} makes a plate of a bone, and a frozen group is of bones",
                       f"{shown(name)} of the group {shown(group)}", "take it out of the group")
@@ -111,10 +113,16 @@ class Fittings:
         return True
 
     def joints(self, part: str) -> list[str]:
-        """All joints that a part carries so far; none for the ground."""
+        """All joints that a part carries so far; none for the ground, where any two may meet."""
+        if part == GROUND:
+            return []
         body = self.bench.parts.body(part)
-        own = [] if body is None else list(joints_of(body))
-        return own + [j for j in self.extra.get(part, ()) if j not in own]
+        return [*(() if body is None else joints_of(body)), *self.extra.get(part, ())]
+
+    @cached_property
+    def _frozen(self) -> dict[str, str]:
+        """Bones of copies' frozen groups, and the group; the rig's own are read later."""
+        return {b: f.name for f in self.bench.parts.frozen.values() for b in f.bones}
 
     def _at(self, joint: str) -> Coordinates:
         at = self.bench.parts.joints[joint].at
@@ -157,7 +165,7 @@ class Fittings:
     def carry(self, part: str, joint: str, measured_from: str | None = None) -> None:
         """Let a part carry a joint, unless it does so already."""
         if joint not in self.joints(part):
-            self.extra.setdefault(part, {})[joint] = measured_from or joint
+            self.extra.setdefault(part, {}).setdefault(joint, measured_from or joint)
 
     # -- making plates ------------------------------------------------------------------------
 
@@ -178,31 +186,46 @@ class Fittings:
 
     def _plate(self, body: Bone | Plate, joints: dict[str, str]) -> Plate:
         own = list(joints_of(body))
-        drawn = np.array([self._at(j) for j in own])
-        shape = np.array(body.shape) if isinstance(body, Plate) else _rod(drawn, body.length)
-        turn = _turn(shape, drawn, self._same) if isinstance(body, Plate) else np.eye(3)
+        drawn = [self._at(j) for j in own]
+        shape = list(body.shape if isinstance(body, Plate) else _rod(drawn, body.length))
+        turn = _turn(shape, drawn, self._same) if isinstance(body, Plate) else None
+        whole = (_middle(shape), _middle(drawn))
         for joint, anchor in joints.items():
-            start, here = (shape[:len(drawn)].mean(axis=0), drawn.mean(axis=0)) if (
-                anchor == joint) else (shape[own.index(anchor)], np.array(self._at(anchor)))
-            shape = np.vstack([shape, start + np.array(less(self._at(joint), tuple(here))) @ turn])
+            start, here = whole if anchor == joint else (
+                shape[own.index(anchor)], self._at(anchor))
+            way = less(self._at(joint), here)
+            shape.append(along(start, way if turn is None else _turned(turn, way), 1.0))
             own.append(joint)
         return Plate(name=body.name, joints=tuple(own), note=body.note, layer=body.layer,
-                     skin=body.skin, shape=tuple(tuple(map(float, p)) for p in shape))
+                     skin=body.skin, shape=tuple(shape))
 
 
-def _rod(drawn: Array, length: float) -> Array:
+def _rod(drawn: Sequence[Coordinates], length: float) -> list[Coordinates]:
     """A bone's ends as drawn, but at its length."""
-    way = drawn[1] - drawn[0]
-    return np.array([np.zeros(3), way * (length / math.dist(drawn[0], drawn[1]))])
+    way = less(drawn[1], drawn[0])
+    zero = (0.0, 0.0, 0.0)
+    return [zero, along(zero, way, length / math.dist(drawn[0], drawn[1]))]
 
 
-def _turn(shape: Array, drawn: Array, same: float) -> Array:
-    """The rotation ``(3, 3)`` that brings a plate's own frame onto the drawing best (Kabsch 1976;
-    from memory): none at all where the plate was measured from it."""
-    own, there = shape - shape.mean(axis=0), drawn - drawn.mean(axis=0)
-    if float(np.abs(own - there).max()) <= same:
-        return np.eye(3)
-    u, _, vt = np.linalg.svd(own.T @ there)
+def _middle(places: Sequence[Coordinates]) -> Coordinates:
+    return tuple(math.fsum(axis) / len(places) for axis in zip(*places, strict=True))
+
+
+def _turned(rows: Matrix, way: Coordinates) -> Coordinates:
+    return tuple(dot(row, way) for row in rows)
+
+
+def _turn(shape: Sequence[Coordinates], drawn: Sequence[Coordinates], same: float) -> (
+    Matrix | None
+):
+    """Rows of the rotation that takes the drawing into a plate's own frame best (Kabsch 1976; from
+    memory); None where the plate was measured from it and lies in it as drawn."""
+    own, there = _middle(shape), _middle(drawn)
+    if all(math.dist(less(p, own), less(q, there)) <= same
+           for p, q in zip(shape, drawn, strict=True)):
+        return None
+    x, y = np.array(shape) - own, np.array(drawn) - there
+    u, _, vt = np.linalg.svd(y.T @ x)
     hand = np.diag([1.0, 1.0, np.sign(np.linalg.det(u @ vt))])
-    turn: Array = (u @ hand @ vt).T
-    return turn
+    rows: list[list[float]] = ((u @ hand @ vt).T).tolist()
+    return tuple(tuple(row) for row in rows)

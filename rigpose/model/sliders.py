@@ -82,7 +82,8 @@ def _slider(fit: Fittings, name: str, spec: SliderSpec) -> bool:
 def _slides(fit: Fittings, slider: _Slider) -> bool:
     """Whether the joint belongs to the part that slides, and to no other part of the slider."""
     pinned = fit.bench.parts.joints[slider.joint].pin
-    if slider.joint not in fit.joints(slider.carrier) and not pinned:
+    carried = slider.joint in (*fit.joints(slider.carrier), *fit.extra.get(slider.carrier, ()))
+    if not carried and not pinned:
         return True
     got = f"{shown(slider.joint)}, which is pinned" if pinned else (
         f"{shown(slider.joint)} of {shown(slider.carrier)}, along which it slides")

@@ -9,7 +9,7 @@ from rigpose.model.rig import Coordinates
 
 def less(a: Coordinates, b: Coordinates) -> Coordinates:
     """The way from b to a."""
-    return tuple(x - y for x, y in zip(a, b, strict=True))
+    return (a[0] - b[0], a[1] - b[1], a[2] - b[2])
 
 
 def along(a: Coordinates, way: Coordinates, far: float) -> Coordinates:
@@ -18,12 +18,12 @@ def along(a: Coordinates, way: Coordinates, far: float) -> Coordinates:
     >>> along((1.0, 2.0, 3.0), (0.0, 0.0, 1.0), 0.5)
     (1.0, 2.0, 3.5)
     """
-    return tuple(x + far * w for x, w in zip(a, way, strict=True))
+    return (a[0] + far * way[0], a[1] + far * way[1], a[2] + far * way[2])
 
 
 def dot(a: Coordinates, b: Coordinates) -> float:
     """The inner product."""
-    return math.fsum(x * y for x, y in zip(a, b, strict=True))
+    return math.fsum((a[0] * b[0], a[1] * b[1], a[2] * b[2]))
 
 
 def cross(a: Coordinates, b: Coordinates) -> Coordinates:
