@@ -295,3 +295,41 @@ ONE_BY_ONE = (*PLAIN, _driven_rail, _bar_from_bar, _target, _moving_slot, _aimed
 PRUNED = (*ONE_BY_ONE, _fence, _surplus)
 BLOCKS = (_platform, _triangle, _trammel)
 EVERY = (*PRUNED, *BLOCKS)
+
+
+GRID = [np.array([x, y], dtype=float) for x in range(-1, 3) for y in range(-1, 3)]
+WAYS = ((1, 0), (0, 1), (1, 1), (1, -1))
+
+
+def lattice_case(seed: int, steps: int = 3) -> Case:
+    """Joints on a small grid, so that bars lie in line, circles touch and joints coincide."""
+    draft = Draft(np.random.default_rng(seed))
+    draft.joint(_grid(draft), pin=True)
+    draft.joint(_grid(draft, "j0"), pin=True)
+    tip = draft.joint(_grid(draft, "j0"))
+    bone = draft.bone("j0", tip)
+    draft.add("cranks", "turn", {"turns": bone, "about": "j0"})
+    draft.drives["turn"] = draft.heading("j0", tip)
+    for _ in range(steps):
+        a, b = _two(draft)
+        kind = int(draft.rng.integers(4))
+        if kind == 2:
+            new = draft.joint(_grid(draft, a))
+            draft.bone(a, new)
+            draft.new("rails", {"joint": new, "through": draft.places[new].tolist(),
+                                "direction": list(WAYS[int(draft.rng.integers(4))])})
+        elif kind == 3:
+            corner = draft.joint(_grid(draft, a, b))
+            draft.new("plates", [a, corner, draft.joint(_grid(draft, a, corner))])
+            draft.bone(corner, b)
+        else:
+            new = draft.joint(_grid(draft, a, b))
+            draft.bone(a, new)
+            draft.bone(new, b)
+    return Case(draft.rig(), draft.drives, {}, np.array(list(draft.places.values())))
+
+
+def _grid(draft: Draft, *off: str) -> np.ndarray:
+    """A place of the grid where none of these joints lies."""
+    free = [p for p in GRID if all((p != draft.places[j]).any() for j in off)]
+    return free[int(draft.rng.integers(len(free)))]
