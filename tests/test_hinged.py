@@ -348,3 +348,45 @@ fold = { turns = "shin", from = "thigh", about = "knee" }
     for joint in rp.load_rig(tmp_path / "leg.toml").joint_names:
         assert place(found, f"star/{joint}") == pytest.approx(
             place(found, f"port/{joint}") * (-1, 1, 1), abs=1e-12)
+
+
+def test_ties_between_angles_and_ways() -> None:
+    """Two flaps geared one to two, the second with a screw of 3 a turn: 40 degrees of the first
+    are -20 of the second, and 40 / 360 * 3 on the slide."""
+    rig = rp.make_rig(
+        {"a": {"at": [0, 0, 0], **PIN}, "a tip": [1, 0, 0], "b": {"at": [5, 0, 0], **PIN},
+         "b tip": [5, 1, 0], "nut": [0, 0, 2], "arm": [0, 1, 2]}, dim=3,
+        bones={"first": ["a", "a tip"], "second": ["b", "b tip"], "carriage": ["nut", "arm"]},
+        hinges={"ha": {"parts": ["ground", "first"], "at": "a", "axis": Z},
+                "hb": {"parts": ["ground", "second"], "at": "b", "axis": [1, 0, 0]}},
+        sliders={"slide": {"parts": ["ground", "carriage"], "at": "nut", "axis": Z}},
+        cranks={"one": {"turns": "first", "about": "ha"},
+                "two": {"turns": "second", "about": "hb"}},
+        ties={"gear": {"sum": {"one": 1, "two": 2}},
+              "screw": {"sum": {"one": "3 / 360", "slide": -1}}})
+    rests_among(rig, {"one": 0.0})
+    found = rp.find_branches(rig, {"one": 40.0})
+    holds(rig, found)
+    turn = math.radians(-20)
+    assert place(found, "b tip")[:, 0] == pytest.approx(np.array([[
+        5, math.cos(turn), math.sin(turn)]]), abs=1e-12)
+    assert place(found, "arm")[:, 0] == pytest.approx(np.array([[0, 1, 2 + 1 / 3]]), abs=1e-12)
+
+
+def test_a_lamp_on_gimbals() -> None:
+    """A universal on the ground: the cross turns about x by 30 degrees, the lamp in it by 40."""
+    rig = rp.make_rig(
+        {"middle": [0, 0, 5], "wick": [0, 0, 3]}, {"lamp": ["middle", "wick"]}, dim=3,
+        universals={"ring": {"parts": ["ground", "lamp"], "at": "middle",
+                             "axes": [[1, 0, 0], [0, 1, 0]]}},
+        cranks={"roll": {"turns": "ring", "axis": ["middle", "ring axis 1"]},
+                "pitch": {"turns": "lamp", "from": "ring", "axis": ["middle", "ring axis 2"]}})
+    assert [j.name for j in rig.joints if j.pin] == ["middle", "ring axis 1"]
+    rests_among(rig, {"roll": 0.0, "pitch": 0.0})
+    found = rp.find_branches(rig, {"roll": 30.0, "pitch": 40.0})
+    holds(rig, found)
+    r, p = math.radians(30), math.radians(40)
+    turn = np.array([[1, 0, 0], [0, math.cos(r), -math.sin(r)], [0, math.sin(r), math.cos(r)]])
+    tilt = np.array([[math.cos(p), 0, math.sin(p)], [0, 1, 0], [-math.sin(p), 0, math.cos(p)]])
+    assert place(found, "wick")[:, 0] == pytest.approx(
+        (turn @ tilt @ (0, 0, -2) + (0, 0, 5))[None], abs=1e-12)
