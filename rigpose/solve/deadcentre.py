@@ -86,6 +86,8 @@ def _touching(heights: _Heights, hits: Hits) -> list[tuple[int, float, str]]:
     if not len(hits):
         return []
     row, low, high, opened = _single(heights, hits)
+    if not len(row):
+        return []
     grid = np.linspace(0.0, 1.0, POINTS)
     centre = (low + high) / 2
     for _ in range(ROUNDS):

@@ -181,3 +181,39 @@ def has_choice(step: Step) -> bool:
     """Whether a step has more than one way."""
     two_way = (Meet, Junction, Swing, Level)
     return isinstance(step, Cluster) or (isinstance(step, two_way) and step.bit >= 0)
+
+
+def alive_steps(steps: list[Step], joints: int) -> list[Step]:
+    """The steps without those whose points come to no joint (points below ``joints``).
+
+    A body's own frame may have choices that place nothing any more, because the ground placed
+    those joints by other means; each would list every branch twice.
+    """
+    makers = {p: k for k, step in enumerate(steps) for p in writes(step)}
+    keep = [k for k, step in enumerate(steps) if _is_root(step, joints)]
+    alive = set(keep)
+    while keep:
+        for p in _needs(steps[keep.pop()]):
+            k = makers.get(p)
+            if k is not None and k not in alive:
+                alive.add(k)
+                keep.append(k)
+        if not keep:
+            # A check within a frame counts as soon as one of its points does.
+            made = {p for k in alive for p in writes(steps[k])}
+            keep = [k for k, step in enumerate(steps) if k not in alive
+                    and isinstance(step, Check) and reads(step) & made]
+            alive.update(keep)
+    return [step for k, step in enumerate(steps) if k in alive]
+
+
+def _is_root(step: Step, joints: int) -> bool:
+    if isinstance(step, (Gauge, Tied)):
+        return True
+    if isinstance(step, Check):
+        return not step.points or min(step.points) < joints
+    return any(p < joints for p in writes(step))
+
+
+def _needs(step: Step) -> set[Point]:
+    return set(step.around) if isinstance(step, Cluster) else reads(step)

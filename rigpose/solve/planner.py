@@ -19,13 +19,14 @@ from rigpose.model.rig import Rig
 from rigpose.model.system import System
 from rigpose.solve.blocks import smallest_block
 from rigpose.solve.checks import check_key, checks_for
-from rigpose.solve.flow import reads, writes
+from rigpose.solve.flow import alive_steps, reads, writes
 from rigpose.solve.grouping import grouped
 from rigpose.solve.growth import Growth
 from rigpose.solve.heading import turned_by_crank, turned_by_rails
 from rigpose.solve.nearby import nearby
 from rigpose.solve.net import Net, Solid
 from rigpose.solve.plan import (
+    Check,
     Cluster,
     Gauge,
     Plan,
@@ -93,7 +94,19 @@ class Planner:
                     last = next(v for v in open_ones if v not in readable)
                     self._settle(t, readable, last)
                     moved = again = True
+                elif open_ones and len(open_ones) == len(readable):
+                    self._read_off(t, readable)
         return moved
+
+    def _read_off(self, t: int, readable: list[int]) -> None:
+        """A tie all of whose values the places fix already: it is left to be checked."""
+        name = self.eqs.tie_names[t]
+        for v in readable:
+            self.ground.steps.append(Gauge(value=v, parts=(self.eqs.values[v],)))
+            self.ground.known.add(v)
+            self.ground.used.add(("value", v))
+        self.ground.steps.append(Check(kind="tie", index=t, points=(), parts=(name,)))
+        self.settled_ties.add(t)
 
     def _settle(self, t: int, readable: list[int], last: int) -> None:
         name = self.eqs.tie_names[t]
@@ -205,7 +218,7 @@ def make_plan(
     steps, loose = planner.run()
     ground = planner.ground
     used = ground.settled() | {("tie", t) for t in planner.settled_ties}
-    steps = _with_solids(planner, steps)
+    steps = alive_steps(_with_solids(planner, steps), eqs.n)
     checks = list(checks_for(eqs, planner.net, ground, frozenset(used)))
     base, groups = grouped(eqs, steps, checks)
     rigid = ("distance", "body", "rail", "way", "angle", "target", "tie")

@@ -57,7 +57,11 @@ def redundant_sets(system: System, pieces: Cut, found: Sequence[Motions], rest: 
     for r in pieces.fixed:
         name = system.row_names[r]
         sets.append(Redundancy((name,), name, float(residual[r]) * system.eqs.scale))
+    # Some rows of one body or of one slot in space say a thing twice by their making.
+    lines = system.eqs.lines
     bodies = {b.name for b in system.eqs.bodies}
+    bodies |= {n for n, along in zip(lines.names, lines.along, strict=True)
+               if system.eqs.dim == 3 and along[0] >= 0}
     real = (s for s in sets if len(s.parts) > 1 or s.last not in bodies)
     return tuple(dict.fromkeys(real))
 

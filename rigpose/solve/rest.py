@@ -259,11 +259,14 @@ def _start_missing(system: System, eqs: Equations, start: Array, missing: Mask) 
 
 
 def _regular(system: System, poses: Array, values: Array) -> Mask:
-    """Poses of the largest rank: where two joints happen to fall together, say, a rig can turn
-    in ways that it can't elsewhere, and such a pose is no one's rest pose."""
+    """Poses of the largest rank, and of these the ones in which fewest joints fall together: a
+    rig can turn there in ways that it can't elsewhere, and such a pose is no one's rest pose."""
     _, jacobian = system.both(poses, values)
     ranks = (np.linalg.svd(jacobian[:, :, system.free], compute_uv=False) > 1e-7).sum(axis=1)
-    best: Mask = ranks == ranks.max(initial=0)
+    gaps = np.linalg.norm(poses[:, :, None] - poses[:, None], axis=-1)
+    together = (gaps < 1e-6).sum(axis=(1, 2))
+    together = np.where(ranks == ranks.max(initial=0), together, np.iinfo(together.dtype).max)
+    best: Mask = together == together.min()
     return best
 
 
