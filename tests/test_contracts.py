@@ -219,6 +219,14 @@ def test_values_can_be_pickled(name: str) -> None:
     assert pickle.loads(pickle.dumps(count)) == count
 
 
+@pytest.mark.parametrize("name", SHOTS[:4])
+def test_shots_can_be_pickled(name: str) -> None:
+    shot = rp.load_shot(RIGS / f"{name}.shot.toml")
+    again = pickle.loads(pickle.dumps(shot))
+    assert again == shot
+    assert np.array_equal(rp.bake(again).positions, rp.bake(shot).positions, equal_nan=True)
+
+
 @pytest.mark.parametrize("name", [*SHOTS, *SEEDS])
 def test_one_pose_reached_by_two_plans_has_the_same_bends(name: str) -> None:
     """Another crank, ram, rail or joint is given in place of one drive, at its value there."""

@@ -313,3 +313,32 @@ def test_a_cognate_draws_the_same_curve() -> None:
         # frame one of the two assemblies has the point.
         allowed = 1e-15 * first.size / second.margin.min(axis=0)
         assert (apart.min(axis=0) < 10 * allowed).all()
+
+
+def test_three_cognates_hung_on_one_point_move_together() -> None:
+    """Roberts' ten bars: one freedom, though two bars fewer would do (from memory). The second
+    cognate's bars are |1 - lam| times frame, coupler, follower and crank."""
+    a, b, c, lam = 1.1, 2.9, 2.4, 0.6 + 0.45j
+    left, right, mu = 0j, 3 + 0.4j, 1 - lam
+
+    def xy(z: complex) -> list[float]:
+        return [z.real, z.imag]
+
+    pins = {"left": left, "right": right, "third": left + lam * (right - left)}
+    rig = rp.make_rig(
+        {n: {"at": xy(z), "pin": True} for n, z in pins.items()}
+        | {n: {} for n in ("A", "B", "point", "A1", "B1", "A2", "B2")},
+        {n: {"ends": ends, "length": length} for n, ends, length in (
+            ("crank", ["left", "A"], a), ("follower", ["right", "B"], c),
+            ("crank1", ["left", "A1"], abs(lam) * b), ("follower1", ["third", "B1"], abs(lam) * c),
+            ("crank2", ["right", "A2"], abs(mu) * b), ("follower2", ["third", "B2"], abs(mu) * a))},
+        plates={n: {"joints": joints, "shape": [xy(z) for z in shape]} for n, joints, shape in (
+            ("coupler", ["A", "B", "point"], (0j, b + 0j, b * lam)),
+            ("coupler1", ["A1", "B1", "point"], (0j, lam * a, a + 0j)),
+            ("coupler2", ["A2", "B2", "point"], (0j, mu * c, c + 0j)))},
+        cranks={"input": {"turns": "crank", "about": "left"}})
+    found = rp.find_branches(rig, {"input": np.linspace(0, 360, 721)})
+    assert len(found) == 2
+    assert (found.state == rp.State.MET).all()
+    assert found.redundant == {"follower1", "follower2"}
+    assert rp.judge(rig, found.positions, found.size).worst()[0] < 1e-12
