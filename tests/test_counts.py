@@ -71,7 +71,7 @@ def placed_by_hand(lengths: Mapping[tuple[int, int], float],
     return poses
 
 
-@pytest.mark.parametrize("seed", range(18))
+@pytest.mark.parametrize("seed", range(12))
 def test_graphs_of_dyads_have_the_poses_that_circles_give(seed: int) -> None:
     """At most 2^(n - 2), two ways for each joint (elementary)."""
     n = 4 + seed % 6
@@ -305,7 +305,7 @@ def test_six_bars_with_one_joint_locked(chain: Mapping[str, str], joint: str, mo
     """A Watt chain has 4 assemblies, a Stephenson chain 4 or, with a joint outside its four-bar
     loop, 6 (by structure: two dyads or a triad). No seed has more, and some seed has as many."""
     counts = []
-    for seed in range(12):
+    for seed in range(8):
         rig, lock = locked(chain, joint, seed)
         found = rp.find_branches(rig, lock)
         drawn = rp.find_rest(rig).positions

@@ -210,7 +210,7 @@ GRASHOF = [
 @pytest.mark.parametrize(("bars", "count"), GRASHOF)
 @pytest.mark.parametrize("drive", ["input", "output"])
 def test_circuits_by_grashofs_law(bars: tuple[float, ...], count: int, drive: str) -> None:
-    """s + l < p + q: two circuits, else one, whichever bar is driven (Grashof 1883)."""
+    """s + l < p + q: two circuits, else one, whichever bar is driven (Grashof; from memory)."""
     assert circuits(rp.find_branches(four_bar(*bars), {drive: FINE})) == count
 
 
@@ -284,7 +284,7 @@ def cognate(lam: complex, a: float, b: float, c: float, pivots: tuple[complex, c
 
 
 def test_a_cognate_draws_the_same_curve() -> None:
-    """Roberts 1875, Chebyshev 1878: a coupler curve is drawn by three four-bars.
+    """Roberts and Chebyshev (from memory): a coupler curve is drawn by three four-bars.
 
     With complex lam = (C - A) / (B - A) the first cognate's bars are |lam| times frame, follower,
     crank and coupler, and its crank stays parallel to the line from A to C.

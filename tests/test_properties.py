@@ -45,7 +45,7 @@ def drawn_again(case: Case) -> None:
 
 # -- poses ----------------------------------------------------------------------------------------
 
-@settings(max_examples=60)
+@settings(max_examples=40)
 @given(seed=SEEDS, steps=st.integers(1, 7))
 def test_a_drawn_pose_is_found_again(seed: int, steps: int) -> None:
     drawn_again(random_case(seed, steps, PRUNED))
@@ -57,7 +57,7 @@ def test_a_drawn_pose_with_blocks_is_found_again(seed: int, steps: int) -> None:
     drawn_again(random_case(seed, steps, EVERY))
 
 
-@settings(max_examples=150)
+@settings(max_examples=100)
 @given(seed=SEEDS, steps=st.integers(1, 5))
 def test_a_pose_drawn_on_a_grid_is_found_again(seed: int, steps: int) -> None:
     case = lattice_case(seed, steps)
@@ -68,7 +68,7 @@ def test_a_pose_drawn_on_a_grid_is_found_again(seed: int, steps: int) -> None:
         assert "still move" in str(refused)
 
 
-@settings(max_examples=60)
+@settings(max_examples=40)
 @given(st.tuples(*[st.floats(-3, 3)] * 4), st.floats(-360, 360))
 def test_four_bars_of_very_unequal_lengths(powers: tuple[float, ...], turn: float) -> None:
     """From a thousandth to a thousand: lengths hold to 1e-12 of the size, whichever is small."""
@@ -159,8 +159,8 @@ def rows_agree(case: Case, seed: int) -> None:
         assert row_among(fine.positions[k], back.positions[:, ::-1])
 
 
-@settings(max_examples=25)
-@given(seed=SEEDS, steps=st.integers(1, 4))
+@settings(max_examples=12)
+@given(seed=SEEDS, steps=st.integers(1, 3))
 def test_rows_do_not_depend_on_how_they_are_sampled(seed: int, steps: int) -> None:
     rows_agree(random_case(seed, steps, ONE_BY_ONE), seed)
 
