@@ -7,7 +7,6 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
-from rigpose.ground.errors import BadInput, Problem
 from rigpose.model.equations import (
     GROUND,
     Angles,
@@ -21,9 +20,6 @@ from rigpose.model.equations import (
     Planes,
 )
 from rigpose.model.rig import Bone, Drive, Limit, Ram, Rig
-
-POSED = (2,)
-"""Dimensions that can be posed."""
 
 
 def _frame(rig: Rig) -> tuple[float, Array, Array]:
@@ -159,11 +155,6 @@ def _hands(rig: Rig, at: Array) -> tuple[tuple[str, tuple[int, int, int], float]
 @lru_cache(maxsize=64)
 def lower(rig: Rig) -> Equations:
     """The equations of a rig (kept for the rigs used last)."""
-    if rig.dim not in POSED:
-        raise BadInput(
-            Problem(rig.source, "dim", "this version poses rigs in the plane", str(rig.dim),
-                    "rigs with dim = 3 load and can be looked at, not posed yet")
-        )
     scale, origin, at = _frame(rig)
     values = rig.drive_names
     number = {name: k for k, name in enumerate(values)}
