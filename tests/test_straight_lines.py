@@ -52,11 +52,12 @@ def bar(joints: list[str], places: list[float]) -> dict[str, object]:
 
 # -- exact lines ----------------------------------------------------------------------------------
 
-def inversor(arm: float, side: float, lead: float) -> rp.Rig:
+def inversor(arm: float, side: float, lead: float, drawn: bool = True) -> rp.Rig:
     """Peaucellier's cell with its near corner led round a circle through the pivot."""
+    corners = {"near": [2 * lead, 0], "upper": [lead, 1], "lower": [lead, -1], "far": [4 * lead, 0]}
     return rp.make_rig(
         {"pivot": {"at": [0, 0], **PIN}, "centre": {"at": [lead, 0], **PIN},
-         "near": [2 * lead, 0], "upper": [lead, 1], "lower": [lead, -1], "far": [4 * lead, 0]},
+         **(corners if drawn else {n: {} for n in corners})},
         {"lead": {"ends": ["centre", "near"], "length": lead},
          "arm_1": {"ends": ["pivot", "upper"], "length": arm},
          "arm_2": {"ends": ["pivot", "lower"], "length": arm},
@@ -88,6 +89,15 @@ def test_peaucelliers_line_is_exact_over_the_whole_reach() -> None:
     across = near[..., 0] * far[..., 1] - near[..., 1] * far[..., 0]
     assert np.abs(across[cell]).max() < 1e-11
     assert len(rp.find_branches(inversor(5, 3, 2), {"turn": 120.01})) == 0
+
+
+def test_peaucelliers_cell_is_posed_by_its_lengths_alone() -> None:
+    """Though it can fold so that its far corner turns freely: the drawn cell has the same poses."""
+    drawn, bare = (rp.find_branches(inversor(5, 3, 2, d), {"turn": 30.0}) for d in (True, False))
+    assert len(drawn) == len(bare) == 4
+    apart = np.abs(drawn.positions[:, None, 0] - bare.positions[None, :, 0]).max(axis=(2, 3))
+    assert apart.min(axis=0).max() < 1e-12
+    assert apart.min(axis=1).max() < 1e-12
 
 
 @pytest.mark.parametrize("m", [0.4, 0.3])
