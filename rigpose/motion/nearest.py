@@ -25,7 +25,7 @@ from rigpose.motion.streaming import single_frame, whole_group
 from rigpose.solve.clock import Clock
 from rigpose.solve.flow import writes
 from rigpose.solve.knowns import Given, Wished
-from rigpose.solve.plan import Group
+from rigpose.solve.plan import Fit, Group
 from rigpose.solve.rows import Rows
 from rigpose.solve.run import run_steps
 from rigpose.solve.search import Context, base_table, cells_of, group_table
@@ -140,7 +140,8 @@ def _best_first(context: Context, group: Group, start: Table, aim: Array,
             if part.alive is not None and not part.alive.any():
                 continue
             # Of equals the one farthest on comes first.
-            heappush(heap, (cost + _added(part, writes(step), aim), -(k + 1), next(ticket), part))
+            made = () if isinstance(step, Fit) else writes(step)
+            heappush(heap, (cost + _added(part, made, aim), -(k + 1), next(ticket), part))
     return None
 
 

@@ -11,6 +11,7 @@ from rigpose.solve.plan import (
     Check,
     Circle,
     Cluster,
+    Fit,
     Gauge,
     Given,
     Hang,
@@ -107,6 +108,11 @@ def _(step: Junction) -> set[Point]:
 
 
 @reads.register
+def _(step: Fit) -> set[Point]:
+    return {step.dst, *(c.centre for c in step.circles)}
+
+
+@reads.register
 def _(step: Hang) -> set[Point]:
     return {*step.placed, *_points(*step.local, *step.base)}
 
@@ -126,7 +132,7 @@ def writes(step: Step) -> tuple[Point, ...]:
     """Points that a step writes."""
     if isinstance(step, Cluster):
         return step.joints
-    if isinstance(step, (Given, Meet, Junction, Slide, Shift)):
+    if isinstance(step, (Given, Meet, Junction, Fit, Slide, Shift)):
         return (step.dst,)
     if isinstance(step, (Carry, Aim, Swing, Seat, Orient, Level, Hang, Hinge)):
         return step.dst

@@ -157,10 +157,9 @@ def cluster_branches(step: Cluster, table: Table, number: int) -> None:
         if array is not None:
             setattr(table, name, np.broadcast_to(array, (table.branches, array.shape[-1])))
     table.sines = [np.broadcast_to(s, (table.branches, s.shape[-1])) for s in table.sines]
-    table.codes = [np.broadcast_to(c, (table.branches,)) for c in table.codes]
     table.renumber(index)
     order = np.concatenate([np.arange(len(k)) for k in found]) if len(index) else index
-    table.codes.append(order.astype(np.int16))
+    table.codes.append((order.astype(np.int16), table.level))
     for k, j in enumerate(step.joints):
         table.put(j, np.ascontiguousarray(places[:, k].T[:, :, None]), table.rounding * 100)
     if len(index):

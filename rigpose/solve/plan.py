@@ -200,6 +200,14 @@ class Junction(Step):
 
 
 @dataclass(frozen=True, slots=True)
+class Fit(Step):
+    """Moves a joint in space onto more lengths than place it, all at once, by least squares."""
+
+    dst: Point
+    circles: tuple[Circle, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class Hang(Step):
     """Joints of a body in space carried by three placed points (two, where all lie in a line)."""
 

@@ -19,6 +19,7 @@ from rigpose.model.rig import Rig
 from rigpose.model.system import System
 from rigpose.solve.blocks import smallest_block
 from rigpose.solve.checks import check_key, checks_for
+from rigpose.solve.fitting import with_fits
 from rigpose.solve.flow import alive_steps, reads, writes
 from rigpose.solve.grouping import grouped
 from rigpose.solve.growth import Growth
@@ -33,7 +34,7 @@ from rigpose.solve.plan import (
     Step,
     Tied,
 )
-from rigpose.solve.rest import DENSE, Rest, find_rest, giving_way
+from rigpose.solve.rest import AGREE, DENSE, Rest, find_rest, giving_way
 from rigpose.solve.spacegrowth import SpaceGrowth
 from rigpose.solve.values import joints_of_value
 
@@ -220,6 +221,8 @@ def make_plan(
     used = ground.settled() | {("tie", t) for t in planner.settled_ties}
     steps = alive_steps(_with_solids(planner, steps), eqs.n)
     checks = list(checks_for(eqs, planner.net, ground, frozenset(used)))
+    if eqs.dim == 3 and rest.misfit < AGREE:
+        steps = with_fits(steps, checks, eqs.distances.length)
     base, groups = grouped(eqs, steps, checks)
     rigid = ("distance", "body", "rail", "way", "angle", "target", "tie")
     redundant = tuple(dict.fromkeys(

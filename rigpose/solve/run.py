@@ -260,7 +260,7 @@ def both(
     table.kill(sine2 >= 0, number)
     table.narrow(sine)
     index = np.arange(2 * b) % b
-    sign = np.ones(2 * b, dtype=np.int8)
+    sign = np.ones(2 * b, dtype=np.int16)
     sign[b:] = -1
     assert table.alive is not None  # killing has just made it
     alive: NDArray[np.bool_] = np.asarray(table.alive.any(axis=1))
@@ -275,7 +275,7 @@ def both(
         bound = bound[index]
     _widen(table, b)
     table.renumber(index)
-    table.codes.append(sign)
+    table.codes.append((sign, table.level))
     table.put(dst, place, bound)
 
 
@@ -290,7 +290,6 @@ def _widen(table: Table, b: int) -> None:
         table.killer = np.broadcast_to(table.killer, (b, frames))
     table.sines = [s if len(s) == b else np.broadcast_to(s, (b, s.shape[-1]))
                    for s in table.sines]
-    table.codes = [c if len(c) == b else np.broadcast_to(c, (b,)) for c in table.codes]
 
 
 def _spin(step: Carry | Aim | Swing, table: Table, cos: Array, sin: Array, pivot: Array,

@@ -113,7 +113,7 @@ def cells_of(group: Group, table: Table) -> Cells:
     """What a run has found."""
     frames = table.inputs.frames
     shape = (table.branches, frames)
-    codes = [np.broadcast_to(c, shape[:1]) for c in table.codes]
+    codes = [np.broadcast_to(table.spread(c, level, 0), shape[:1]) for c, level in table.codes]
     alive = np.ones(shape, dtype=bool) if table.alive is None else table.alive
     margin = np.ones(shape) if table.margin is None else table.margin
     missing = [j for j in group.joints if j not in table.points]

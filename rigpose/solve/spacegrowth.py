@@ -17,8 +17,8 @@ from rigpose.solve.growth import APART, PARALLEL, Growth, Key, Locus
 from rigpose.solve.net import Solid
 from rigpose.solve.plan import Circle, Given, Hang, Hinge, Junction, Length, Line, Point, Sheet
 
-MOST_LOCI = 10
-GOOD = 0.2
+MOST_LOCI = 14
+GOOD = 2.0
 """A volume that is good enough to stop looking for a better choice."""
 ORDER = (Line, Sheet, Circle)
 

@@ -11,12 +11,15 @@ from typing import Any
 import numpy as np
 
 from rigpose.ground.words import Found, weaker
-from rigpose.solve.plan import Group
+from rigpose.solve.longchains import bring_back
+from rigpose.solve.plan import Check, Group
 from rigpose.solve.polish import polish
 from rigpose.solve.run import run_steps
 from rigpose.solve.search import Cells, Context, base_table, cells_of, group_table, shared_base
 from rigpose.solve.table import Inputs, Table
 
+LONG = 64
+"""Choices one after another from which on rounding is looked for."""
 BLOCK = 1 << 14
 
 
@@ -93,7 +96,14 @@ def all_cells(context: Context, group: Group, inputs: Inputs, most: int) -> tupl
         total += len(cells.codes)
         if total > most or monotonic() > end:
             return joined(pieces), True
-    return (joined(pieces) if pieces else _none(group, context.plan.eqs.dim)), False
+    whole = joined(pieces) if pieces else _none(group, context.plan.eqs.dim)
+    if group.bits > LONG:
+        bring_back(context.rest, context.plan, whole, shared_base(context, inputs), inputs)
+        if any(isinstance(s, Check) for s in group.steps):
+            # Rounding may have grown past what a check forgives: not a claim to make.
+            doubt = Found.PROBABLY if whole.alive.any() else Found.SOME
+            whole.found = weaker(whole.found, doubt)
+    return whole, False
 
 
 def _none(group: Group, dim: int) -> Cells:

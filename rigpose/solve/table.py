@@ -7,6 +7,7 @@ until it is read again: it is then spread over the branches that grew from it.
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,6 +16,8 @@ from rigpose.ground.budget import Budget
 from rigpose.ground.words import Found
 from rigpose.model.equations import Array, Equations, Ints
 from rigpose.solve.plan import Point
+
+Number = TypeVar("Number", bound=np.generic)
 
 
 @dataclass
@@ -40,8 +43,9 @@ class Inputs:
 class Table:
     """State of one run.
 
-    ``turning`` holds joints, with the parts behind them, that turn freely in some cells: two
-    equal circles about one point are free motion, and no pose is listed there.
+    ``codes`` are the signs of every choice with the level at which it was made. ``turning`` holds
+    joints, with the parts behind them, that turn freely in some cells: two equal circles about one
+    point are free motion, and no pose is listed there.
     """
 
     eqs: Equations
@@ -59,7 +63,7 @@ class Table:
     branches: int = 1
     alive: NDArray[np.bool_] | None = None
     margin: Array | None = None
-    codes: list[NDArray[np.int8]] = field(default_factory=list)
+    codes: list[tuple[NDArray[np.int16], int]] = field(default_factory=list)
     sines: list[Array] = field(default_factory=list)
     sine_bounds: list[Array | float] = field(default_factory=list)
     flagged: NDArray[np.bool_] | None = None
@@ -78,7 +82,7 @@ class Table:
         """How many times the branches have been renumbered."""
         return len(self.maps)
 
-    def spread(self, array: Array, level: int, axis: int) -> Array:
+    def spread(self, array: NDArray[Number], level: int, axis: int) -> NDArray[Number]:
         """An array of an earlier level over today's branches."""
         if array.shape[axis] == 1 or level == self.level:
             return array
@@ -134,7 +138,6 @@ class Table:
             self.margin = self.margin[index]
         if self.killer is not None and self.killer.shape[0] != 1:
             self.killer = self.killer[index]
-        self.codes = [c[index] if len(c) != 1 else c for c in self.codes]
         self.sines = [s[index] if len(s) != 1 else s for s in self.sines]
 
     def kill(self, ok: NDArray[np.bool_], step: int) -> None:
