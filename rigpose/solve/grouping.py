@@ -42,12 +42,11 @@ def _nodes(step: Step, eqs: Equations) -> tuple[list[Node], list[Node]]:
     return ins, outs
 
 
-def _reads_fully(step: Step, eqs: Equations) -> list[Node]:
-    ins, _ = _nodes(step, eqs)
+def _reads_fully(step: Step, eqs: Equations, ins: list[Node]) -> list[Node]:
     if value_written(step) >= 0 and not values_read(step, eqs):
-        ins += [("p", j) for j in joints_of_value(eqs, value_written(step))]
+        return ins + [("p", j) for j in joints_of_value(eqs, value_written(step))]
     if isinstance(step, Cluster):
-        ins += [("p", j) for j in step.around]
+        return ins + [("p", j) for j in step.around]
     return ins
 
 
@@ -59,8 +58,8 @@ def grouped(
     sets, many = _Sets(), set[Node]()
     owner: list[Node | None] = []
     for step in ordered:
-        _, outs = _nodes(step, eqs)
-        touched = [x for x in _reads_fully(step, eqs) if x in many]
+        ins, outs = _nodes(step, eqs)
+        touched = [x for x in _reads_fully(step, eqs, ins) if x in many]
         if has_choice(step) or touched:
             many.update(outs)
             sets.join([*touched, *outs])
@@ -79,8 +78,9 @@ def _interleave(eqs: Equations, steps: list[Step], checks: list[Check]) -> list[
     """Every check right after the step that completes it."""
     born: dict[Node, int] = {}
     for k, step in enumerate(steps):
-        for node in _nodes(step, eqs)[1]:
-            born[node] = k
+        born.update((("p", p), k) for p in writes(step))
+        if value_written(step) >= 0:
+            born["v", value_written(step)] = k
     after: dict[int, list[Check]] = {}
     for check in checks:
         last = max((born.get(x, -1) for x in _nodes(check, eqs)[0]), default=-1)

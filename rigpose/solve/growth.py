@@ -12,6 +12,7 @@ from collections.abc import Callable
 from dataclasses import dataclass, field
 from heapq import heappop, heappush
 from itertools import combinations
+from math import hypot
 
 import numpy as np
 
@@ -35,6 +36,8 @@ from rigpose.solve.plan import (
 )
 
 Key = tuple[str, int]
+Normals = Array | list[list[float]]
+"""A unit vector for each pose; plain numbers for circles, of which a large rig has very many."""
 APART = 1e-6
 """Centres farther apart than this part of the size, at rest or close by, are two."""
 PARALLEL = 1e-7
@@ -43,13 +46,14 @@ PARALLEL = 1e-7
 
 @dataclass(frozen=True)
 class Locus:
-    """A curve that a joint lies on, with the equation behind it and its normals in the poses."""
+    """A curve that a joint lies on, with the equation behind it, its unit normal in each of the
+    poses (zeros where it has none) and the joint at its centre."""
 
     curve: Circle | Line | Sheet
     uses: Key
     part: str
-    normals: Array
-    poses_of_centre: Array | None = field(default=None, compare=False)
+    normals: Normals
+    centre: int = -1
 
 
 @dataclass
@@ -211,11 +215,12 @@ class Growth:
         self._circle(other, joint, radius, ("distance", k), d.names[k])
 
     def _circle(self, joint: int, centre: int, radius: Length, uses: Key, part: str) -> None:
-        away = self.poses[:, joint] - self.poses[:, centre]
-        with np.errstate(invalid="ignore", divide="ignore"):
-            normal = away / np.linalg.norm(away, axis=1, keepdims=True)
-        self._offer(joint, Locus(Circle(self.place[centre], radius), uses, part, normal,
-                                 self.poses[:, centre]))
+        normals = []
+        for pose in self.net.listed(self.poses):
+            away = [a - b for a, b in zip(pose[joint], pose[centre], strict=True)]
+            long = hypot(*away) or 1.0
+            normals.append([a / long for a in away])
+        self._offer(joint, Locus(Circle(self.place[centre], radius), uses, part, normals, centre))
 
     def _touch(self, number: int, joint: int) -> None:
         solid = self.net.solids[number]
@@ -310,9 +315,8 @@ class Growth:
         circles = [x for x in (a, b) if isinstance(x.curve, Circle)]
         if len(circles) < 2:
             return len(circles) == 1
-        first, second = (x.poses_of_centre for x in circles)
-        return first is not None and second is not None and (
-            float(np.nanmax(np.abs(first - second))) > APART)
+        gap = self.poses[:, circles[0].centre] - self.poses[:, circles[1].centre]
+        return float(np.nanmax(np.abs(gap))) > APART
 
     def _placed(self, joint: int, dst: Point, step: Step | None) -> None:
         if step is not None:
@@ -327,10 +331,8 @@ class Growth:
         for a, b in combinations(loci, 2):
             if a.uses[0] == b.uses[0] == "solid" and a.uses[1] == b.uses[1]:
                 continue
-            sine = np.abs(a.normals[:, 0] * b.normals[:, 1] - a.normals[:, 1] * b.normals[:, 0])
-            if not np.isfinite(sine).any():
-                continue
-            worth = float(np.nanmax(sine))
+            worth = max(abs(float(u[0] * v[1] - u[1] * v[0]))
+                        for u, v in zip(a.normals, b.normals, strict=True))
             if worth > best * (1 + 1e-6):
                 best, found = worth, (a, b)
                 if worth > 0.3:

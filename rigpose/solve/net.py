@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rigpose.model.equations import GROUND, Equations
+from rigpose.model.equations import GROUND, Array, Equations
 from rigpose.solve.plan import Length, Local, Step
 
 
@@ -52,6 +52,7 @@ class Net:
             for j in {*map(int, eqs.angles.line[k]), *map(int, eqs.angles.base[k])} - {GROUND}:
                 self.cranks_on[j].append(k)
         self.absorbed: set[tuple[str, int]] = set()
+        self._listed: tuple[Array, list[list[list[float]]]] | None = None
         self.solids: list[Solid] = []
         self.solids_on: dict[int, list[int]] = defaultdict(list)
         for k, body in enumerate(eqs.bodies):
@@ -62,6 +63,12 @@ class Net:
             # A bone inside a plate can only check the plate, never place a joint.
             if set(self.solids_on[int(a)]) & set(self.solids_on[int(b)]):
                 self.absorbed.add(("distance", k))
+
+    def listed(self, poses: Array) -> list[list[list[float]]]:
+        """Poses ``(P, n_joints, dim)`` as plain numbers, kept: looking up one is then quick."""
+        if self._listed is None or self._listed[0] is not poses:
+            self._listed = (poses, poses.tolist())
+        return self._listed[1]
 
     def add(self, solid: Solid) -> int:
         """Put a body in; it is offered to every frame from now on."""

@@ -136,10 +136,9 @@ class SpaceGrowth(Growth):
         for joint in sorted(self.loci):
             if joint in self.place:
                 continue
-            spheres = [x for x in self.loci[joint] if x.poses_of_centre is not None]
+            spheres = [x for x in self.loci[joint] if x.centre >= 0]
             for three in combinations(spheres[:MOST_LOCI], 3):
-                a, b, c = (x.poses_of_centre for x in three)
-                assert a is not None and b is not None and c is not None
+                a, b, c = (self.poses[:, x.centre] for x in three)
                 if float(np.nanmax(np.linalg.norm(np.cross(b - a, c - a), axis=1))) > APART:
                     self._join_at(joint, three)
                     return True
@@ -257,7 +256,7 @@ class SpaceGrowth(Growth):
 
 def _volumes(loci: list[Locus], sets: list[tuple[int, ...]]) -> Array:
     """What the unit normals of each set span in the better of the two poses, ``(n_sets,)``."""
-    normals = np.stack([x.normals for x in loci])
+    normals = np.array([np.asarray(x.normals) for x in loci])
     pairs = [s for s in sets if len(s) == 2]
     triples = np.array(sets[len(pairs):], dtype=np.intp).reshape(-1, 3)
     first = [np.abs((normals[a] * normals[b]).sum(axis=1)) for a, b in pairs]
