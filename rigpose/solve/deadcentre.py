@@ -111,11 +111,15 @@ def _single(heights: _Heights, hits: Hits) -> tuple[Ints, Array, Array, NDArray[
     times = hits.low[:, None] + (hits.high - hits.low)[:, None] * grid
     g = heights(hits.row, times)
     with np.errstate(invalid="ignore"):
-        middle, zero = np.abs(g[:, 1:-1]), heights.zero
-        lowest = (middle <= np.abs(g[:, :-2])) & (middle < np.abs(g[:, 2:]))
-        shut = (g[:, 1:-1] < -zero) | (g[:, :-2] < -zero) | (g[:, 2:] < -zero)
+        size, below = np.abs(g), g < -heights.zero
+        lowest = np.ones(g.shape, dtype=bool)
+        lowest[:, 1:] &= size[:, 1:] <= size[:, :-1]
+        lowest[:, :-1] &= size[:, :-1] < size[:, 1:]
+        lowest &= np.isfinite(size)
     which, at = np.nonzero(lowest)
-    return (hits.row[which], times[which, at], times[which, at + 2], shut[which, at])
+    before, after = np.maximum(at - 1, 0), np.minimum(at + 1, FINE - 1)
+    shut = below[which, before] | below[which, at] | below[which, after]
+    return hits.row[which], times[which, before], times[which, after], shut
 
 
 def _fitted(heights: _Heights, row: Ints, centre: Array,

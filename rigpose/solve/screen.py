@@ -98,8 +98,8 @@ def _low_points(g: Array) -> tuple[Ints, Ints]:
     with np.errstate(invalid="ignore"):
         largest = np.maximum(np.maximum(steps[:, :-1], steps[:, 1:]), FLAT)
         low[:, 1:-1] = g[:, 1:-1] <= largest
-        low[:, 0] = g[:, 0] <= np.maximum(steps[:, 0], FLAT)
-        low[:, -1] = g[:, -1] <= np.maximum(steps[:, -1], FLAT)
+        low[:, 0] = g[:, 0] <= np.fmax(steps[:, :2].max(axis=1), FLAT)
+        low[:, -1] = g[:, -1] <= np.fmax(steps[:, -2:].max(axis=1), FLAT)
         low &= g >= 0
         low[:, 1:] &= g[:, 1:] <= np.maximum(g[:, :-1], FLAT)
         low[:, :-1] &= g[:, :-1] <= np.maximum(g[:, 1:], FLAT)

@@ -97,7 +97,10 @@ def _advance(context: Context, group: Group, clock: Clock, now: _Walk, goal: flo
             step /= 2
             continue
         cells.alive = alive[:, None]
-        now.before, now.x, now.gap = now.x, np.where(alive[:, None, None], x, now.x), float(step)
+        x = np.where(alive[:, None, None], x, now.x)
+        # Over a jump of what is known there is no speed to go on with.
+        now.before, now.gap = (x, 0.0) if bad.any() else (now.x, float(step))
+        now.x = x
         now.time, now.alive, now.values = now.time + float(step), alive, cells.values
         if abs(goal - now.time) < 1e-12:
             return cells
