@@ -17,7 +17,14 @@ from rigpose.ground.budget import Budget, Watch, go_on
 from rigpose.ground.errors import Problem, Unsolvable
 from rigpose.ground.words import Found, State
 from rigpose.model.equations import Array
-from rigpose.motion.branches import Search, branches_on, choice_steps, plan_of, search_on
+from rigpose.motion.branches import (
+    Search,
+    branches_on,
+    choice_steps,
+    held_by_more,
+    plan_of,
+    search_on,
+)
 from rigpose.motion.branchset import Branches
 from rigpose.motion.channels import channels
 from rigpose.motion.choose import Choice, asked, choose
@@ -189,7 +196,9 @@ def watch_over(motion: Motion, work: Baking, passes: Sequence[tuple[int, Pass]])
         problems.append(Problem(
             work.shot.source, motion.worst_part, "every length holds to 1e-12 of the size",
             f"{motion.worst:.3g}", "this is a fault of the solver: please tell its developers"))
-    events = tuple(_event(work, motion, g, p) for g, p in passes)
+    events = tuple(_event(work, motion, g, p) for g, p in passes
+                   if not held_by_more(choice_steps(work.context.plan.groups[g])[p.choice],
+                                       motion.margin, p.time))
     return replace(motion, spans=spans, problems=tuple(problems),
                    events=tuple(sorted(events, key=lambda e: e.frame)))
 

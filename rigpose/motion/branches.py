@@ -6,6 +6,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 
 from rigpose.ground.budget import Budget, Watch, go_on
 from rigpose.ground.words import Found, State, weaker
@@ -28,7 +29,7 @@ from rigpose.solve.births import follow_all
 from rigpose.solve.clock import Clock, sampled
 from rigpose.solve.flow import has_choice, writes
 from rigpose.solve.knowns import Given, Knowns, Wished, read_knowns
-from rigpose.solve.plan import Group, Plan, Step
+from rigpose.solve.plan import Group, Junction, Plan, Step
 from rigpose.solve.planner import plan_for
 from rigpose.solve.rest import Rest, find_rest
 from rigpose.solve.rows import Pass, Rows, survey
@@ -36,6 +37,8 @@ from rigpose.solve.search import Context
 from rigpose.solve.stepping import enumerate_rows
 from rigpose.solve.stream import all_cells
 
+HELD = 0.02
+"""A margin above this, on both sides of a crossing's zero, is that of no dead centre."""
 MOST_TIES = 1 << 14
 """Ties among more branches keep the order of placing."""
 
@@ -218,12 +221,23 @@ def _events(rig: Rig, frames: Array, picks: Sequence[Sorted],
         mine: dict[int, list[Event]] = {}
         choices = choice_steps(pick.rows.group)
         for p in pick.rows.passes:
+            if held_by_more(choices[p.choice], pick.rows.margin[p.row], p.time):
+                continue
             mine.setdefault(p.row, []).append(_event(rig, frames, choices[p.choice], p))
         by_row.append(mine)
     return tuple(
         tuple(sorted((e for g, mine in enumerate(by_row) for e in mine.get(int(row[g]), [])),
                      key=lambda e: e.frame))
         for row in mixed.index)
+
+
+def held_by_more(step: Step, margin: npt.NDArray[np.floating], time: float) -> bool:
+    """Whether a joint that three of its lengths would leave at a dead centre is held by others:
+    then the crossing changes its sign, and nothing happens to the machine."""
+    if not (isinstance(step, Junction) and step.fitted):
+        return False
+    near = margin[[int(np.floor(time)), min(int(np.ceil(time)), len(margin) - 1)]]
+    return bool(np.nanmin(near) > HELD)
 
 
 def choice_steps(group: Group) -> list[Step]:

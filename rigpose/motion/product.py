@@ -23,6 +23,7 @@ MEET = 1e-9
 PLACE = 2e-7
 """At a dead centre places are known to the square root of rounding; nearer ones are one pose."""
 CELLS = 1 << 11
+SAME = 1e-10
 MANY = 1 << 14
 """Branches of one frame above which they are put in order as whole poses."""
 
@@ -75,8 +76,43 @@ def kept(rest: Rest, rows: Rows) -> Sorted:
     live = np.flatnonzero(rows.alive.any(axis=1))
     gap = _gaps(rest, rows)
     gap = gap if len(live) == len(gap) else gap[live]
-    order = _stable_order(_steps(rest, gap))
-    return Sorted(rows, live[order], gap[order])
+    steps = _steps(rest, gap)
+    order = _stable_order(steps)
+    once = _once(rest, rows, live[order], steps[order])
+    return Sorted(rows, live[order][once], gap[order][once])
+
+
+def _once(rest: Rest, rows: Rows, order: Ints, steps: Array) -> Ints:
+    """Places in the order without rows that are another one again: a body's own frame may have a
+    choice that makes no difference to the joints that hang on it."""
+    equal = np.flatnonzero(steps[1:] == steps[:-1])
+    if not len(equal) or len(order) > MANY:
+        return np.arange(len(order))
+    alive = rows.alive
+    first = np.argmax(alive, axis=1)
+    last = alive.shape[1] - 1 - np.argmax(alive[:, ::-1], axis=1)
+    lost: set[int] = set()
+    for k in equal.tolist():
+        a, j = order[k + 1], k
+        while j >= 0 and steps[j] == steps[k + 1]:
+            b = order[j]
+            frames = sorted({int(first[a]), (int(first[a]) + int(last[a])) // 2, int(last[a])})
+            if j not in lost and first[a] == first[b] and last[a] == last[b] and all(
+                    _apart(rows, a, b, f) <= SAME * rest.reach for f in frames):
+                lost.add(k + 1)
+                break
+            j -= 1
+    return np.array([k for k in range(len(order)) if k not in lost], dtype=np.intp)
+
+
+def _apart(rows: Rows, a: int, b: int, frame: int) -> float:
+    """The largest distance of a joint between two rows at one frame."""
+    worst = 0.0
+    for place in rows.places:
+        f = min(frame, place.shape[2] - 1)
+        if place.shape[1] > 1:
+            worst = max(worst, float(np.abs(place[:, a, f] - place[:, b, f]).max()))
+    return worst
 
 
 def _stable_order(steps: Array) -> Ints:

@@ -8,13 +8,14 @@ the file's lengths agree to rounding: others are measured and never solved for.
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
 
 import numpy as np
 
 from rigpose.kernels.meet import Array, dot
-from rigpose.solve.flow import writes
-from rigpose.solve.plan import Check, Circle, Fit, Junction, Length, Step
+from rigpose.solve.growth import Locus
+from rigpose.solve.plan import Circle, Fit, Junction, Step
 from rigpose.solve.run import Ways, execute
 from rigpose.solve.table import Table
 
@@ -23,30 +24,32 @@ NEAR = 1e-9
 checks to find; only rounding is taken out."""
 
 
-def with_fits(steps: list[Step], checks: Iterable[Check], lengths: Array) -> list[Step]:
-    """The steps with a fit after each junction that surplus lengths come to.
+def with_fits(steps: list[Step], loci: Mapping[int, Sequence[Locus]]) -> list[Step]:
+    """The steps with a fit after each junction to which more lengths come than place its joint.
 
-    lengths : (n_distances,) of the equations, NaN where one is driven
+    loci : joint to the surfaces that it was found to lie on, those that place it among them
     """
-    maker = {p: k for k, step in enumerate(steps) for p in writes(step)}
-    more: dict[int, list[Circle]] = {}
-    for check in checks:
-        if check.kind != "distance" or not np.isfinite(lengths[check.index]):
-            continue
-        a, b = check.points
-        first, last = sorted((a, b), key=lambda p: maker.get(p, -1))
-        k = maker.get(last, -1)
-        if k >= 0 and isinstance(steps[k], Junction):
-            circle = Circle(first, Length(constant=float(lengths[check.index])))
-            more.setdefault(k, []).append(circle)
     out: list[Step] = []
-    for k, step in enumerate(steps):
-        out.append(step)
-        if k in more and isinstance(step, Junction):
-            own = [c for c in step.curves if isinstance(c, Circle) and c.radius.constant]
-            if len(own) == 3:
-                out.append(Fit(dst=step.dst, circles=(*own, *more[k]), parts=step.parts))
+    for step in steps:
+        circles = _circles(step, loci)
+        if isinstance(step, Junction) and len(circles) > 3:
+            out.append(replace(step, fitted=True))
+            out.append(Fit(dst=step.dst, circles=circles, parts=step.parts))
+        else:
+            out.append(step)
     return out
+
+
+def _circles(step: Step, loci: Mapping[int, Sequence[Locus]]) -> tuple[Circle, ...]:
+    """The junction's own three spheres and all others of known length, one about each centre."""
+    if not isinstance(step, Junction):
+        return ()
+    own = [c for c in step.curves if isinstance(c, Circle) and c.radius.constant]
+    if len(own) < 3:
+        return ()
+    more = (x.curve for x in loci.get(step.dst, ()))
+    every = {c.centre: c for c in (*own, *more) if isinstance(c, Circle) and c.radius.constant}
+    return tuple(every.values())
 
 
 @execute.register
@@ -65,17 +68,20 @@ def _(step: Fit, table: Table, ways: Ways, number: int) -> None:
             right[i] = right[i] - off * u[i]
             for j in range(i + 1):
                 normal[i][j] = normal[i][j] + u[i] * u[j]
-    move = _solved(normal, right)
+    move, volume2 = _solved(normal, right)
+    # The volume that all unit normals span together: with three it is that of the junction.
+    table.narrow(np.sqrt(np.clip(volume2, 0.0, 1.0)))
     good = (worst < NEAR * table.reach) & np.isfinite(move[0])
     table.put(step.dst, np.where(good, x + move, x), table.bound(step.dst))
 
 
-def _solved(a: list[list[Array]], b: list[Array]) -> Array:
-    """Symmetric 3 by 3 systems by Cramer's rule; ``a`` holds the lower triangle."""
+def _solved(a: list[list[Array]], b: list[Array]) -> tuple[Array, Array]:
+    """Symmetric 3 by 3 systems by Cramer's rule, and their determinants; ``a`` holds the lower
+    triangle."""
     p, q, r = a[1][1] * a[2][2] - a[2][1] ** 2, a[2][1] * a[2][0] - a[1][0] * a[2][2], (
         a[1][0] * a[2][1] - a[1][1] * a[2][0])
     s, t = a[0][0] * a[2][2] - a[2][0] ** 2, a[1][0] * a[2][0] - a[0][0] * a[2][1]
     w = a[0][0] * a[1][1] - a[1][0] ** 2
     size = a[0][0] * p + a[1][0] * q + a[2][0] * r
     return np.stack([p * b[0] + q * b[1] + r * b[2], q * b[0] + s * b[1] + t * b[2],
-                     r * b[0] + t * b[1] + w * b[2]]) / size
+                     r * b[0] + t * b[1] + w * b[2]]) / size, size

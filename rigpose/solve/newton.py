@@ -17,6 +17,9 @@ ROUND = 512
 LEAST_ROUNDS = 4
 MOST_ROUNDS = 40
 QUIET_ROUNDS = 3
+LONE_ROUNDS = 16
+"""Rounds for which a solution that was seen only once keeps the search going."""
+UNKNOWNS = 8192
 STEPS = 40
 SAME = 1e-6
 
@@ -104,7 +107,7 @@ def solve_block(step: Cluster, table: Table) -> list[Array]:
     known: list[list[Array]] = [[] for _ in range(b)]
     seen: list[list[int]] = [[] for _ in range(b)]
     joints, rows = list(step.joints), np.array(step.rows)
-    per = max(32, min(ROUND, 40_000 // b))
+    per = max(32, min(ROUND, 40_000 // b, UNKNOWNS // (len(joints) * x.shape[2])))
     quiet = 0
     for turn in range(MOST_ROUNDS):
         start = _starts(step, x, reach, rng, per)
@@ -121,7 +124,8 @@ def solve_block(step: Cluster, table: Table) -> list[Array]:
             new += _new_ones(known[k], seen[k], mine, reach)
         quiet = 0 if new else quiet + 1
         once = any(1 in s for s in seen)
-        if turn + 1 >= LEAST_ROUNDS and quiet >= QUIET_ROUNDS and not once:
+        lone = once and turn + 1 < LONE_ROUNDS
+        if turn + 1 >= LEAST_ROUNDS and quiet >= QUIET_ROUNDS and not lone:
             break
     table.found = weaker(table.found, Found.PROBABLY)
     return [np.array(k).reshape(-1, len(joints), x.shape[2]) for k in known]

@@ -192,11 +192,13 @@ class Level(Step):
 @dataclass(frozen=True, slots=True)
 class Junction(Step):
     """A joint in space where surfaces meet: lines first, then sheets, then spheres; ``bit`` is the
-    number of its choice (-1: one way only)."""
+    number of its choice (-1: one way only); ``fitted`` where more lengths hold the joint, so that
+    these three alone don't make its margin."""
 
     dst: Point
     curves: tuple[Circle | Line | Sheet, ...]
     bit: int = -1
+    fitted: bool = False
 
 
 @dataclass(frozen=True, slots=True)

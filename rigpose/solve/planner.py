@@ -222,7 +222,7 @@ def make_plan(
     steps = alive_steps(_with_solids(planner, steps), eqs.n)
     checks = list(checks_for(eqs, planner.net, ground, frozenset(used)))
     if eqs.dim == 3 and rest.misfit < AGREE:
-        steps = with_fits(steps, checks, eqs.distances.length)
+        steps = with_fits(steps, ground.loci)
     base, groups = grouped(eqs, steps, checks)
     rigid = ("distance", "body", "rail", "way", "angle", "target", "tie")
     redundant = tuple(dict.fromkeys(

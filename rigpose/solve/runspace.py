@@ -59,7 +59,12 @@ def _(step: Junction, table: Table, ways: Ways, number: int) -> None:
         _one_way(step, table, number, lines[0], sheets[0], sine)
         return
     crossing, rate = _two_ways(lines, sheets, spheres, sine)
+    before = table.margin
     choose(step.dst, step.bit, crossing, table, ways, number, _points(step), lambda: rate)
+    if step.fitted:
+        # The fit that follows knows the margin; here it must only keep up with the branches.
+        table.margin = before if before is None else table.spread(before, table.level - 1, 0) if (
+            ways is None and before.shape[0] != table.branches) else before
 
 
 def _one_way(step: Junction, table: Table, number: int, line: tuple[Array, Array],
