@@ -41,6 +41,7 @@ from rigpose.solve.rows import Pass
 from rigpose.solve.search import Context
 
 LENGTHS_HOLD = 1e-12
+WIDE = 1 << 16
 LOOK_AHEAD = 32
 """Frames searched in one go for the first that assembles."""
 
@@ -115,7 +116,9 @@ class Baking:
         self.context = Context(self.rest, plan_of(self.rest, self.clock.knowns), budget)
         eqs = self.rest.equations
         self.places = np.empty((self.clock.count, eqs.n, eqs.dim))
-        self.start = self._start(budget)
+        # Bends and places are looked for among more branches than a list would hold.
+        wide = asked(shot) or shot.near
+        self.start = self._start(replace(budget, poses=max(budget.poses, WIDE)) if wide else budget)
         self.row: Row | None = None
         if self.start.choice.number >= 0:
             self.row = row_of(self.context, self.clock, self.start.frame,
@@ -165,6 +168,8 @@ class Baking:
         frames = self.shot.numbers[:done[-1].stop if done else 0]
         alive = _joined([p.alive for p in done], bool)
         found = self.start.branches.found
+        if found is Found.BUDGET and not (asked(self.shot) or self.shot.near):
+            found = Found.COMPLETE  # the nearest of each group is the nearest of all
         if len(frames) < self.clock.count:
             found = Found.STOPPED
         eqs, row = self.rest.equations, self.row
