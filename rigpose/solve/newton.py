@@ -17,9 +17,10 @@ ROUND = 512
 LEAST_ROUNDS = 4
 MOST_ROUNDS = 40
 QUIET_ROUNDS = 3
-LONE_ROUNDS = 16
+LONE_ROUNDS = 10
 """Rounds for which a solution that was seen only once keeps the search going."""
 UNKNOWNS = 8192
+PATIENCE, CLOSING = 12, 0.1
 STEPS = 40
 SAME = 1e-6
 
@@ -53,11 +54,14 @@ def newton(
     flat = x.reshape(len(x), -1)
     active = np.arange(len(x))
     size = np.full(len(x), np.inf)
-    for _ in range(steps):
+    for turn in range(steps):
         r, jac = step.system.both(x[active], values[active], goal[active])
         r = r[:, square]
         size[active] = np.abs(r).max(axis=1)
         going = np.isfinite(size[active]) & (size[active] > 1e-15) & (size[active] < 1e6)
+        if turn >= PATIENCE:
+            # Starts that wander are given up; others lie nearer to what they would find.
+            going &= size[active] < CLOSING
         active, r = active[going], r[going]
         if not len(active):
             break
