@@ -1,0 +1,313 @@
+"""The machines of rigs/ that stand in space: each against formulas or a solution of its own.
+
+The loop equations here are written from the drawings in the files, in unknowns that the program
+doesn't use (angles, turns of whole parts), and solved by SciPy or in closed form. Formulas without
+a source are elementary geometry.
+"""
+
+from __future__ import annotations
+
+import math
+from functools import cache
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pytest
+from numpy.typing import ArrayLike
+from scipy.optimize import root
+from scipy.spatial.transform import Rotation
+
+import rigpose as rp
+from rigpose.model.equations import Array
+
+RIGS = Path(__file__).parent.parent / "rigs"
+PIN = {"pin": True}
+
+
+@cache
+def machine(name: str) -> rp.Rig:
+    return rp.load_rig(RIGS / f"{name}.toml")
+
+
+@cache
+def baked(name: str) -> rp.Motion:
+    return rp.bake(rp.load_shot(RIGS / f"{name}.shot.toml"))
+
+
+@cache
+def given(name: str) -> Any:
+    shot = rp.load_shot(RIGS / f"{name}.shot.toml")
+    return rp.channels(shot, shot.numbers)
+
+
+def drawn(name: str, joint: str) -> Array:
+    rig = machine(name)
+    return np.array(rig.joints[rig.index[joint]].at)
+
+
+def about(axis: ArrayLike, degrees: ArrayLike) -> Rotation:
+    """Turns by the right hand about an axis."""
+    unit = np.asarray(axis, dtype=float)
+    unit = unit / np.linalg.norm(unit)
+    return Rotation.from_rotvec(np.multiply.outer(np.radians(degrees), unit))
+
+
+def test_there_are_machines_in_space_enough() -> None:
+    names = [p.stem for p in RIGS.glob("*.toml") if not p.name.endswith(".shot.toml")]
+    assert sum(machine(name).dim == 3 for name in names) >= 8
+
+
+# -- loops of hinges ------------------------------------------------------------------------------
+
+def test_the_weather_loop_turns_fully_as_bennett_says() -> None:
+    """Bennett 1903 (from memory): sin(alpha) / a = sin(beta) / b, and then tan(t1/2) tan(t2/2) =
+    sin((beta + alpha) / 2) / sin((beta - alpha) / 2)."""
+    a, b, alpha, beta = 30.0, 60.0, math.radians(30), math.radians(90)
+    assert math.sin(alpha) / a == pytest.approx(math.sin(beta) / b, rel=1e-15)
+    rig = machine("weather_loop")
+    axes = {h: drawn("weather_loop", f"{h} axis") - drawn("weather_loop", j)
+            for h, j in zip("abcd", ("foot", "near", "far", "heel"), strict=True)}
+    for one, other, length, twist in (("a", "b", a, alpha), ("b", "c", b, beta),
+                                      ("c", "d", a, alpha), ("d", "a", b, beta)):
+        u, v = (axes[h] / np.linalg.norm(axes[h]) for h in (one, other))
+        assert abs(u @ v) == pytest.approx(math.cos(twist), abs=1e-12)
+        assert length in (a, b)
+    report = rp.check(rig)
+    assert (report.freedoms, report.freedoms_first_order, report.freedoms_counted) == (1, 1, -2)
+    turn = np.linspace(100, 460, 361)
+    found = rp.find_branches(rig, {"turn": turn})
+    assert len(found) == 1
+    motion = found.pick(0).motion()
+    ratio = math.sin((beta + alpha) / 2) / math.sin((beta - alpha) / 2)
+    want = 2 * np.degrees(np.arctan2(ratio * np.cos(np.radians(turn) / 2),
+                                     np.sin(np.radians(turn) / 2)))
+    gap = np.remainder(motion.value("bend") - want + 180, 360) - 180
+    assert np.abs(gap).max() < 1e-9
+    assert float(motion.margin.min()) > 1e-2
+    assert np.abs(motion.positions[-1] - motion.positions[0]).max() < 1e-11 * found.size
+
+
+def test_the_beacon_goes_straight_up() -> None:
+    """Sarrus 1853: the height is twice that of one board, and the lamp neither turns nor strays."""
+    motion = baked("beacon_lift")
+    lift = np.radians(given("beacon_lift").drives["lift"])
+    lamp = motion["lamp"]
+    assert lamp[:, 2] == pytest.approx(2 * 30 * np.sin(lift) + 14, abs=1e-11)
+    assert np.abs(lamp[:, :2]).max() < 1e-11
+    for head in ("head_x", "head_y"):
+        assert np.ptp(motion[head] - lamp, axis=0).max() < 1e-11
+    report = rp.check(machine("beacon_lift"))
+    assert (report.freedoms, report.freedoms_counted) == (1, 0)
+
+
+# -- the wheel on two wishbones -------------------------------------------------------------------
+
+class Corner:
+    """The lamp cart's loops: turns of both wishbones and of the carrier are the unknowns."""
+
+    joints = ("lower_ball", "upper_ball", "steer_ball", "wheel", "spring_seat")
+
+    def __init__(self) -> None:
+        self.at = {j.name: np.array(j.at) for j in machine("lamp_cart").joints}
+
+    def places(self, unknowns: Array) -> dict[str, Array]:
+        lower, upper, *turn = unknowns
+        at, carrier = self.at, Rotation.from_rotvec(turn)
+        out: dict[str, Array] = {}
+        for side, angle, joints in (("lower", lower, ("lower_ball", "spring_seat")),
+                                    ("upper", upper, ("upper_ball",))):
+            fore, aft = at[f"{side}_fore"], at[f"{side}_aft"]
+            swing = about(aft - fore, math.degrees(angle))
+            out |= {j: fore + swing.apply(at[j] - fore) for j in joints}
+        ball = out["lower_ball"]
+        out |= {j: ball + carrier.apply(at[j] - at["lower_ball"]) for j in ("steer_ball", "wheel")}
+        out["carried"] = ball + carrier.apply(at["upper_ball"] - at["lower_ball"])
+        return out
+
+    def open(self, unknowns: Array, height: float, rack: float) -> Array:
+        """How far the loops are open: at the upper ball, along the rod, and from the height."""
+        p = self.places(unknowns)
+        rod = np.linalg.norm(p["steer_ball"] - self.at["rack_end"] - (0, rack, 0))
+        full = np.linalg.norm(self.at["steer_ball"] - self.at["rack_end"])
+        return np.array([*(p["carried"] - p["upper_ball"]), rod - full, p["wheel"][2] - height])
+
+    def solved(self, heights: Array, racks: Array) -> dict[str, Array]:
+        unknowns, rows = np.zeros(5), []
+        for height, rack in zip(heights, racks, strict=True):
+            answer = root(self.open, unknowns, (height, rack), tol=1e-14)
+            unknowns = answer.x
+            assert np.abs(self.open(unknowns, height, rack)).max() < 1e-13
+            rows.append(self.places(unknowns))
+        return {j: np.array([row[j] for row in rows]) for j in self.joints}
+
+
+@pytest.mark.parametrize("rack", [-0.06, 0.06])
+def test_the_wheels_travel_is_that_of_its_own_loop_equations(rack: float) -> None:
+    """SciPy's root finder over the whole travel, 18 cm, begun at the drawing."""
+    ease, corner = np.linspace(0, rack, 9)[:-1], Corner()
+    down, up = (corner.solved(np.append(np.full(8, 0.33), np.linspace(0.33, end, 46)),
+                              np.append(ease, np.full(46, rack))) for end in (0.24, 0.42))
+    want = {j: np.concatenate([down[j][:7:-1], up[j][9:]]) for j in corner.joints}
+    wheel = np.full((91, 3), np.nan)
+    wheel[:, 2] = np.linspace(0.24, 0.42, 91)
+    found = rp.find_branches(machine("lamp_cart"), {"rack": np.full(91, rack)}, {"wheel": wheel})
+    gaps = [max(np.abs(found.positions[k, :, found.joints.index(j)] - want[j]).max()
+                for j in corner.joints) for k in range(len(found))]
+    assert min(gaps) < 1e-10
+
+
+def test_the_cart_follows_its_shot_as_its_loop_equations_do() -> None:
+    channels = given("lamp_cart")
+    want = Corner().solved(channels.targets["wheel"][:, 2], channels.drives["rack"])
+    motion = baked("lamp_cart")
+    for joint, places in want.items():
+        assert np.abs(motion[joint] - places).max() < 1e-10
+
+
+# -- the landing leg ------------------------------------------------------------------------------
+
+def test_the_legs_stay_folds_as_two_skew_hinges_say() -> None:
+    """Two hinges and two balls: the knee's angle p about its hinge solves P cos p + Q sin p = R."""
+    motion, drives = baked("gull_leg"), given("gull_leg").drives
+    at = {j.name: np.array(j.at) for j in machine("gull_leg").joints}
+    fold = about((1, 0.12, 0.05), drives["fold"])
+    lug = fold.apply(at["lug"])
+    assert np.abs(motion["lug"] - lug).max() < 1e-11
+    # The wheel's rod slides in the leg and turns with it.
+    slid = at["wheel"] + np.multiply.outer(drives["spring"], (0, 0, 1))
+    assert np.abs(motion["wheel"] - fold.apply(slid)).max() < 1e-11
+    root_, axis = at["stay_root"], np.array((1, -0.08, -0.1))
+    axis = axis / np.linalg.norm(axis)
+    arm = at["knee"] - root_
+    along, square = axis * (arm @ axis), arm - axis * (arm @ axis)
+    side = np.cross(axis, square)
+    reach = lug - root_
+    lower = float(np.linalg.norm(at["knee"] - at["lug"]))
+    p, q = 2 * reach @ square, 2 * reach @ side
+    r = (reach**2).sum(axis=1) + arm @ arm - lower**2 - 2 * reach @ along
+    angles = [np.arctan2(q, p) + s * np.arccos(r / np.hypot(p, q)) for s in (1, -1)]
+    knees = [root_ + along + np.multiply.outer(np.cos(a), square)
+             + np.multiply.outer(np.sin(a), side) for a in angles]
+    gaps = [np.abs(motion["knee"] - knee).max() for knee in knees]
+    assert min(gaps) < 1e-11
+    wanted = np.degrees(angles[int(np.argmin(gaps))])
+    gap = np.remainder(motion.value("stay") - wanted + 180, 360) - 180
+    assert np.abs(gap).max() < 1e-9
+    # Folded when the leg is up, nearly straight when it is down.
+    span = np.linalg.norm(motion["lug"] - root_, axis=1)
+    assert span[0] < 5
+    assert span[40] > 20
+
+
+# -- three arms that don't tilt -------------------------------------------------------------------
+
+def spheres(centres: Array, radius: float) -> Array:
+    """The two points ``(2, 3)`` at one distance from three."""
+    a, b, c = centres
+    x = (b - a) / np.linalg.norm(b - a)
+    y = c - a - x * (x @ (c - a))
+    y = y / np.linalg.norm(y)
+    z = np.cross(x, y)
+    d, e, f = x @ (b - a), x @ (c - a), y @ (c - a)
+    u, v = d / 2, (e * e + f * f - e * d) / (2 * f)
+    w = math.sqrt(radius**2 - u * u - v * v)
+    return np.array([a + u * x + v * y + s * w * z for s in (-1, 1)])
+
+
+def elbows(angles: ArrayLike, frame: float, plate: float, arm: float) -> Array:
+    """Elbows ``(…, 3, 3)`` of arms turned down by ``angles``, moved in by the plate's radius."""
+    a = np.radians(np.asarray(angles, dtype=float))
+    out = frame - plate + arm * np.cos(a)
+    way = np.radians((0.0, 120.0, 240.0))
+    return np.stack([out * np.cos(way), out * np.sin(way), -arm * np.sin(a)], axis=-1)
+
+
+def test_the_sorters_plate_is_where_three_spheres_meet() -> None:
+    motion, drives = baked("letter_sorter"), given("letter_sorter").drives
+    rest = math.degrees(math.atan2(11.78746044807266, 59.74988699449332 - 30))
+    angles = rest + np.stack([drives[f"leg{k}/dip"] for k in (1, 2, 3)], axis=-1)
+    middles = elbows(angles, 30, 9, 32)
+    want = np.array([sorted(spheres(m, 70.0), key=lambda p: p[2])[0] for m in middles])
+    assert np.abs(motion["sucker"] - want).max() < 1e-10
+    for corner in ("plate_1l", "plate_2r", "plate_3l"):
+        assert np.ptp(motion[corner] - motion["sucker"], axis=0).max() < 1e-10
+
+
+def delta() -> rp.Rig:
+    """Frame 0.2, plate 0.045, arms 0.2, rods 0.4, drawn with all arms level; rods 0.03 apart."""
+    frame, plate, arm, rod, half = 0.2, 0.045, 0.2, 0.4, 0.015
+    depth = -math.sqrt(rod**2 - (frame + arm - plate) ** 2)
+    joints: dict[str, Any] = {"middle": [0, 0, depth]}
+    sections: dict[str, dict[str, Any]] = {k: {} for k in ("plates", "bones", "hinges", "cranks")}
+    for k in range(3):
+        turn = about((0, 0, 1), 120 * k)
+        joints[f"shoulder{k}"] = {"at": turn.apply((frame, 0, 0)), **PIN}
+        for side, y in (("l", half), ("r", -half)):
+            joints[f"elbow{k}{side}"] = turn.apply((frame + arm, y, 0))
+            joints[f"corner{k}{side}"] = turn.apply((plate, y, depth))
+            sections["bones"][f"rod{k}{side}"] = [f"elbow{k}{side}", f"corner{k}{side}"]
+        sections["plates"][f"arm{k}"] = [f"shoulder{k}", f"elbow{k}l", f"elbow{k}r"]
+        sections["hinges"][f"shoulder{k}"] = {
+            "parts": ["ground", f"arm{k}"], "at": f"shoulder{k}", "axis": turn.apply((0, 1, 0))}
+        sections["cranks"][f"dip{k}"] = {"turns": f"arm{k}", "about": f"shoulder{k}"}
+    sections["plates"]["plate"] = ["middle", *(j for j in joints if j.startswith("corner"))]
+    return rp.make_rig(joints, dim=3, **sections)
+
+
+def test_both_untilted_places_of_three_arms() -> None:
+    """Arms at 10, 20 and 30 degrees down: by meeting spheres in closed form (own calculation)."""
+    rig = delta()
+    want = spheres(elbows((10, 20, 30), 0.2, 0.045, 0.2), 0.4)
+    assert want[np.argsort(want[:, 2])] == pytest.approx(np.array([
+        (.03108871, .01915230, -.27279226), (-.00837771, -.00372696, .13888410)]), abs=1e-8)
+    found = rp.find_branches(rig, {f"dip{k}": 10.0 * (k + 1) for k in range(3)})
+    assert float(np.nanmax(rp.judge(rig, found.positions, found.size).broken)) < 1e-11
+    middle = found.positions[:, 0, found.joints.index("middle")]
+    for place in want:
+        assert np.abs(middle - place).max(axis=1).min() < 1e-10
+
+
+def test_three_arms_reach_a_place_in_eight_ways() -> None:
+    """Each arm in two ways: for the lower place above 10 or -141.141754 degrees, and so on (own
+    calculation in closed form)."""
+    rig, middle = delta(), spheres(elbows((10, 20, 30), 0.2, 0.045, 0.2), 0.4)
+    place = middle[np.argmin(middle[:, 2])]
+    start = np.array(rig.joints[rig.index["middle"]].at)
+    corners = [j for j in rig.joints if j.name == "middle" or j.name.startswith("corner")]
+    found = rp.find_branches(rig, targets={
+        j.name: place + np.array(j.at) - start for j in corners})
+    assert len(found) == 8
+    read = [found.pick(k).motion() for k in range(8)]
+    dips = np.array([[float(m.value(f"dip{k}")[0]) for k in range(3)] for m in read])
+    for k, other in enumerate((-141.141754, -141.121137, -141.101113)):
+        both = np.remainder(np.unique(np.round(dips[:, k], 6)) + 180, 360) - 180
+        assert sorted(both) == pytest.approx([other, 10.0 * (k + 1)], abs=2e-6)
+
+
+# -- a crank, a rocker and a rod between them -----------------------------------------------------
+
+def test_a_rod_between_two_hinges_that_do_not_meet() -> None:
+    """Crank 1 about z, rod 3, rocker 2 about a line along y through (2.5, 0, 1): at most two places
+    for each angle of the crank, P cos p + Q sin p = R (own calculation)."""
+    axis = np.array((2.5, 0.0, 1.0))
+    wanted = {0: (-42.265083, -250.354782), 60: (-68.244994, -238.624904),
+              150: (-106.115590, -220.792485), 270: (-85.761629, -230.635552)}
+    drawing = np.radians(wanted[0][0])
+    tip = axis + 2 * np.array((np.cos(drawing), 0, np.sin(drawing)))
+    assert np.linalg.norm(tip - (1, 0, 0)) == pytest.approx(3, abs=1e-7)
+    rig = rp.make_rig(
+        {"hub": {"at": [0, 0, 0], **PIN}, "pin": [1, 0, 0], "tip": tip,
+         "post": {"at": axis, **PIN}},
+        {"crank": ["hub", "pin"], "rod": {"ends": ["pin", "tip"], "length": 3},
+         "rocker": ["post", "tip"]}, dim=3,
+        hinges={"in": {"parts": ["ground", "crank"], "at": "hub", "axis": [0, 0, 1]},
+                "out": {"parts": ["ground", "rocker"], "at": "post", "axis": [0, -1, 0]}},
+        cranks={"turn": {"turns": "crank", "about": "in", "zero": [1, 0, 0]},
+                "swing": {"turns": "rocker", "about": "out", "zero": [1, 0, 0]}})
+    for turn, want in wanted.items():
+        found = rp.find_branches(rig, {"turn": float(turn)})
+        assert found.found is rp.Found.COMPLETE
+        read = [float(found.pick(k).motion().value("swing")[0]) for k in range(len(found))]
+        assert sorted(np.remainder(read, 360)) == pytest.approx(
+            sorted(np.remainder(want, 360)), abs=2e-6)
