@@ -8,7 +8,9 @@ a source are elementary geometry.
 from __future__ import annotations
 
 import math
-from functools import cache
+from collections.abc import Callable
+from dataclasses import replace
+from functools import cache, partial
 from pathlib import Path
 from typing import Any
 
@@ -51,6 +53,12 @@ def about(axis: ArrayLike, degrees: ArrayLike) -> Rotation:
     unit = np.asarray(axis, dtype=float)
     unit = unit / np.linalg.norm(unit)
     return Rotation.from_rotvec(np.multiply.outer(np.radians(degrees), unit))
+
+
+def solution(loops: Callable[[Array], Array], start: Array) -> Array:
+    """Where loop equations close, by SciPy from a start; how far is for the caller to see."""
+    found: Array = root(loops, start, tol=1e-14).x
+    return found
 
 
 def test_there_are_machines_in_space_enough() -> None:
@@ -135,8 +143,7 @@ class Corner:
     def solved(self, heights: Array, racks: Array) -> dict[str, Array]:
         unknowns, rows = np.zeros(5), []
         for height, rack in zip(heights, racks, strict=True):
-            answer = root(self.open, unknowns, (height, rack), tol=1e-14)
-            unknowns = answer.x
+            unknowns = solution(partial(self.open, height=height, rack=rack), unknowns)
             assert np.abs(self.open(unknowns, height, rack)).max() < 1e-13
             rows.append(self.places(unknowns))
         return {j: np.array([row[j] for row in rows]) for j in self.joints}
@@ -311,3 +318,178 @@ def test_a_rod_between_two_hinges_that_do_not_meet() -> None:
         read = [float(found.pick(k).motion().value("swing")[0]) for k in range(len(found))]
         assert sorted(np.remainder(read, 360)) == pytest.approx(
             sorted(np.remainder(want, 360)), abs=2e-6)
+
+
+# -- scissors and ribs, by copies -----------------------------------------------------------------
+
+def test_the_gangway_reaches_as_far_as_its_bays_say() -> None:
+    """Each bay is as long as the root of (2 half)^2 less the square of its height."""
+    rig, motion = machine("folding_gangway"), baked("folding_gangway")
+    height = given("folding_gangway").drives["winch"]
+    assert len(rig.joints) >= 25
+    for k in range(1, 6):
+        reach = k * np.sqrt(4 - height**2)
+        for side, y in (("left", 0.6), ("right", -0.6)):
+            low, high = motion[f"bay{k}/far_low_{side}"], motion[f"bay{k}/far_high_{side}"]
+            want = np.stack([reach, np.full(len(reach), y), np.zeros(len(reach))], axis=-1)
+            assert np.abs(low - want).max() < 1e-11
+            assert np.abs(high - want - np.multiply.outer(height, (0, 0, 1))).max() < 1e-11
+    report = rp.check(rig)
+    assert report.freedoms == 1
+    assert report.freedoms_counted < 0
+    assert rp.count_branches(rig, {"winch": 1.2}).branches == 2**5
+
+
+def crossing(a: Array, b: Array, ra: float, rb: float, side: int) -> Array:
+    """Where circles about places ``(n, 2)`` meet, to the left (1) or right (-1) of a to b."""
+    way = b - a
+    d = np.linalg.norm(way, axis=-1, keepdims=True)
+    along = (ra**2 - rb**2 + d**2) / (2 * d)
+    square = np.stack([-way[:, 1], way[:, 0]], axis=-1) / d
+    out: Array = a + way / d * along + side * square * np.sqrt(ra**2 - along**2)
+    return out
+
+
+def test_the_canopys_ribs_unfold_as_circles_say() -> None:
+    """A rib seen from its side: the strut leads the inner bar, the thin rod the outer one."""
+    at = {j.name.removeprefix("rib1/"): np.array(j.at)[[0, 2]]
+          for j in machine("market_canopy").joints if j.name.startswith(("rib1/", "collar"))}
+
+    def length(a: str, b: str) -> float:
+        return float(np.linalg.norm(at[a] - at[b]))
+
+    def carried(tip: str, foot: str, head: str, feet: Array, heads: Array) -> Array:
+        """A joint of a bar, from two others of it."""
+        turn = complex(*(at[tip] - at[foot])) / complex(*(at[head] - at[foot]))
+        way = (heads - feet) @ np.array([1, 1j]) * turn
+        out: Array = feet + np.stack([way.real, way.imag], axis=-1)
+        return out
+
+    motion, height = baked("market_canopy"), given("market_canopy").drives["mast"]
+    collar = np.stack([0 * height, height], axis=-1)
+    crown, anchor = (np.tile(at[k], (len(height), 1)) for k in ("crown", "anchor"))
+    pushed = crossing(collar, crown, length("collar", "pushed"), length("crown", "pushed"), -1)
+    elbow = carried("elbow", "crown", "pushed", crown, pushed)
+    horn = crossing(anchor, elbow, length("anchor", "horn"), length("elbow", "horn"), 1)
+    tip = carried("tip", "elbow", "horn", elbow, horn)
+    for k in range(8):
+        turn = about((0, 0, 1), 45 * k)
+        for joint, flat in (("pushed", pushed), ("elbow", elbow), ("horn", horn), ("tip", tip)):
+            places = turn.apply(np.stack([flat[:, 0], 0 * height, flat[:, 1]], axis=-1))
+            assert np.abs(motion[f"rib{k + 1}/{joint}"] - places).max() < 1e-11
+    # It opens as the collar goes up.
+    assert tip[60, 1] - tip[0, 1] > 0.5
+
+
+def test_a_canopy_without_limits_could_stand_in_65536_ways() -> None:
+    """Eight ribs, each in two ways at the strut and two at the rod."""
+    free = replace(machine("market_canopy"), limits=())
+    count = rp.count_branches(free, {"mast": 2.4})
+    assert (count.branches, count.groups) == (4**8, (4,) * 8)
+    assert rp.count_branches(machine("market_canopy"), {"mast": 2.4}).branches == 1
+
+
+# -- the arm on six hinges ------------------------------------------------------------------------
+
+def folds(wrist: Array) -> list[tuple[float, float, Array]]:
+    """All ways to reach a place with the wrist: the waist's angle, the shoulder's, and the elbow.
+
+    The wrist stands in the upright plane through the waist's axis that holds the arm, before the
+    post or behind it.
+    """
+    at = {j.name: np.array(j.at) for j in machine("lamplighter").joints}
+    upper = float(np.linalg.norm(at["elbow"] - at["shoulder"]))
+    lower = float(np.linalg.norm(at["wrist"] - at["elbow"]))
+    out = []
+    for sign in (1, -1):
+        waist = math.atan2(sign * wrist[1], sign * wrist[0])
+        shoulder = np.array([[0.15, 0.5]])
+        goal = np.array([[sign * math.hypot(wrist[0], wrist[1]), wrist[2]]])
+        if not abs(upper - lower) < np.linalg.norm(goal - shoulder) < upper + lower:
+            continue
+        for side in (1, -1):
+            x, z = crossing(shoulder, goal, upper, lower, side)[0]
+            slope = math.atan2(z - 0.5, x - 0.15) - math.atan2(0.8, 0.3)
+            out.append((math.degrees(waist), -math.degrees(slope),
+                        np.array((x * math.cos(waist), x * math.sin(waist), z))))
+    return out
+
+
+@pytest.mark.parametrize(("move", "count"), [((0, 0, 0), 4), ((-0.55, 0.2, -0.3), 8)])
+def test_the_lamplighter_reaches_a_place_in_all_the_ways_there_are(
+        move: tuple[float, float, float], count: int) -> None:
+    """Waist forwards or backwards, elbow up or down, and the last three hinges in two ways each."""
+    rig = machine("lamplighter")
+    found = rp.find_branches(rig, targets={
+        j: drawn("lamplighter", j) + move for j in ("flame", "grip", "side")})
+    assert float(np.nanmax(rp.judge(rig, found.positions, found.size).broken)) < 1e-11
+    ways = folds(drawn("lamplighter", "wrist") + move)
+    assert len(found) == 2 * len(ways) == count
+    elbows_found = found.positions[:, 0, found.joints.index("elbow")]
+    motions = [found.pick(k).motion() for k in range(count)]
+    for waist, raised, elbow in ways:
+        mine = np.flatnonzero(np.abs(elbows_found - elbow).max(axis=1) < 1e-9)
+        assert len(mine) == 2
+        for k in mine:
+            for name, want in (("turn", waist), ("raise", raised)):
+                gap = float(motions[k].value(name)[0]) - want
+                assert abs((gap + 180) % 360 - 180) < 1e-8
+
+
+def test_the_taper_keeps_its_direction() -> None:
+    motion = baked("lamplighter")
+    for joint in ("grip", "side"):
+        assert np.ptp(motion[joint] - motion["flame"], axis=0).max() < 1e-9
+
+
+# -- the deck on six legs -------------------------------------------------------------------------
+
+FEET = {"east": ("foot_1", "foot_2"), "west": ("foot_3", "foot_4"), "south": ("foot_5", "foot_6")}
+
+
+def deck(unknowns: Array) -> dict[str, Array]:
+    """The deck's joints, turned by three unknowns and moved by three more, in metres."""
+    turn = Rotation.from_rotvec(unknowns[3:])
+    return {j: turn.apply(drawn("storm_table", j)) + 100 * unknowns[:3] for j in (*FEET, "ship")}
+
+
+def legs(unknowns: Array, lengths: Array) -> Array:
+    """Squared lengths of the six legs less what they should be, in square metres."""
+    places = deck(unknowns)
+    have = [((places[top] - drawn("storm_table", foot)) ** 2).sum()
+            for top, pair in FEET.items() for foot in pair]
+    return (np.array(have) - lengths**2) / 1e4
+
+
+def test_the_deck_follows_its_six_legs() -> None:
+    """SciPy's root finder from frame to frame, on the deck's place and turn."""
+    motion, drives = baked("storm_table"), given("storm_table").drives
+    lengths = np.stack([drives[f"leg_{k}"] for k in range(1, 7)], axis=-1)
+    unknowns = np.zeros(6)
+    for frame, six in enumerate(lengths):
+        unknowns = solution(partial(legs, lengths=six), unknowns)
+        assert np.abs(legs(unknowns, six)).max() < 1e-13
+        for joint, place in deck(unknowns).items():
+            assert np.abs(motion[joint][frame] - place).max() < 1e-9
+
+
+def test_no_pose_of_the_deck_is_missing() -> None:
+    """From many starts SciPy finds no pose that isn't listed; there are sixteen at most (legs that
+    meet in pairs above; Faugère and Lazard 1995)."""
+    lengths = np.array([126, 128, 112, 108, 104, 110.0])
+    found = rp.find_branches(machine("storm_table"), {
+        f"leg_{k + 1}": x for k, x in enumerate(lengths)})
+    assert 2 <= len(found) <= 16
+    joints = [found.joints.index(j) for j in (*FEET, "ship")]
+    rng = np.random.default_rng(11)
+    seen: set[int] = set()
+    for _ in range(150):
+        start = np.concatenate([rng.uniform(-1, 1, 3), rng.uniform(-3, 3, 3)])
+        unknowns = solution(partial(legs, lengths=lengths), start)
+        if np.abs(legs(unknowns, lengths)).max() > 1e-12:
+            continue
+        places = np.array(list(deck(unknowns).values()))
+        gaps = np.abs(found.positions[:, 0, joints] - places).max(axis=(1, 2))
+        assert gaps.min() < 1e-6
+        seen.add(int(np.argmin(gaps)))
+    assert len(seen) >= 2
