@@ -474,12 +474,12 @@ def test_the_deck_follows_its_six_legs() -> None:
 
 
 def test_no_pose_of_the_deck_is_missing() -> None:
-    """From many starts SciPy finds no pose that isn't listed; there are sixteen at most (legs that
-    meet in pairs above; Faugère and Lazard 1995)."""
+    """From many starts SciPy finds what is listed and nothing else; there are sixteen at most (legs
+    that meet in pairs above; Faugère and Lazard 1995)."""
     lengths = np.array([126, 128, 112, 108, 104, 110.0])
     found = rp.find_branches(machine("storm_table"), {
         f"leg_{k + 1}": x for k, x in enumerate(lengths)})
-    assert 2 <= len(found) <= 16
+    assert len(found) <= 16
     joints = [found.joints.index(j) for j in (*FEET, "ship")]
     rng = np.random.default_rng(11)
     seen: set[int] = set()
@@ -492,4 +492,4 @@ def test_no_pose_of_the_deck_is_missing() -> None:
         gaps = np.abs(found.positions[:, 0, joints] - places).max(axis=(1, 2))
         assert gaps.min() < 1e-6
         seen.add(int(np.argmin(gaps)))
-    assert len(seen) >= 2
+    assert seen == set(range(len(found)))

@@ -84,34 +84,34 @@ def kept(rest: Rest, rows: Rows) -> Sorted:
 
 def _once(rest: Rest, rows: Rows, order: Ints, steps: Array) -> Ints:
     """Places in the order without rows that are another one again: a body's own frame may have a
-    choice that makes no difference to the joints that hang on it."""
+    choice that makes no difference to the joints that hang on it. Rows that meet at a dead centre
+    stay: their names tell which they are."""
     equal = np.flatnonzero(steps[1:] == steps[:-1])
     if not len(equal) or len(order) > MANY:
         return np.arange(len(order))
-    alive = rows.alive
-    first = np.argmax(alive, axis=1)
-    last = alive.shape[1] - 1 - np.argmax(alive[:, ::-1], axis=1)
     lost: set[int] = set()
     for k in equal.tolist():
         a, j = order[k + 1], k
+        if np.max(rows.margin[a], where=rows.alive[a], initial=0.0) < MEET:
+            continue
         while j >= 0 and steps[j] == steps[k + 1]:
             b = order[j]
-            frames = sorted({int(first[a]), (int(first[a]) + int(last[a])) // 2, int(last[a])})
-            if j not in lost and first[a] == first[b] and last[a] == last[b] and all(
-                    _apart(rows, a, b, f) <= SAME * rest.reach for f in frames):
+            if j not in lost and np.array_equal(rows.alive[a], rows.alive[b]) and (
+                    _apart(rows, a, b) <= SAME * rest.reach):
                 lost.add(k + 1)
                 break
             j -= 1
     return np.array([k for k in range(len(order)) if k not in lost], dtype=np.intp)
 
 
-def _apart(rows: Rows, a: int, b: int, frame: int) -> float:
-    """The largest distance of a joint between two rows at one frame."""
-    worst = 0.0
+def _apart(rows: Rows, a: int, b: int) -> float:
+    """The largest distance of a joint between two rows, in frames in which both live."""
+    both, worst = rows.alive[a], 0.0
     for place in rows.places:
-        f = min(frame, place.shape[2] - 1)
         if place.shape[1] > 1:
-            worst = max(worst, float(np.abs(place[:, a, f] - place[:, b, f]).max()))
+            gap = np.abs(place[:, a] - place[:, b])
+            gap = gap[:, both] if gap.shape[1] > 1 else gap
+            worst = max(worst, float(gap.max(initial=0.0)))
     return worst
 
 
