@@ -144,8 +144,9 @@ def _transformed(rig: Rig, change: Change) -> Rig:
     return replace(
         rig, joints=tuple(replace(j, at=point(j.at)) for j in rig.joints),
         bones=tuple(replace(b, length=b.length * scale, play=b.play * scale) for b in rig.bones),
-        plates=tuple(replace(p, shape=tuple(map(tuple, (np.array(p.shape) * flip * scale).tolist())))
-                     for p in rig.plates),
+        plates=tuple(
+            replace(p, shape=tuple(map(tuple, (np.array(p.shape) * flip * scale).tolist())))
+            for p in rig.plates),
         rails=tuple(replace(r, through=point(r.through), direction=way(r.direction),
                             range=span(r.range)) for r in rig.rails),
         rams=tuple(replace(r, range=span(r.range)) for r in rig.rams),
