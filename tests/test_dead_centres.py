@@ -115,12 +115,16 @@ def quartered(between: float, throw: float) -> rp.Rig:
 def test_quartered_rods_live_at_every_whole_degree_as_one_motion(
     between: float, throw: float) -> None:
     """One rod places, the other checks, and at 0, 180, … degrees it can only do so to the root of
-    rounding. No other motion exists: a quarter turn apart the wheels can't turn crossed."""
+    rounding. No other motion exists: a quarter turn apart the wheels can't turn crossed. Nor is
+    there a dead centre: while one rod lies in line with its cranks, the other stands square."""
     turn = np.arange(3601.0)
     found = rp.find_branches(quartered(between, throw), {"turn": turn})
     assert len(found) == 1
     assert (found.state == rp.State.MET).all()
     held(found)
+    assert not any(found.events)
+    # With either rod alone the margin is |sin| of the turn, of which one is 0.7 at least.
+    assert found.margin.min() > math.sqrt(0.5)
     assert np.abs(unrolled(found, "hub2", "p2")[0] - turn).max() < 1e-10
     step = np.diff(found.positions[0], n=2, axis=0)
     assert np.abs(step).max() < 1.01 * throw * math.radians(1) ** 2

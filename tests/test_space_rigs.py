@@ -119,7 +119,6 @@ def test_a_lift_that_lies_on_the_ground_is_no_branch_of_its_own() -> None:
     assert float(found.margin[low].max(initial=0.0)) < 1e-6
 
 
-@pytest.mark.xfail(reason="all four joints in line are taken for a dead centre")
 def test_the_weather_loop_may_be_led_by_its_second_angle() -> None:
     """Opposite angles and neighbours are alike in kind: without any one of its four axes the screws
     of the other three are never dependent, so there is no dead centre."""

@@ -21,7 +21,6 @@ from rigpose.motion.branches import (
     Search,
     branches_on,
     choice_steps,
-    held_by_more,
     plan_of,
     search_on,
 )
@@ -34,10 +33,10 @@ from rigpose.motion.rowstart import Row, row_of
 from rigpose.motion.settle import Piece, pieces
 from rigpose.motion.shot import Shot
 from rigpose.solve.clock import Clock, part_of_clock
+from rigpose.solve.deadcentre import Pass
 from rigpose.solve.flow import writes
 from rigpose.solve.knowns import Knowns, read_knowns
 from rigpose.solve.rest import Rest, find_rest
-from rigpose.solve.rows import Pass
 from rigpose.solve.search import Context
 
 LENGTHS_HOLD = 1e-12
@@ -154,7 +153,7 @@ class Baking:
             yield self._nothing(0, low)
         part = part_of_clock(self.clock, low, self.clock.count)
         for piece in pieces(self.context, part, self.row.begins, out=self.places[low:]):
-            moved = tuple((g, Pass(0, p.choice, p.time + low, p.kind)) for g, p in piece.passes)
+            moved = tuple((g, replace(p, row=0).moved(low)) for g, p in piece.passes)
             yield replace(piece, start=piece.start + low, stop=piece.stop + low, passes=moved)
 
     def _nothing(self, start: int, stop: int) -> Piece:
@@ -201,9 +200,7 @@ def watch_over(motion: Motion, work: Baking, passes: Sequence[tuple[int, Pass]])
         problems.append(Problem(
             work.shot.source, motion.worst_part, "every length holds to 1e-12 of the size",
             f"{motion.worst:.3g}", "this is a fault of the solver: please tell its developers"))
-    events = tuple(_event(work, motion, g, p) for g, p in passes
-                   if not held_by_more(choice_steps(work.context.plan.groups[g])[p.choice],
-                                       motion.margin, p.time))
+    events = tuple(_event(work, motion, g, p) for g, p in passes if not p.held)
     return replace(motion, spans=spans, problems=tuple(problems),
                    events=tuple(sorted(events, key=lambda e: e.frame)))
 

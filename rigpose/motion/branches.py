@@ -3,10 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
-import numpy.typing as npt
 
 from rigpose.ground.budget import Budget, Watch, go_on
 from rigpose.ground.words import Found, State, weaker
@@ -27,18 +26,18 @@ from rigpose.motion.product import (
 from rigpose.motion.refusals import refuse_loose, useless_targets
 from rigpose.solve.births import follow_all
 from rigpose.solve.clock import Clock, sampled
+from rigpose.solve.deadcentre import Pass
 from rigpose.solve.flow import has_choice, writes
 from rigpose.solve.knowns import Given, Knowns, Wished, read_knowns
-from rigpose.solve.plan import Group, Junction, Plan, Step
+from rigpose.solve.plan import Group, Plan, Step
 from rigpose.solve.planner import plan_for
+from rigpose.solve.regular import shown_margin
 from rigpose.solve.rest import Rest, find_rest
-from rigpose.solve.rows import Pass, Rows, survey
+from rigpose.solve.rows import Rows, survey
 from rigpose.solve.search import Context
 from rigpose.solve.stepping import enumerate_rows
 from rigpose.solve.stream import all_cells
 
-HELD = 0.02
-"""A margin above this, on both sides of a crossing's zero, is that of no dead centre."""
 MOST_TIES = 1 << 14
 """Ties among more branches keep the order of placing."""
 
@@ -149,7 +148,7 @@ def made_from(context: Context, clock: Clock, frames: Array, picks: Sequence[Sor
     mixed = combined(rest, picks, base_alive, context.budget.poses)
     if mixed.cut:
         found = weaker(found, Found.BUDGET)
-    mixed = _ties_by_bends(rest, clock, picks, mixed, base)
+    mixed = _ties_by_bends(rest, clock, picks, _shown(context, clock, picks, mixed), base)
     positions = assembled(rest, picks, mixed, base, clock.count)
     state = np.where(mixed.alive, np.uint8(State.MET), np.uint8(State.NONE))
     groups = tuple(tuple(eqs.rig.joint_names[j] for j in p.rows.group.joints) for p in picks)
@@ -163,6 +162,17 @@ def made_from(context: Context, clock: Clock, frames: Array, picks: Sequence[Sor
         notes=(*_open_rest(rest), *useless_targets(rest, plan), *_turning(eqs.rig, picks)),
         redundant=frozenset(plan.redundant))
     return Search(branches, tuple(picks), mixed)
+
+
+def _shown(context: Context, clock: Clock, picks: Sequence[Sorted], mixed: Picks) -> Picks:
+    """The branches with the margins to tell of them."""
+    shown = [shown_margin(context, p.rows, clock) for p in picks]
+    if all(m is p.rows.margin for m, p in zip(shown, picks, strict=True)):
+        return mixed
+    margin = np.ones(mixed.alive.shape, dtype=np.float32)
+    for k, mine in enumerate(shown):
+        margin = np.minimum(margin, mine[mixed.index[:, k]].astype(np.float32))
+    return replace(mixed, margin=np.where(mixed.alive, margin, np.float32(np.nan)))
 
 
 def _ties_by_bends(rest: Rest, clock: Clock, picks: Sequence[Sorted], mixed: Picks,
@@ -221,23 +231,13 @@ def _events(rig: Rig, frames: Array, picks: Sequence[Sorted],
         mine: dict[int, list[Event]] = {}
         choices = choice_steps(pick.rows.group)
         for p in pick.rows.passes:
-            if held_by_more(choices[p.choice], pick.rows.margin[p.row], p.time):
-                continue
-            mine.setdefault(p.row, []).append(_event(rig, frames, choices[p.choice], p))
+            if not p.held:
+                mine.setdefault(p.row, []).append(_event(rig, frames, choices[p.choice], p))
         by_row.append(mine)
     return tuple(
         tuple(sorted((e for g, mine in enumerate(by_row) for e in mine.get(int(row[g]), [])),
                      key=lambda e: e.frame))
         for row in mixed.index)
-
-
-def held_by_more(step: Step, margin: npt.NDArray[np.floating], time: float) -> bool:
-    """Whether a joint that three of its lengths would leave at a dead centre is held by others:
-    then the crossing changes its sign, and nothing happens to the machine."""
-    if not (isinstance(step, Junction) and step.fitted):
-        return False
-    near = margin[[int(np.floor(time)), min(int(np.ceil(time)), len(margin) - 1)]]
-    return bool(np.nanmin(near) > HELD)
 
 
 def choice_steps(group: Group) -> list[Step]:

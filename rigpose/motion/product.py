@@ -131,23 +131,30 @@ def _steps(rest: Rest, gap: Array) -> Array:
 
 
 def _own(rest: Rest, rows: Rows) -> Ints:
-    """Rows with a pose of their own: one that lives at dead centres only, in poses of other rows,
-    is none."""
-    margin = np.where(rows.alive, rows.margin, 0.0)
-    shadows = np.flatnonzero(margin.max(axis=1) < MEET)
+    """Rows with a pose of their own: one that lives at dead centres only, or in single frames
+    (where the height of a crossing is zero), in poses of other rows, is none."""
+    alive = rows.alive
+    margin = np.where(alive, rows.margin, 0.0)
+    alone = ~np.any(alive[:, 1:] & alive[:, :-1], axis=1)
+    shadows = np.flatnonzero(alone | (margin.max(axis=1) < MEET))
     lost: set[int] = set()
-    for row in shadows:
-        frame = int(np.argmax(rows.alive[row]))
-        others = np.flatnonzero(rows.alive[:, frame])
-        gap = np.zeros(len(others))
-        for place in rows.places:
-            if place.shape[1] > 1:
-                away = place[:, others, frame] - place[:, row, frame][:, None]
-                gap = np.maximum(gap, np.abs(away).max(axis=0))
-        near = {int(k) for k in others[gap < PLACE * rest.reach]} - {int(row)} - lost
-        if any(k not in shadows or k < row for k in near):
-            lost.add(int(row))
+    for row in map(int, shadows):
+        frames = np.flatnonzero(alive[row])
+        if all(any(k not in shadows or k < row for k in _near(rest, rows, row, f) - lost)
+               for f in map(int, frames if alone[row] else frames[:1])):
+            lost.add(row)
     return np.array([k for k in range(len(rows.codes)) if k not in lost], dtype=np.intp)
+
+
+def _near(rest: Rest, rows: Rows, row: int, frame: int) -> set[int]:
+    """Other rows that are in the same pose at a frame, as far as a dead centre lets tell."""
+    others = np.flatnonzero(rows.alive[:, frame])
+    gap = np.zeros(len(others))
+    for place in rows.places:
+        if place.shape[1] > 1:
+            away = place[:, others, frame] - place[:, row, frame][:, None]
+            gap = np.maximum(gap, np.abs(away).max(axis=0))
+    return {int(k) for k in others[gap < PLACE * rest.reach]} - {row}
 
 
 def _gaps(rest: Rest, rows: Rows) -> Array:

@@ -20,7 +20,8 @@ from rigpose.motion.branchset import Branches
 from rigpose.motion.product import MEET, PLACE, Sorted
 from rigpose.motion.settle import Begin, follow_from
 from rigpose.solve.clock import Clock, part_of_clock
-from rigpose.solve.rows import Pass, Rows
+from rigpose.solve.deadcentre import Pass
+from rigpose.solve.rows import Rows
 from rigpose.solve.search import Context
 
 AHEAD = 256

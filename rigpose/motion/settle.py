@@ -12,8 +12,10 @@ from rigpose.ground.words import Found
 from rigpose.model.equations import Array, Equations
 from rigpose.motion.product import base_places
 from rigpose.solve.clock import Clock, part_of_clock
+from rigpose.solve.deadcentre import Pass
 from rigpose.solve.plan import Group
-from rigpose.solve.rows import Codes, Pass, Rows, follow
+from rigpose.solve.regular import shown_margin
+from rigpose.solve.rows import Codes, Rows, follow
 from rigpose.solve.search import Cells, Context
 from rigpose.solve.stepping import walk
 
@@ -110,7 +112,8 @@ def _piece(context: Context, clock: Clock, rows: Sequence[Rows], low: int, start
     values: dict[int, Array] = {}
     for row in rows:
         alive &= row.alive[0, cut]
-        margin = np.minimum(margin, np.broadcast_to(row.margin[0], (clock.count,))[cut])
+        shown = shown_margin(context, row, clock)[0]
+        margin = np.minimum(margin, np.broadcast_to(shown, (clock.count,))[cut])
         sources.update(zip(row.group.joints, row.places, strict=True))
         values |= {v: a[0, cut] for v, a in row.values.items()}
     for j, place in sources.items():
@@ -121,7 +124,7 @@ def _piece(context: Context, clock: Clock, rows: Sequence[Rows], low: int, start
     positions = _turned(columns, eqs, out)
     positions[~alive] = np.nan
     margin[~alive] = np.nan
-    passes = tuple((g, Pass(p.row, p.choice, p.time + low, p.kind))
+    passes = tuple((g, p.moved(low))
                    for g, row in enumerate(rows) for p in row.passes
                    if (p.time + low >= start or start == 0) and p.time + low < stop)
     return Piece(start, stop, positions, alive, margin, values, passes)

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from rigpose.model.equations import Array
 from rigpose.solve.clock import Clock, part_of_clock
 from rigpose.solve.plan import Group
-from rigpose.solve.rows import Pass, Rows, follow
+from rigpose.solve.rows import Rows, follow
 from rigpose.solve.search import Context
 
 Mask = NDArray[np.bool_]
@@ -73,7 +73,7 @@ def _delayed(rows: Rows, frame: int, frames: int) -> Rows:
         alive=longer(rows.alive, 0).astype(bool), margin=longer(rows.margin, np.nan),
         values={v: longer(np.broadcast_to(a, (b, frames - frame)), np.nan)
                 for v, a in rows.values.items()},
-        passes=[Pass(p.row, p.choice, p.time + frame, p.kind) for p in rows.passes])
+        passes=[p.moved(frame) for p in rows.passes])
 
 
 def _together(a: Rows, b: Rows) -> Rows:
@@ -85,7 +85,7 @@ def _together(a: Rows, b: Rows) -> Rows:
         return np.concatenate([np.broadcast_to(x, (*lead, n, frames)),
                                np.broadcast_to(y, (*lead, m, frames))], axis=-2)
 
-    moved = [Pass(p.row + n, p.choice, p.time, p.kind) for p in b.passes]
+    moved = [p.moved(rows=n) for p in b.passes]
     return replace(
         a, codes=np.concatenate([a.codes, b.codes]),
         places=[both(x, y) for x, y in zip(a.places, b.places, strict=True)],

@@ -7,7 +7,7 @@ negative between two frames there is no pose for a moment (gap). A low point abo
 
 from __future__ import annotations
 
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -16,15 +16,16 @@ from numpy.typing import NDArray
 from rigpose.ground.tolerance import EPS
 from rigpose.model.equations import Array
 from rigpose.solve.clock import Clock
+from rigpose.solve.regular import HELD, full_margin, knowns_at, may_hold
 from rigpose.solve.run import run_steps
 from rigpose.solve.screen import Hits
 from rigpose.solve.search import Context, base_table, group_table
+from rigpose.solve.table import Table
 
 if TYPE_CHECKING:
     from rigpose.solve.rows import Flips, Rows
 
 Ints = NDArray[np.intp]
-Found = list[tuple[int, int, float, str]]
 AT_END = 1e-6
 """Frames within which a zero is at the very first or last frame."""
 POINTS = 9
@@ -40,8 +41,8 @@ FIT = np.array([-4.0, -3.0, -2.0, -1.0, 1.0, 2.0, 3.0, 4.0])
 
 
 def classify(context: Context, rows: Rows, clock: Clock, flips: Flips, choice: int,
-             hits: Hits) -> Found:
-    """(row, choice, time, kind) of every true dead centre among the low points."""
+             hits: Hits) -> list[Pass]:
+    """Every true zero among the low points."""
     heights = _Heights(context, rows, clock, flips, choice)
     last = clock.count - 1
     hits = replace(hits, high=np.minimum(hits.high, last))
@@ -50,7 +51,41 @@ def classify(context: Context, rows: Rows, clock: Clock, flips: Flips, choice: i
     rests = hits.rests & (hits.low > 0) & (hits.high < last)
     found = _touching(heights, hits.take(~hits.rests))
     found += _resting(heights, hits.take(rests))
-    return [(row, choice, time, kind) for row, time, kind in found if AT_END < time < last - AT_END]
+    passes = [Pass(row, choice, time, kind) for row, time, kind in found
+              if AT_END < time < last - AT_END]
+    return _held(heights, passes)
+
+
+def _held(heights: _Heights, passes: list[Pass]) -> list[Pass]:
+    """The same, with those marked where surplus lengths hold the joints."""
+    joints = np.array(heights.rows.group.joints, dtype=np.intp)
+    meet = [k for k, p in enumerate(passes) if p.kind != "gap"]
+    if not meet or not may_hold(heights.context, len(joints)):
+        return passes
+    poses = heights.poses(np.array([passes[k].row for k in meet]),
+                          np.array([passes[k].time for k in meet]))
+    margin = full_margin(heights.context, joints, *poses)
+    out = list(passes)
+    for k, least in zip(meet, margin, strict=True):
+        out[k] = replace(out[k], held=bool(least > HELD))
+    return out
+
+
+@dataclass(frozen=True, slots=True)
+class Pass:
+    """A row at a dead centre: at ``time`` (in frames from the first) crossing ``choice`` is
+    passed straight through (``flips``) or touched; ``gap`` where it opens between two frames.
+    ``held`` where surplus lengths hold the joints all the while: no dead centre of the machine."""
+
+    row: int
+    choice: int
+    time: float
+    kind: str
+    held: bool = False
+
+    def moved(self, frames: int = 0, rows: int = 0) -> Pass:
+        """The same, counted from an earlier frame and row."""
+        return replace(self, time=self.time + frames, row=self.row + rows)
 
 
 class _Heights:
@@ -66,7 +101,22 @@ class _Heights:
     def __call__(self, rows: Ints, times: Array) -> Array:
         """``(m, k)`` for rows ``(m,)`` and times ``(m, k)``; NaN past an earlier dead one."""
         m, k = times.shape
-        flat, every = times.ravel(), np.repeat(rows, k)
+        _, table = self._run(np.repeat(rows, k), times.ravel())
+        return np.broadcast_to(table.sines[self.choice], (1, m * k)).reshape(m, k)
+
+    def poses(self, rows: Ints, times: Array) -> tuple[Array, Array, Array]:
+        """``x, values, goal`` of whole poses at times ``(m,)`` of rows ``(m,)``."""
+        base, table = self._run(rows, times)
+        eqs = self.context.plan.eqs
+        x = np.full((len(rows), eqs.n, eqs.dim), np.nan)
+        for p in range(eqs.n):
+            if p in table.points:
+                x[:, p] = np.broadcast_to(table.point(p), (eqs.dim, 1, len(rows)))[:, 0].T
+        cell = np.zeros(len(rows), dtype=np.intp), np.arange(len(rows))
+        read = {v: table.value(v) for v in table.values}
+        return x, *knowns_at(self.context, base.inputs, read, *cell)
+
+    def _run(self, every: Ints, flat: Array) -> tuple[Table, Table]:
         base = base_table(self.context, self.clock.at(flat), True, hints=self._hints(every, flat))
         table = group_table(base, 1)
         group = self.rows.group
@@ -74,7 +124,7 @@ class _Heights:
         # of one mechanism often come to zero at the same instant.
         ways = {c: self.flips.at(c, every, flat)[None] for c in range(group.bits)}
         run_steps(group.steps, table, ways, len(self.context.plan.base))
-        return np.broadcast_to(table.sines[self.choice], (1, m * k)).reshape(m, k)
+        return base, table
 
     def _hints(self, rows: Ints, times: Array) -> dict[int, Array]:
         frame = np.rint(times).astype(np.intp)

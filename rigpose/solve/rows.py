@@ -9,7 +9,7 @@ the plan: what one does depends on earlier ones only.
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from itertools import pairwise
 
 import numpy as np
@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 from rigpose.ground.words import Found, weaker
 from rigpose.model.equations import Array
 from rigpose.solve.clock import Clock
-from rigpose.solve.deadcentre import classify
+from rigpose.solve.deadcentre import Pass, classify
 from rigpose.solve.plan import Group
 from rigpose.solve.screen import Screen
 from rigpose.solve.search import Cells, Context, search
@@ -27,17 +27,6 @@ Mask = NDArray[np.bool_]
 Codes = NDArray[np.int16]
 CELLS = 1 << 15
 """Cells of a block: arrays of this size stay in the cache."""
-
-
-@dataclass(frozen=True, slots=True)
-class Pass:
-    """A row at a dead centre: at ``time`` (in frames from the first) crossing ``choice`` is
-    passed straight through (``flips``) or touched; ``gap`` where it opens between two frames."""
-
-    row: int
-    choice: int
-    time: float
-    kind: str
 
 
 @dataclass
@@ -64,7 +53,7 @@ class Rows:
             [p if p.shape[1] == 1 else p[:, which] for p in self.places],
             self.alive[which], self.margin[which],
             {v: a if len(a) == 1 else a[which] for v, a in self.values.items()},
-            [Pass(new[p.row], p.choice, p.time, p.kind) for p in self.passes if p.row in new],
+            [replace(p, row=new[p.row]) for p in self.passes if p.row in new],
             self.found, self.turning)
 
 
@@ -134,10 +123,10 @@ def follow(context: Context, group: Group, clock: Clock, codes: Codes,
             done.add(choice)
             hits = screen.hits(choice)
             found = classify(context, rows, clock, flips, choice, hits) if len(hits) else []
-            passes += [Pass(*p) for p in found]
-            for row, _, time, kind in found:
-                if kind == "passed":
-                    flips.add(choice, row, time)
+            passes += found
+            for p in found:
+                if p.kind == "passed":
+                    flips.add(choice, p.row, p.time)
                     turned = True
             if turned:
                 break
