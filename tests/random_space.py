@@ -432,13 +432,29 @@ def _stop(draft: Draft) -> None:
 
 # -- what is solved as one ------------------------------------------------------------------------
 
+def _legs(draft: Draft, corners: Sequence[str], count: int) -> None:
+    """Six bones from corners in turn to ``count`` joints, no two of them alike: new pins, or
+    placed ones where three are enough."""
+    feet = draft.some(3, corners) if count == 3 else [draft.joint(pin=True) for _ in range(count)]
+    for k in range(6):
+        # Three corners on three feet: each corner on the next foot too.
+        foot = feet[(k % 3 + k // 3) % 3] if count == 3 else feet[k % count]
+        draft.bone(foot, corners[k % len(corners)])
+
+
 def _platform(draft: Draft) -> None:
-    """A plate on six bones, two from each corner."""
+    """A plate on six bones, two from each of its three corners, on three joints
+    or on six."""
     corners = [draft.joint() for _ in range(3)]
     draft.plate(corners)
-    for corner in corners:
-        for foot in draft.some(2, corners):
-            draft.bone(foot, corner)
+    _legs(draft, corners, int(draft.rng.choice([3, 6])))
+
+
+def _deck(draft: Draft) -> None:
+    """A plate of six corners on six legs: up to 40 poses."""
+    corners = [draft.joint() for _ in range(6)]
+    draft.plate(corners)
+    _legs(draft, corners, 6)
 
 
 def _tetrahedron(draft: Draft) -> None:
@@ -447,9 +463,7 @@ def _tetrahedron(draft: Draft) -> None:
     for k in range(4):
         for j in range(k):
             draft.bone(corners[j], corners[k])
-    for corner, count in zip(corners, (2, 2, 1, 1), strict=True):
-        for foot in draft.some(count, corners):
-            draft.bone(foot, corner)
+    _legs(draft, corners, 6)
 
 
 def _loop(draft: Draft) -> None:
@@ -466,4 +480,5 @@ ONE_BY_ONE: Sequence[Kind] = (*PLAIN, *HINGED, _fold, _driven_rail, _bone_slot, 
                               _posted, _block, _target, _led_body)
 PRUNED: Sequence[Kind] = (*ONE_BY_ONE, _fence, _fence, _surplus, _wedge, _wedge, _stop, _stop)
 BLOCKS: Sequence[Kind] = (_platform, _tetrahedron, _loop)
+DECKS: Sequence[Kind] = (_deck,)
 EVERY: Sequence[Kind] = (*PRUNED, *BLOCKS)
