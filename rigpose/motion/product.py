@@ -152,7 +152,8 @@ def _near(rest: Rest, rows: Rows, row: int, frame: int) -> set[int]:
     gap = np.zeros(len(others))
     for place in rows.places:
         if place.shape[1] > 1:
-            away = place[:, others, frame] - place[:, row, frame][:, None]
+            f = min(frame, place.shape[2] - 1)
+            away = place[:, others, f] - place[:, row, f][:, None]
             gap = np.maximum(gap, np.abs(away).max(axis=0))
     return {int(k) for k in others[gap < PLACE * rest.reach]} - {row}
 

@@ -27,7 +27,8 @@ LOW = 0.05
 """In groups of more than `FEW` coordinates only margins below this are measured again."""
 FEW = 24
 MANY = 1 << 16
-RIDGE = 1e-18
+LEAST = 1e-12
+"""Squared singular values below this are rounding."""
 WIDEST = 400
 """Coordinates of a group above which dense rows cost too much."""
 BATCH = 256
@@ -73,11 +74,13 @@ def _least(jac: Array, dim: int) -> Array:
         return out
     a = jac[good]
     turned = a.transpose(0, 2, 1)
-    inverse = np.linalg.solve(turned @ a + RIDGE * np.eye(columns), turned)
+    square, axes = np.linalg.eigh(turned @ a)
+    full = square[:, 0] > LEAST
+    inverse = (axes / np.maximum(square, LEAST)[:, None]) @ (axes.transpose(0, 2, 1) @ turned)
     each = inverse.reshape(len(a), -1, dim, rows)
     moved = np.sqrt(np.einsum("mjdr,mjdr->mjr", each, each).max(axis=(1, 2)))
     least = np.minimum(1.0 / moved, 1.0)
-    out[good] = np.where(least > HELD, least, 0.0)
+    out[good] = np.where(full & (least > HELD), least, 0.0)
     return out
 
 
