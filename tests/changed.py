@@ -130,11 +130,17 @@ class Change:
 def _transformed(rig: Rig, change: Change) -> Rig:
     scale = change.scale
 
+    def place(p: Coordinates) -> Coordinates:
+        return tuple(change.places(np.array(p)).tolist())
+
+    def direction(p: Coordinates) -> Coordinates:
+        return tuple(change.ways(np.array(p)).tolist())
+
     def point(p: Point) -> Point:
-        return None if p is None else tuple(change.places(np.array(p)).tolist())
+        return None if p is None else place(p)
 
     def way(p: Point) -> Point:
-        return None if p is None else tuple(change.ways(np.array(p)).tolist())
+        return None if p is None else direction(p)
 
     def span(r: tuple[float, float] | None) -> tuple[float, float] | None:
         return None if r is None else (r[0] * scale, r[1] * scale)
@@ -152,7 +158,7 @@ def _transformed(rig: Rig, change: Change) -> Rig:
         rams=tuple(replace(r, range=span(r.range)) for r in rig.rams),
         cranks=tuple(replace(c, range=None, toward=way(c.toward)) for c in rig.cranks),
         limits=tuple(_limit(m, change.mirror) for m in rig.limits),
-        planes=tuple(replace(p, through=point(p.through), normal=way(p.normal))
+        planes=tuple(replace(p, through=place(p.through), normal=direction(p.normal))
                      for p in rig.planes),
         ties=tuple(_tie(t, rig, change) for t in rig.ties))
 

@@ -68,8 +68,17 @@ class Draft:
         return float(np.linalg.norm(self.places[b] - self.places[a]))
 
     def some(self, count: int, but: Sequence[str] = ()) -> list[str]:
+        """Different joints; three never in one line, about which what they hold could turn."""
         names = [n for n in self.places if n not in but]
-        return [names[k] for k in self.rng.choice(len(names), count, replace=False)]
+        while True:
+            chosen = [names[k] for k in self.rng.choice(len(names), count, replace=False)]
+            if count < 3 or self._spread(chosen):
+                return chosen
+
+    def _spread(self, joints: Sequence[str]) -> bool:
+        a, b, c = (self.places[j] for j in joints)
+        across = np.linalg.norm(np.cross(b - a, c - a))
+        return bool(across > 1e-6 * np.linalg.norm(b - a) * np.linalg.norm(c - a))
 
     def turn(self, axis: Array, start: Array, first: Array, second: Array) -> float:
         """Degrees about an axis through ``start``, from one place to another, by the right hand:
