@@ -491,3 +491,7 @@ PRUNED: Sequence[Kind] = (*ONE_BY_ONE, _fence, _fence, _surplus, _wedge, _wedge,
 BLOCKS: Sequence[Kind] = (_platform, _tetrahedron, _loop)
 DECKS: Sequence[Kind] = (_deck,)
 EVERY: Sequence[Kind] = (*PRUNED, *BLOCKS)
+MOVING: Sequence[Kind] = (
+    _driven_door, _driven_knee, _axle, _ram, _driven_rail, _driven_slot, _tripod, _plate, _hung,
+    _knee, _door, _rail, _sheet, _slot, _target)
+"""Many drives, and nothing that is solved as one."""
