@@ -72,10 +72,10 @@ class Draft:
         names = [n for n in self.places if n not in but]
         while True:
             chosen = [names[k] for k in self.rng.choice(len(names), count, replace=False)]
-            if count < 3 or self._spread(chosen):
+            if count < 3 or self.spread(chosen):
                 return chosen
 
-    def _spread(self, joints: Sequence[str]) -> bool:
+    def spread(self, joints: Sequence[str]) -> bool:
         a, b, c = (self.places[j] for j in joints)
         across = np.linalg.norm(np.cross(b - a, c - a))
         return bool(across > 1e-6 * np.linalg.norm(b - a) * np.linalg.norm(c - a))
@@ -495,3 +495,73 @@ MOVING: Sequence[Kind] = (
     _driven_door, _driven_knee, _axle, _ram, _driven_rail, _driven_slot, _tripod, _plate, _hung,
     _knee, _door, _rail, _sheet, _slot, _target)
 """Many drives, and nothing that is solved as one."""
+
+# -- special places -------------------------------------------------------------------------------
+
+GRID = [np.array([x, y, z], dtype=float) for x in range(3) for y in range(3) for z in range(2)]
+STRAIGHT = ((1, 0, 0), (0, 1, 0), (0, 0, 1), (1, 1, 0), (1, 0, -1))
+
+
+def lattice_space_case(seed: int, steps: int = 3) -> Case:
+    """Joints on a small grid, so that bars lie in line, balls touch and joints coincide."""
+    draft = Draft(np.random.default_rng(seed))
+    for _ in range(3):
+        draft.joint(_grid(draft, *draft.places), pin=True)
+    while not draft.spread(list(draft.places)):
+        draft.places["j2"] = _grid(draft, "j0", "j1")
+        draft.joints["j2"]["at"] = draft.places["j2"].tolist()
+    for _ in range(steps):
+        LATTICE[int(draft.rng.integers(len(LATTICE)))](draft)
+    return Case(draft.rig(), draft.drives, draft.targets)
+
+
+def _grid(draft: Draft, *off: str) -> Array:
+    """A place of the grid where none of these joints lies."""
+    free = [p for p in GRID if all((p != draft.places[j]).any() for j in off)]
+    return free[int(draft.rng.integers(len(free)))]
+
+
+def _grid_tripod(draft: Draft) -> None:
+    feet = draft.some(3)
+    top = draft.joint(_grid(draft, *feet))
+    for foot in feet:
+        draft.bone(foot, top)
+
+
+def _grid_ram(draft: Draft) -> None:
+    a, b, c = draft.some(3)
+    top = draft.joint(_grid(draft, a, b, c))
+    draft.bone(a, top)
+    draft.bone(b, top)
+    name = draft.new("rams", {"ends": [c, top]})
+    draft.drives[name] = draft.gap(c, top)
+
+
+def _grid_rail(draft: Draft) -> None:
+    (a,) = draft.some(1)
+    slider = draft.joint(_grid(draft, a))
+    draft.bone(a, slider)
+    draft.add("rails", f"r{draft.number('rails')}", {
+        "joint": slider, "through": draft.places[slider].tolist(),
+        "direction": list(STRAIGHT[int(draft.rng.integers(len(STRAIGHT)))])})
+
+
+def _grid_sheet(draft: Draft) -> None:
+    a, b = draft.some(2)
+    top = draft.joint(_grid(draft, a, b))
+    draft.bone(a, top)
+    draft.bone(b, top)
+    draft.add("planes", f"s{draft.number('planes')}", {
+        "joints": [top], "through": draft.places[top].tolist(),
+        "normal": list(STRAIGHT[int(draft.rng.integers(len(STRAIGHT)))])})
+
+
+def _grid_plate(draft: Draft) -> None:
+    a, b, c = draft.some(3)
+    corner = draft.joint(_grid(draft, a, b, c))
+    draft.plate([a, b, corner, draft.joint(_grid(draft, a, b, corner))])
+    draft.bone(c, corner)
+
+
+LATTICE: Sequence[Kind] = (_grid_tripod, _grid_tripod, _grid_ram, _grid_rail, _grid_sheet,
+                           _grid_plate)

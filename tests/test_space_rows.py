@@ -13,7 +13,7 @@ from typing import Any
 import numpy as np
 import pytest
 from calling import Capture, said
-from random_space import MOVING, Case, random_space_case
+from random_space import MOVING, Case, lattice_space_case, random_space_case
 from test_properties import right, row_among, whole_rows
 
 import rigpose as rp
@@ -56,6 +56,15 @@ def rows_agree(case: Case, seed: int) -> int:
 @pytest.mark.parametrize("seed", range(100, 116))
 def test_rows_do_not_depend_on_how_they_are_sampled(seed: int) -> None:
     rows_agree(random_space_case(seed, 3, MOVING), seed)
+
+
+@DEAD_FRAMES
+@pytest.mark.parametrize("seed", range(12))
+def test_rows_through_dead_centres_do_not_depend_on_how_they_are_sampled(seed: int) -> None:
+    try:
+        rows_agree(lattice_space_case(seed, 2 + seed % 2), seed)
+    except rp.BadInput as refused:
+        assert "still move" in str(refused)
 
 
 @DEAD_FRAMES
