@@ -10,7 +10,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
 from hashlib import sha256
-from typing import Literal
+from typing import ClassVar, Literal
+
+from rigpose.model.record import Record
 
 Pair = tuple[str, str]
 Span = tuple[float, float]
@@ -20,26 +22,25 @@ METRES = {"m": 1.0, "cm": 0.01, "mm": 0.001, "in": 0.0254, "ft": 0.3048}
 """One unit in metres; inch and foot are the international ones (exact since 1959)."""
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Part:
+class Part(Record, frozen=True, kw_only=True):
     """What every part has. ``layer``, ``skin`` and ``note`` are carried along untouched."""
 
+    unshown: ClassVar[frozenset[str]] = frozenset({
+        "note", "layer", "skin", "base_part", "first_part", "second_part"})
     name: str
-    note: str = field(default="", repr=False)
-    layer: float = field(default=0.0, repr=False)
-    skin: str = field(default="", repr=False)
+    note: str = ""
+    layer: float = 0.0
+    skin: str = ""
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Joint(Part):
+class Joint(Part, frozen=True, kw_only=True):
     """A point; ``at`` is its place at rest as written, None where the file gives none."""
 
     at: Coordinates | None = None
     pin: bool = False
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Bone(Part):
+class Bone(Part, frozen=True, kw_only=True):
     """A rigid length between two joints; ``play`` is slack for this bone, in the rig's unit."""
 
     ends: Pair
@@ -47,16 +48,14 @@ class Bone(Part):
     play: float = 0.0
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Plate(Part):
+class Plate(Part, frozen=True, kw_only=True):
     """A rigid body; ``shape`` holds its joints' places in a frame of its own, handed."""
 
     joints: tuple[str, ...]
     shape: tuple[Coordinates, ...]
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Rail(Part):
+class Rail(Part, frozen=True, kw_only=True):
     """A straight line on which ``joint`` slides, on the ground or along two joints.
 
     On the ground ``through`` and ``direction`` (unit length) are set; ``along`` is set for a
@@ -70,16 +69,14 @@ class Rail(Part):
     range: Span | None = None
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Ram(Part):
+class Ram(Part, frozen=True, kw_only=True):
     """A bone whose length is driven, or free between the two ends of ``range``."""
 
     ends: Pair
     range: Span | None = None
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Crank(Part):
+class Crank(Part, frozen=True, kw_only=True):
     """An angle that may be driven: from ``base`` (None: the ground's x axis) to ``line``.
 
     Both are directed pairs of joints. ``turns`` and ``about`` are kept for people. The value is
@@ -97,7 +94,7 @@ class Crank(Part):
     about: str | None = None
     zero: float | Literal["rest"] = 0.0
     range: Span | None = None
-    base_part: str = field(default="ground", repr=False)
+    base_part: str = "ground"
     axis: Pair | None = None
     toward: Coordinates | None = None
 
@@ -106,8 +103,7 @@ Body = Bone | Plate | Ram
 Drive = Crank | Ram | Rail
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Limit(Part):
+class Limit(Part, frozen=True, kw_only=True):
     """Allowed counter-clockwise turn from the first line to the second, in degrees.
 
     Lines are directed pairs, both seen from ``at`` outwards; ``either`` makes it unsigned. In
@@ -120,13 +116,12 @@ class Limit(Part):
     at: str
     range: Span
     either: bool = False
-    first_part: str = field(default="", repr=False)
-    second_part: str = field(default="", repr=False)
+    first_part: str = ""
+    second_part: str = ""
     axis: Pair | None = None
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Plane(Part):
+class Plane(Part, frozen=True, kw_only=True):
     """A plane on the ground, in space, in which joints stay; ``normal`` has unit length."""
 
     joints: tuple[str, ...]
@@ -134,16 +129,14 @@ class Plane(Part):
     normal: Coordinates
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Tie(Part):
+class Tie(Part, frozen=True, kw_only=True):
     """A linear condition on drive values: sum of factor times value equals ``equals``."""
 
     sum: tuple[tuple[str, float], ...]
     equals: float = 0.0
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Frozen(Part):
+class Frozen(Part, frozen=True, kw_only=True):
     """A rigid group of bones that keeps the shape that ``at`` shows, never its mirror image."""
 
     bones: tuple[str, ...]

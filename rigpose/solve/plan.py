@@ -11,6 +11,7 @@ from dataclasses import dataclass, field
 from functools import cached_property
 
 from rigpose.model.equations import Equations
+from rigpose.model.record import Record
 from rigpose.model.system import System
 
 Point = int
@@ -18,8 +19,7 @@ Local = tuple[float, ...] | Point
 """A place in a body's own frame: numbers, or a point of a condensed group's frame."""
 
 
-@dataclass(frozen=True, slots=True)
-class Length:
+class Length(Record, frozen=True):
     """A length: a constant, the value of a ram, or the gap between two points of a frame."""
 
     constant: float = 0.0
@@ -27,8 +27,7 @@ class Length:
     points: tuple[Point, Point] | None = None
 
 
-@dataclass(frozen=True, slots=True)
-class Heading:
+class Heading(Record, frozen=True):
     """A direction: ``sign * (value + zero)`` turned from the ground's x axis or from a line."""
 
     value: int
@@ -37,8 +36,7 @@ class Heading:
     base: tuple[Point, Point] | None
 
 
-@dataclass(frozen=True, slots=True)
-class Line:
+class Line(Record, frozen=True):
     """A straight line. One of: constant, through two points, one coordinate given as a target
     (``axis`` of ``joint``), square to a rail at a driven way, from a point with a heading, or
     through the first point in the direction from the second to the third (``slot``).
@@ -58,8 +56,7 @@ class Line:
     moved: tuple[Point, Point] | None = None
 
 
-@dataclass(frozen=True, slots=True)
-class Sheet:
+class Sheet(Record, frozen=True):
     """A plane in space: fixed, one coordinate given as a target (``axis`` of ``joint``), square
     to a rail at a driven way (``value``), or through an axis of two points with a heading."""
 
@@ -71,31 +68,27 @@ class Sheet:
     value: int = -1
 
 
-@dataclass(frozen=True, slots=True)
-class Circle:
+class Circle(Record, frozen=True):
     """All places at a given length from a placed point: a circle, in space a sphere."""
 
     centre: Point
     radius: Length
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Step:
+class Step(Record, frozen=True, kw_only=True):
     """What every step has: the parts of the file behind it, for messages."""
 
     parts: tuple[str, ...] = ()
 
 
-@dataclass(frozen=True, slots=True)
-class Given(Step):
+class Given(Step, frozen=True):
     """A joint all of whose coordinates are targets."""
 
     dst: Point
     joint: int
 
 
-@dataclass(frozen=True, slots=True)
-class Meet(Step):
+class Meet(Step, frozen=True):
     """A joint where two curves meet; ``bit`` is the number of its choice (-1: one way only)."""
 
     dst: Point
@@ -104,8 +97,7 @@ class Meet(Step):
     bit: int = -1
 
 
-@dataclass(frozen=True, slots=True)
-class Carry(Step):
+class Carry(Step, frozen=True):
     """Joints of a body that has two placed points; ``local`` are places or points of a frame."""
 
     dst: tuple[Point, ...]
@@ -114,8 +106,7 @@ class Carry(Step):
     base: tuple[Local, Local]
 
 
-@dataclass(frozen=True, slots=True)
-class Aim(Step):
+class Aim(Step, frozen=True):
     """Joints of a body with one placed point and a line of known heading."""
 
     dst: tuple[Point, ...]
@@ -126,8 +117,7 @@ class Aim(Step):
     heading: Heading
 
 
-@dataclass(frozen=True, slots=True)
-class Swing(Step):
+class Swing(Step, frozen=True):
     """Joints of a body with one placed point, turned until its slot passes a placed point."""
 
     dst: tuple[Point, ...]
@@ -139,8 +129,7 @@ class Swing(Step):
     bit: int
 
 
-@dataclass(frozen=True, slots=True)
-class Slide(Step):
+class Slide(Step, frozen=True):
     """A joint at a driven way along a carried line."""
 
     dst: Point
@@ -148,16 +137,14 @@ class Slide(Step):
     value: int
 
 
-@dataclass(frozen=True, slots=True)
-class Seat(Step):
+class Seat(Step, frozen=True):
     """Fixes the frame of a floating group: the joints of its first body at their own places."""
 
     dst: tuple[Point, ...]
     local: tuple[Local, ...]
 
 
-@dataclass(frozen=True, slots=True)
-class Shift(Step):
+class Shift(Step, frozen=True):
     """Helper point: a placed point moved by what a known heading makes of two local places."""
 
     dst: Point
@@ -166,8 +153,7 @@ class Shift(Step):
     plus: Point
 
 
-@dataclass(frozen=True, slots=True)
-class Orient(Step):
+class Orient(Step, frozen=True):
     """Helper points: the places of a body turned to a known heading, about an origin of its own."""
 
     dst: tuple[Point, ...]
@@ -176,8 +162,7 @@ class Orient(Step):
     heading: Heading
 
 
-@dataclass(frozen=True, slots=True)
-class Level(Step):
+class Level(Step, frozen=True):
     """Helper points: the places of a body turned so that two of its joints lie on two parallel
     lines, the second ``offset`` to the left of the first along ``direction``."""
 
@@ -189,8 +174,7 @@ class Level(Step):
     bit: int
 
 
-@dataclass(frozen=True, slots=True)
-class Junction(Step):
+class Junction(Step, frozen=True):
     """A joint in space where surfaces meet: lines first, then sheets, then spheres; ``bit`` is the
     number of its choice (-1: one way only); ``fitted`` where more lengths hold the joint, so that
     these three alone don't make its margin."""
@@ -201,16 +185,14 @@ class Junction(Step):
     fitted: bool = False
 
 
-@dataclass(frozen=True, slots=True)
-class Fit(Step):
+class Fit(Step, frozen=True):
     """Moves a joint in space onto more lengths than place it, all at once, by least squares."""
 
     dst: Point
     circles: tuple[Circle, ...]
 
 
-@dataclass(frozen=True, slots=True)
-class Hang(Step):
+class Hang(Step, frozen=True):
     """Joints of a body in space carried by three placed points (two, where all lie in a line)."""
 
     dst: tuple[Point, ...]
@@ -219,8 +201,7 @@ class Hang(Step):
     base: tuple[Local, ...]
 
 
-@dataclass(frozen=True, slots=True)
-class Hinge(Step):
+class Hinge(Step, frozen=True):
     """Joints of a body in space turned about an axis of two placed points by a driven angle.
 
     The angle is ``sign * (value + zero)`` from the placed point ``start`` (or the direction
@@ -239,23 +220,20 @@ class Hinge(Step):
     sign: float
 
 
-@dataclass(frozen=True, slots=True)
-class Gauge(Step):
+class Gauge(Step, frozen=True):
     """Reads a value off placed joints, because a tie needs it."""
 
     value: int
 
 
-@dataclass(frozen=True, slots=True)
-class Tied(Step):
+class Tied(Step, frozen=True):
     """A value from a tie all of whose other values are known."""
 
     value: int
     tie: int
 
 
-@dataclass(frozen=True, slots=True)
-class Check(Step):
+class Check(Step, frozen=True):
     """A condition that the places already fix: prunes.
 
     kind : distance, body, rail, way, angle, tie, target (equations, within slack), or ram, track,
@@ -267,20 +245,28 @@ class Check(Step):
     points: tuple[Point, ...]
 
 
-@dataclass(frozen=True, slots=True)
-class Cluster(Step):
+class Cluster(Step, frozen=True, eq=False):
     """Joints that only several equations together can place; solved by Newton from many starts.
 
     ``rows`` are row numbers of ``system``, ``square`` an independent choice
     of them, ``around`` the placed joints that they touch, ``bit`` its number among the choices.
     """
 
-    system: System = field(compare=False)
+    system: System
     joints: tuple[int, ...]
     around: tuple[int, ...]
     rows: tuple[int, ...]
     square: tuple[int, ...]
     bit: int
+
+    def _key(self) -> tuple[object, ...]:
+        return self.parts, self.joints, self.around, self.rows, self.square, self.bit
+
+    def __eq__(self, other: object) -> bool:
+        return isinstance(other, Cluster) and self._key() == other._key()
+
+    def __hash__(self) -> int:
+        return hash(self._key())
 
 
 @dataclass(frozen=True)
