@@ -7,6 +7,7 @@ from pathlib import Path
 from rigpose.files.copies import Folder
 from rigpose.files.document import read_document
 from rigpose.model.assemble import assemble
+from rigpose.model.record import all_kept
 from rigpose.model.rig import Rig
 
 
@@ -17,6 +18,7 @@ def load_rig(path: str | Path) -> Rig:
     up to 20, each with its file, line, key path, rule, what came and how to mend it.
     """
     file = Path(path)
-    document = read_document(file)
-    return assemble(document.data, name=file.stem, where=document.where,
-                    outside=Folder.of(file), source=str(path))
+    with all_kept():
+        document = read_document(file)
+        return assemble(document.data, name=file.stem, where=document.where,
+                        outside=Folder.of(file), source=str(path))

@@ -7,6 +7,7 @@ that it hangs on.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import lru_cache
 
@@ -118,12 +119,23 @@ def measure_bends(rig: Rig, positions: Array) -> Signs:
         # Joints lead, so that what follows runs along the poses without gaps.
         block = np.ascontiguousarray(flat[start:start + POSES].transpose(1, 2, 0))
         for k, bend in enumerate(bends):
-            out[start:start + POSES, k] = _signs(rig, block, bend)
+            out[start:start + POSES, k] = side_of(rig, block, bend)
     return out.reshape(*positions.shape[:-2], len(bends))
 
 
-def _signs(rig: Rig, block: Array, bend: Bend) -> Signs:
-    """Signs ``(m,)`` of one bend in places ``(n_joints, dim, m)``."""
+def joints_of(rig: Rig, bend: Bend) -> tuple[int, ...]:
+    """The joints whose places tell a bend."""
+    along = rig.rails[bend.rail].along if bend.rail >= 0 else None
+    all_of = (bend.joint, bend.first, bend.second, bend.third, *(rig.index[j] for j in along or ()))
+    return tuple(dict.fromkeys(j for j in all_of if j >= 0))
+
+
+Places = Array | Mapping[int, Array]
+"""``(n_joints, dim, m)``, or by the joint's number ``(dim, m)`` or ``(dim, 1)``."""
+
+
+def side_of(rig: Rig, block: Places, bend: Bend) -> Signs:
+    """Signs ``(m,)`` of one bend: 1 left or after, -1 right or before, 0 straight, -2 no pose."""
     away = block[bend.joint] - block[bend.first]
     if bend.rail >= 0:
         e = _rail_direction(rig, block, bend.rail)
@@ -135,13 +147,18 @@ def _signs(rig: Rig, block: Array, bend: Bend) -> Signs:
         e = block[bend.second] - block[bend.first]
         share = e[0] * away[1] - e[1] * away[0]
     room = (e * e).sum(axis=0) * (away * away).sum(axis=0)
-    bent = share * share > STRAIGHT * STRAIGHT * room
-    sign = np.where(bent, np.where(share > 0, np.int8(1), np.int8(-1)), np.int8(0))
-    sign[np.isnan(share)] = -2
+    sign: Signs = (share > 0).view(np.int8)
+    sign += sign
+    sign -= 1
+    share *= share
+    sign *= (share > STRAIGHT * STRAIGHT * room).view(np.int8)
+    nowhere = np.isnan(share)
+    if nowhere.any():
+        sign[nowhere] = -2
     return sign
 
 
-def _normal(rig: Rig, block: Array, bend: Bend) -> Array:
+def _normal(rig: Rig, block: Places, bend: Bend) -> Array:
     """What a joint's side is measured along, ``(3, m)``."""
     e = block[bend.second] - block[bend.first]
     if bend.plane >= 0:
@@ -152,7 +169,7 @@ def _normal(rig: Rig, block: Array, bend: Bend) -> Array:
     return across
 
 
-def _rail_direction(rig: Rig, block: Array, number: int) -> Array:
+def _rail_direction(rig: Rig, block: Places, number: int) -> Array:
     rail = rig.rails[number]
     if rail.along is None:
         return np.array(rail.direction)[:, None]

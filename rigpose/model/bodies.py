@@ -9,6 +9,7 @@ from rigpose.model.bench import Bench
 from rigpose.model.decode import decode
 from rigpose.model.names import KeyPath, shown
 from rigpose.model.plateshape import plate_shape
+from rigpose.model.quick import bone_reader, joint_reader, plate_reader
 from rigpose.model.rig import Bone, Coordinates, Joint, Pair, Plate, Ram, Span
 from rigpose.model.spec import BoneSpec, JointSpec, PlateSpec, RamSpec
 
@@ -19,7 +20,12 @@ GROUND = "ground"
 
 def add_joints(bench: Bench, table: Table, places: Mapping[str, Coordinates]) -> None:
     """Add all joints; ``places`` (of a CSV file) win over their own `at`."""
+    read = joint_reader(bench)
     for name, raw in table.items():
+        quick = None if places else read(name, raw)
+        if quick is not None:
+            bench.parts.joints[name] = quick
+            continue
         short = {"at": raw} if isinstance(raw, list) else raw
         spec = decode(bench.notes, ("joints", name), short, JointSpec)
         good = bench.claim("joints", name)
@@ -53,7 +59,12 @@ def _claim_body(bench: Bench, section: str, name: str) -> bool:
 
 def add_bones(bench: Bench, table: Table) -> None:
     """Add all bones; those without a length are measured."""
+    read = bone_reader(bench)
     for name, raw in table.items():
+        quick = read(name, raw)
+        if quick is not None:
+            bench.parts.bones[name] = quick
+            continue
         short = {"ends": raw} if isinstance(raw, list) else raw
         spec = decode(bench.notes, ("bones", name), short, BoneSpec)
         good = _claim_body(bench, "bones", name)
@@ -127,7 +138,12 @@ def _is_length(bench: Bench, path: KeyPath, span: Span) -> bool:
 
 def add_plates(bench: Bench, table: Table) -> None:
     """Add all plates, each with its shape."""
+    read = plate_reader(bench)
     for name, raw in table.items():
+        quick = read(name, raw)
+        if quick is not None:
+            bench.parts.plates[name] = quick
+            continue
         short = {"joints": raw} if isinstance(raw, list) else raw
         spec = decode(bench.notes, ("plates", name), short, PlateSpec)
         good = _claim_body(bench, "plates", name)

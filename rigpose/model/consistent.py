@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-from collections import Counter
 
 from rigpose.model.bench import Bench
 from rigpose.model.names import shown
@@ -53,12 +52,11 @@ def _check_bone(bench: Bench, bone: Bone, carried: dict[str, list[Plate]]) -> No
 
 
 def _check_plate(bench: Bench, plate: Plate, carried: dict[str, list[Plate]]) -> None:
-    """Compare with the plates before it that share two joints or more."""
-    shared = Counter(p.name for j in plate.joints for p in carried[j])
-    for name in [n for n, count in shared.items() if count > 1]:
-        other = bench.parts.plates[name]
+    """Compare with the plates before it that share its first joint and another one."""
+    for other in carried[plate.joints[0]]:
         if other is plate:
             return
+        name = other.name
         common = [j for j in plate.joints if j in other.joints]
         for joint in common[1:]:
             here, there = (_apart(p, common[0], joint) for p in (plate, other))

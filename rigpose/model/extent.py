@@ -38,9 +38,11 @@ def _outermost(points: NDArray[np.float64]) -> NDArray[np.float64]:
     turns = np.arange(_DIRECTIONS) * (np.pi / _DIRECTIONS)
     flat = np.stack([np.cos(turns), np.sin(turns)], axis=-1)
     axes = flat if dim == 2 else _in_space(flat)
-    ways = points @ axes.T
-    chosen = np.unique(np.concatenate([ways.argmin(0), ways.argmax(0)]))
-    return np.asarray(points[chosen])
+    chosen: set[int] = set()
+    for start in range(0, len(axes), _DIRECTIONS):
+        ways = axes[start:start + _DIRECTIONS] @ points.T
+        chosen.update(ways.argmin(1).tolist(), ways.argmax(1).tolist())
+    return np.asarray(points[sorted(chosen)])
 
 
 def _in_space(flat: NDArray[np.float64]) -> NDArray[np.float64]:

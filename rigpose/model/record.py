@@ -7,6 +7,9 @@ circle of references.
 
 from __future__ import annotations
 
+import gc
+from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import Field, fields, make_dataclass
 from functools import cache
 from typing import Any, ClassVar
@@ -39,3 +42,18 @@ class Record(msgspec.Struct, frozen=True, gc=False):
         shown = (f"{name}={getattr(self, name)!r}" for name in self.__struct_fields__
                  if name not in self.unshown)
         return f"{type(self).__name__}({', '.join(shown)})"
+
+
+@contextmanager
+def all_kept() -> Iterator[None]:
+    """The garbage collector waits while very many values are made that all stay.
+
+    It would walk over all of them again and again, which takes as long as making them.
+    """
+    waits = gc.isenabled()
+    gc.disable()
+    try:
+        yield
+    finally:
+        if waits:
+            gc.enable()
