@@ -2,25 +2,27 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from rigpose.ground.budget import Budget, Watch, go_on
 from rigpose.ground.words import Found, State, weaker
-from rigpose.model.bends import measure_bends
+from rigpose.model.bends import Signs, measure_bends
 from rigpose.model.equations import Array
 from rigpose.model.rig import Rig
+from rigpose.motion.assembled import assembled
 from rigpose.motion.branchset import Branches
+from rigpose.motion.gathered import Gathering
 from rigpose.motion.motion import Event
 from rigpose.motion.product import (
     Picks,
     Sorted,
-    assembled,
     base_places,
     combined,
     kept,
+    placed,
     taken,
 )
 from rigpose.motion.refusals import refuse_loose, useless_targets
@@ -124,7 +126,7 @@ def group_rows(context: Context, group: Group, clock: Clock, budget: Budget,
     """All rows of one group, and whether the budget cut them short."""
     if clock.count == 1:
         cells, cut = all_cells(context, group, clock.whole(slice(0, 1)), budget.poses)
-        return Rows(group, cells.codes, cells.places, cells.alive, cells.margin, cells.values,
+        return Rows(group, cells.signs, cells.places, cells.alive, cells.margin, cells.values,
                     found=cells.found, turning=cells.turning), cut
     if not group.binary:
         return enumerate_rows(context, group, clock, watch), False
@@ -148,8 +150,14 @@ def made_from(context: Context, clock: Clock, frames: Array, picks: Sequence[Sor
     mixed = combined(rest, picks, base_alive, context.budget.poses)
     if mixed.cut:
         found = weaker(found, Found.BUDGET)
-    mixed = _ties_by_bends(rest, clock, picks, _shown(context, clock, picks, mixed), base)
-    positions = assembled(rest, picks, mixed, base, clock.count)
+    mixed = _shown(context, clock, picks, mixed)
+    one = Gathering(rest, picks, base) if clock.count == 1 else None
+
+    def poses(some: Picks) -> tuple[Array, Signs | None]:
+        return one.poses(some) if one else (assembled(rest, picks, some, base, clock.count), None)
+
+    mixed = _ties_by_bends(rest.rig, mixed, poses)
+    positions, signs = poses(mixed)
     state = np.where(mixed.alive, np.uint8(State.MET), np.uint8(State.NONE))
     groups = tuple(tuple(eqs.rig.joint_names[j] for j in p.rows.group.joints) for p in picks)
     for array in (positions, state, mixed.margin):
@@ -161,6 +169,8 @@ def made_from(context: Context, clock: Clock, frames: Array, picks: Sequence[Sor
         events=_events(eqs.rig, frames, picks, mixed),
         notes=(*_open_rest(rest), *useless_targets(rest, plan), *_turning(eqs.rig, picks)),
         redundant=frozenset(plan.redundant))
+    if signs is not None:
+        branches.__dict__["signs"] = signs
     return Search(branches, tuple(picks), mixed)
 
 
@@ -175,8 +185,8 @@ def _shown(context: Context, clock: Clock, picks: Sequence[Sorted], mixed: Picks
     return replace(mixed, margin=np.where(mixed.alive, margin, np.float32(np.nan)))
 
 
-def _ties_by_bends(rest: Rest, clock: Clock, picks: Sequence[Sorted], mixed: Picks,
-                   base: Mapping[int, Array]) -> Picks:
+def _ties_by_bends(rig: Rig, mixed: Picks,
+                   posed: Callable[[Picks], tuple[Array, Signs | None]]) -> Picks:
     """Branches equally far from rest (mirror images, say) in the order of their bends."""
     equal = mixed.steps[1:] == mixed.steps[:-1]
     if not equal.any():
@@ -185,14 +195,12 @@ def _ties_by_bends(rest: Rest, clock: Clock, picks: Sequence[Sorted], mixed: Pic
     if len(member) > MOST_TIES:
         return mixed
     some = taken(mixed, member)
-    poses = assembled(rest, picks, some, base, clock.count)
+    poses, _ = posed(some)
     first = np.argmax(some.alive, axis=1)
-    signs = measure_bends(rest.rig, poses[np.arange(len(member)), first])
+    signs = measure_bends(rig, poses[np.arange(len(member)), first])
     # "left" and "after" come before "right" and "before", as names are read.
     order = np.lexsort((*(-signs[:, ::-1].T), some.steps))
-    place = np.arange(len(mixed.steps))
-    place[member] = member[order]
-    return taken(mixed, place)
+    return placed(mixed, member, taken(some, order))
 
 
 def _open_rest(rest: Rest) -> tuple[str, ...]:

@@ -97,7 +97,8 @@ def _telling(signs: Signs, varies: Sequence[int]) -> tuple[list[int], NDArray[np
 def _packed(signs: Signs, varies: Sequence[int]) -> NDArray[np.int64]:
     packed = np.zeros(len(signs), dtype=np.int64)
     for k in varies:
-        packed = packed * 2 + (signs[:, k] > 0)
+        packed += packed
+        packed += signs[:, k] > 0
     return packed
 
 

@@ -150,7 +150,7 @@ def _best_of_stream(context: Context, group: Group, clock: Clock, aim: Array, mo
     node has to be looked at anyway."""
     best: Rows | None = None
     for cells in stream_cells(context, group, clock.whole(slice(0, 1))):
-        rows = Rows(group, cells.codes, cells.places, cells.alive, cells.margin, cells.values,
+        rows = Rows(group, cells.signs, cells.places, cells.alive, cells.margin, cells.values,
                     found=cells.found)
         near = _nearest_of(rows, aim, most)
         best = near if best is None else _nearest_of(_stacked([best, near]), aim, most)

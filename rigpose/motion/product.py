@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,6 +14,7 @@ from rigpose.solve.flow import writes
 from rigpose.solve.rest import Rest
 from rigpose.solve.rows import Rows
 from rigpose.solve.search import Context, base_table, shared_base
+from rigpose.solve.tree import Tree
 
 Ints = NDArray[np.intp]
 STEP = 1e-9
@@ -22,7 +23,6 @@ MEET = 1e-9
 """A margin below this is a dead centre: squared heights within their error bound are set to 0."""
 PLACE = 2e-7
 """At a dead centre places are known to the square root of rounding; nearer ones are one pose."""
-CELLS = 1 << 11
 SAME = 1e-10
 MANY = 1 << 14
 """Branches of one frame above which they are put in order as whole poses."""
@@ -71,24 +71,29 @@ def base_places(context: Context, clock: Clock) -> tuple[dict[int, Array], NDArr
 
 def kept(rest: Rest, rows: Rows) -> Sorted:
     """Rows that live somewhere, nearest to rest first, none twice."""
-    if rows.alive.shape[1] > 1 and len(rows.codes):
+    if rows.alive.shape[1] > 1 and len(rows.alive):
         rows = rows.take(_own(rest, rows))
-    live = np.flatnonzero(rows.alive.any(axis=1))
     gap = _gaps(rest, rows)
-    gap = gap if len(live) == len(gap) else gap[live]
-    steps = _steps(rest, gap)
-    order = _stable_order(steps)
-    once = _once(rest, rows, live[order], steps[order])
-    return Sorted(rows, live[order][once], gap[order][once])
+    some = rows.alive[:, 0] if rows.alive.shape[1] == 1 else rows.alive.any(axis=1)
+    if some.all():
+        order, steps = _in_steps(_steps(rest, gap))
+    else:
+        live = np.flatnonzero(some)
+        order, steps = _in_steps(_steps(rest, gap[live]))
+        order = live[order]
+    once = _once(rest, rows, order, steps)
+    if once is not None:
+        order = order[once]
+    return Sorted(rows, order, gap[order])
 
 
-def _once(rest: Rest, rows: Rows, order: Ints, steps: Array) -> Ints:
+def _once(rest: Rest, rows: Rows, order: Ints, steps: Array) -> Ints | None:
     """Places in the order without rows that are another one again: a body's own frame may have a
     choice that makes no difference to the joints that hang on it. Rows that meet at a dead centre
-    stay: their names tell which they are."""
+    stay: their names tell which they are. None where all are kept."""
     equal = np.flatnonzero(steps[1:] == steps[:-1])
     if not len(equal) or len(order) > MANY:
-        return np.arange(len(order))
+        return None
     lost: set[int] = set()
     for k in equal.tolist():
         a, j = order[k + 1], k
@@ -115,13 +120,20 @@ def _apart(rows: Rows, a: int, b: int) -> float:
     return worst
 
 
-def _stable_order(steps: Array) -> Ints:
-    """As a stable sort; most sets have no two alike, and the quick sort is many times faster."""
-    order = np.argsort(steps)
-    sorted_steps = steps[order]
-    if (sorted_steps[1:] == sorted_steps[:-1]).any():
-        return np.argsort(steps, kind="stable")
-    return order
+def _in_steps(steps: Array) -> tuple[Ints, Array]:
+    """The order of rising steps, of equals the earlier first; and the steps in that order."""
+    bits = max(len(steps) - 1, 1).bit_length()
+    if steps.max(initial=0.0) < float(1 << (63 - bits)):
+        # Sorting keys that carry their places along is several times faster than asking for both.
+        keys = steps.astype(np.int64)
+        keys <<= bits
+        keys |= np.arange(len(steps))
+        keys.sort()
+        order = keys & ((1 << bits) - 1)
+        keys >>= bits
+        return order, keys.astype(np.float64)
+    order = np.argsort(steps, kind="stable")
+    return order, steps[order]
 
 
 def _steps(rest: Rest, gap: Array) -> Array:
@@ -143,7 +155,7 @@ def _own(rest: Rest, rows: Rows) -> Ints:
         if all(any(k not in shadows or k < row for k in _near(rest, rows, row, f) - lost)
                for f in map(int, frames if alone[row] else frames[:1])):
             lost.add(row)
-    return np.array([k for k in range(len(rows.codes)) if k not in lost], dtype=np.intp)
+    return np.array([k for k in range(len(rows.alive)) if k not in lost], dtype=np.intp)
 
 
 def _near(rest: Rest, rows: Rows, row: int, frame: int) -> set[int]:
@@ -160,18 +172,26 @@ def _near(rest: Rest, rows: Rows, row: int, frame: int) -> set[int]:
 
 def _gaps(rest: Rest, rows: Rows) -> Array:
     """Squared distances to rest ``(B,)``, summed over the group's joints, at the first pose."""
-    if not len(rows.codes):
+    if not len(rows.alive):
         return np.zeros(0)
     single = rows.alive.shape[1] == 1
+    if isinstance(rows.places, Tree):
+        return rows.places.total(lambda k, place: _squared(rest, rows.group.joints[k], place))
     first = np.argmax(rows.alive, axis=1)
     each = np.arange(len(first))
     total = np.zeros(len(first))
     for j, place in zip(rows.group.joints, rows.places, strict=True):
         at = np.minimum(first, place.shape[2] - 1)
         mine = place[:, :, 0] if single else place[:, each if place.shape[1] > 1 else 0, at]
-        gap = mine - rest.scaled[j][:, None]
-        gap *= gap
-        total += gap.sum(axis=0)
+        total += _squared(rest, j, mine)
+    return total
+
+
+def _squared(rest: Rest, joint: int, places: Array) -> Array:
+    """Squared distances of places ``(dim, m)`` from a joint's own at rest."""
+    gap = places - rest.scaled[joint][:, None]
+    gap *= gap
+    total: Array = gap.sum(axis=0)
     return total
 
 
@@ -182,32 +202,49 @@ def combined(rest: Rest, picks: Sequence[Sorted], base_alive: NDArray[np.bool_],
     count = int(np.prod([float(s) for s in sizes])) if sizes else 1
     if not picks:
         return _only_base(base_alive)
-    choice = _mixed_radix(sizes, min(count, most))
-    gap = np.zeros(len(choice))
-    for g, p in enumerate(picks):
-        gap += p.gap[choice[:, g]]
-    steps = _steps(rest, gap)
-    if len(picks) > 1:
-        order = _stable_order(steps)
-        choice, steps = choice[order], steps[order]
+    choice, steps = _in_order(rest, picks, sizes, min(count, most))
     index = np.stack([p.order[choice[:, g]] for g, p in enumerate(picks)], axis=1)
-    alive = np.ones((len(choice), picks[0].rows.alive.shape[1]), dtype=bool)
-    margin = np.ones(alive.shape, dtype=np.float32)
-    for g, p in enumerate(picks):
+    first = picks[0].rows
+    alive, margin = first.alive[index[:, 0]], first.margin.astype(np.float32)[index[:, 0]]
+    for g, p in enumerate(picks[1:], 1):
         alive &= p.rows.alive[index[:, g]]
-        margin = np.minimum(margin, p.rows.margin[index[:, g]].astype(np.float32))
-    margin[~alive] = np.nan
-    some = alive.any(axis=1)
+        margin = np.minimum(margin, p.rows.margin.astype(np.float32)[index[:, g]])
+    if not alive.all():
+        margin[~alive] = np.nan
+    some = alive[:, 0] if alive.shape[1] == 1 else alive.any(axis=1)
     keep, meets = _without_doubles(rest, picks, index, alive, margin)
     keep &= some
     mixed = Picks(choice, index, steps, alive, margin, meets, count, count > most)
     return mixed if keep.all() else taken(mixed, np.flatnonzero(keep))
 
 
+def _in_order(rest: Rest, picks: Sequence[Sorted], sizes: Sequence[int], count: int) -> (
+        tuple[Ints, Array]):
+    """Choices ``(count, n_groups)`` nearest to rest first, and their distances in steps."""
+    if len(picks) == 1:
+        return np.arange(count)[:, None], _steps(rest, picks[0].gap[:count])
+    choice = _mixed_radix(sizes, count)
+    gap = np.zeros(len(choice))
+    for g, p in enumerate(picks):
+        gap += p.gap[choice[:, g]]
+    steps = _steps(rest, gap)
+    order, steps = _in_steps(steps)
+    return choice[order], steps
+
+
 def taken(p: Picks, which: Ints) -> Picks:
     """Some of the branches, in the given order."""
     return Picks(p.choice[which], p.index[which], p.steps[which], p.alive[which],
                  p.margin[which], p.meets[which], p.count, p.cut)
+
+
+def placed(p: Picks, where: Ints, others: Picks) -> Picks:
+    """The same with ``others`` at some of the places."""
+    choice, index, steps = p.choice.copy(), p.index.copy(), p.steps.copy()
+    alive, margin, meets = p.alive.copy(), p.margin.copy(), p.meets.copy()
+    choice[where], index[where], steps[where] = others.choice, others.index, others.steps
+    alive[where], margin[where], meets[where] = others.alive, others.margin, others.meets
+    return Picks(choice, index, steps, alive, margin, meets, p.count, p.cut)
 
 
 def _only_base(base_alive: NDArray[np.bool_]) -> Picks:
@@ -256,76 +293,3 @@ def _poses(picks: Sequence[Sorted], index: Ints) -> Array:
             columns.append(np.broadcast_to(mine, (len(mine), len(index))) if mine.shape[1] == 1
                            else mine[:, index[:, g]])
     return np.concatenate(columns).T if columns else np.zeros((len(index), 0))
-
-
-def assembled(rest: Rest, picks: Sequence[Sorted], mixed: Picks, base: Mapping[int, Array],
-              frames: int) -> Array:
-    """``(n_branches, n_frames, n_joints, dim)`` in the rig's frame, NaN without a pose.
-
-    Written in blocks that stay in the cache; a joint's places come as rows of their own.
-    """
-    b = len(mixed.index)
-    if len(picks) == 1 and frames == 1 and b > MANY:
-        rows = len(picks[0].rows.codes)
-        plain = replace(mixed, index=np.arange(rows)[:, None], alive=np.ones((rows, 1), dtype=bool))
-        # Whole poses are put in order much faster than the places of one joint after another.
-        unsorted = _assembled(rest, picks, plain, base, 1)
-        return unsorted.take(mixed.index[:, 0], axis=0)
-    return _assembled(rest, picks, mixed, base, frames)
-
-
-def _assembled(rest: Rest, picks: Sequence[Sorted], mixed: Picks, base: Mapping[int, Array],
-               frames: int) -> Array:
-    eqs = rest.equations
-    b, width = len(mixed.index), eqs.n * eqs.dim
-    out = np.empty((b, frames, eqs.n, eqs.dim))
-    rows_step = max(1, min(b, CELLS // max(frames, 1)))
-    frames_step = max(1, min(frames, CELLS))
-    sources = [(j, place, -1) for j, place in base.items()]
-    sources += [(j, place, g) for g, p in enumerate(picks)
-                for j, place in zip(p.rows.group.joints, p.rows.places, strict=True)]
-    order = [mixed.index[:, g].copy() for g in range(len(picks))]
-    block = np.full((width, rows_step, frames_step), np.nan)
-    for r in range(0, b, rows_step):
-        for f in range(0, frames, frames_step):
-            here = out[r:r + rows_step, f:f + frames_step]
-            part = block[:, :here.shape[0], :here.shape[1]]
-            for j, place, g in sources:
-                _gather(part[j * eqs.dim:(j + 1) * eqs.dim], place,
-                        order[g][r:r + rows_step] if g >= 0 else None,
-                        slice(f, f + frames_step))
-            _outward(part, here.reshape(*here.shape[:2], width), eqs.scale,
-                     np.tile(eqs.origin, eqs.n))
-    if not mixed.alive.all():
-        out[~mixed.alive] = np.nan
-    return out
-
-
-def _gather(part: Array, place: Array, which: Ints | None, frames: slice) -> None:
-    """One joint's places of some rows and frames."""
-    mine = place[:, :, frames] if place.shape[2] > 1 else place
-    if which is None or mine.shape[1] == 1:
-        part[...] = mine
-    elif mine.shape[2] == 1 and _in_a_row(which):
-        part[...] = mine[:, which[0]:which[0] + len(which)]
-    elif mine.shape[2] == 1:
-        for axis in range(len(part)):
-            np.take(mine[axis, :, 0], which, out=part[axis, :, 0], mode="clip")
-        part[:, :, 1:] = part[:, :, :1]
-    else:
-        part[...] = mine[:, which] if len(which) < mine.shape[1] or len(which) > 1 else mine
-
-
-def _in_a_row(which: Ints) -> bool:
-    return bool((np.diff(which) == 1).all()) and len(which) > 0
-
-
-def _outward(part: Array, here: Array, scale: float, origin: Array) -> None:
-    """From ``(width, rows, frames)`` scaled to ``(rows, frames, width)`` in the rig's frame."""
-    turned = part.transpose(1, 2, 0)
-    if scale == 1.0:
-        here[...] = turned
-    else:
-        np.multiply(turned, scale, out=here)
-    if origin.any():
-        here += origin

@@ -72,5 +72,5 @@ def _blocks(context: Context, group: Group | None, clock: Clock) -> Iterator[Sor
 
 
 def _rows(cells: Cells) -> Rows:
-    return Rows(cells.group, cells.codes, cells.places, cells.alive, cells.margin, cells.values,
+    return Rows(cells.group, cells.signs, cells.places, cells.alive, cells.margin, cells.values,
                 found=cells.found, turning=cells.turning)

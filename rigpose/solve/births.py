@@ -87,7 +87,7 @@ def _together(a: Rows, b: Rows) -> Rows:
 
     moved = [p.moved(rows=n) for p in b.passes]
     return replace(
-        a, codes=np.concatenate([a.codes, b.codes]),
+        a, signs=np.concatenate([a.codes, b.codes]),
         places=[both(x, y) for x, y in zip(a.places, b.places, strict=True)],
         alive=np.concatenate([a.alive, b.alive]), margin=np.concatenate([a.margin, b.margin]),
         values={v: both(a.values[v], b.values[v]) for v in a.values},

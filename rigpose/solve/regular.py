@@ -114,7 +114,7 @@ def shown_margin(context: Context, rows: Rows, clock: Clock) -> Array:
     """The margin to tell of a group's rows ``(B, F)``: where surplus lengths hold the joints better
     than those that place them, it is that of all."""
     joints = np.array(rows.group.joints, dtype=np.intp)
-    if not len(rows.codes) or not may_hold(context, len(joints)):
+    if not len(rows.alive) or not may_hold(context, len(joints)):
         return rows.margin
     few = len(joints) * context.plan.eqs.dim <= FEW and rows.alive.size <= MANY
     with np.errstate(invalid="ignore"):

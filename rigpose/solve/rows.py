@@ -8,7 +8,7 @@ the plan: what one does depends on earlier ones only.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from itertools import pairwise
 
@@ -22,6 +22,7 @@ from rigpose.solve.deadcentre import Pass, classify
 from rigpose.solve.plan import Group
 from rigpose.solve.screen import Screen
 from rigpose.solve.search import Cells, Context, search
+from rigpose.solve.tree import Tree
 
 Mask = NDArray[np.bool_]
 Codes = NDArray[np.int16]
@@ -31,19 +32,26 @@ CELLS = 1 << 15
 
 @dataclass
 class Rows:
-    """Motions of one group: ``codes (B, bits)`` at the first frame, ``places`` for each of the
-    group's joints ``(2, B or 1, F)``, ``alive`` and ``margin`` ``(B, F)``; ``values`` that were
-    read off on the way ``(B or 1, F)``."""
+    """Motions of one group: ``signs (B, bits)`` at the first frame, ``places`` for each of the
+    group's joints ``(2, B or 1, F)``, both maybe as a tree; ``alive`` and ``margin`` ``(B, F)``;
+    ``values`` that were read off on the way ``(B or 1, F)``."""
 
     group: Group
-    codes: Codes
-    places: list[Array]
+    signs: Codes | Tree
+    places: Sequence[Array]
     alive: Mask
     margin: Array
     values: dict[int, Array] = field(default_factory=dict)
     passes: list[Pass] = field(default_factory=list)
     found: Found = Found.COMPLETE
     turning: frozenset[tuple[int, tuple[str, ...]]] = frozenset()
+
+    @property
+    def codes(self) -> Codes:
+        """The signs of every choice ``(B, bits)``."""
+        if isinstance(self.signs, Tree):
+            self.signs = self.signs.codes()
+        return self.signs
 
     def take(self, which: NDArray[np.intp]) -> Rows:
         """Some of the rows."""

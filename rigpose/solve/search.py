@@ -6,6 +6,7 @@ centre are run again with error bounds carried along, and what rounding has left
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
 from functools import cached_property
 from typing import Any
@@ -22,19 +23,23 @@ from rigpose.solve.polish import polish
 from rigpose.solve.rest import Rest
 from rigpose.solve.run import Ways, run_steps
 from rigpose.solve.table import Inputs, Table
+from rigpose.solve.tree import Tree, tree_of
 
 Mask = NDArray[np.bool_]
+MANY = 1 << 11
+"""Branches of one frame above which they are kept as the tree that they grew in."""
 
 
 @dataclass
 class Cells:
-    """Poses of one group: ``codes (B, bits)`` tells the branches, ``places`` holds for every
-    joint of the group ``(2, B or 1, F)``, ``alive`` and ``margin`` are ``(B, F)``; ``sines``
-    are the squared sines of every choice ``(B or 1, F)``; ``values`` those read off on the way."""
+    """Poses of one group: ``signs (B, bits)`` tell the branches, ``places`` holds for every
+    joint of the group ``(2, B or 1, F)``; both may be a tree. ``alive`` and ``margin`` are
+    ``(B, F)``; ``sines`` are the squared sines of every choice ``(B or 1, F)``; ``values`` those
+    read off on the way."""
 
     group: Group
-    codes: NDArray[np.int16]
-    places: list[Array]
+    signs: NDArray[np.int16] | Tree
+    places: Sequence[Array]
     alive: Mask
     margin: Array
     sines: list[Array]
@@ -43,9 +48,16 @@ class Cells:
     turning: frozenset[tuple[int, tuple[str, ...]]] = frozenset()
 
     @property
+    def codes(self) -> NDArray[np.int16]:
+        """The signs of every choice ``(B, bits)``."""
+        if isinstance(self.signs, Tree):
+            self.signs = self.signs.codes()
+        return self.signs
+
+    @property
     def branches(self) -> int:
         """How many."""
-        return len(self.codes)
+        return len(self.alive)
 
 
 @dataclass(frozen=True)
@@ -100,7 +112,7 @@ def group_table(base: Table, rows: int | None) -> Table:
                   guess=base.guess, budget=base.budget)
     table.points, table.values = dict(base.points), dict(base.values)
     table.level_of, table.bounds = dict(base.level_of), dict(base.bounds)
-    table.bound_level = dict(base.bound_level)
+    table.bound_level, table.made = dict(base.bound_level), dict(base.made)
     table.alive, table.margin = base.alive, base.margin
     table.killer, table.turning = base.killer, set(base.turning)
     table.heights_wanted = base.heights_wanted
@@ -113,7 +125,6 @@ def cells_of(group: Group, table: Table) -> Cells:
     """What a run has found."""
     frames = table.inputs.frames
     shape = (table.branches, frames)
-    codes = [np.broadcast_to(table.spread(c, level, 0), shape[:1]) for c, level in table.codes]
     alive = np.ones(shape, dtype=bool) if table.alive is None else table.alive
     margin = np.ones(shape) if table.margin is None else table.margin
     missing = [j for j in group.joints if j not in table.points]
@@ -121,10 +132,16 @@ def cells_of(group: Group, table: Table) -> Cells:
         nothing = np.full((table.eqs.dim, table.branches, frames), np.nan)
         for j in missing:
             table.put(j, nothing)
+    signs: NDArray[np.int16] | Tree
+    places: Sequence[Array]
+    if frames == 1 and table.branches > MANY:
+        signs = places = tree_of(table, group.joints)
+    else:
+        codes = [np.broadcast_to(table.spread(c, level, 0), shape[:1]) for c, level in table.codes]
+        signs = np.array(codes, dtype=np.int16).reshape(len(codes), table.branches).T
+        places = [table.point(j) for j in group.joints]
     return Cells(
-        group,
-        np.array(codes, dtype=np.int16).reshape(len(codes), table.branches).T,
-        [table.point(j) for j in group.joints],
+        group, signs, places,
         np.broadcast_to(alive, shape), np.broadcast_to(margin, shape),
         table.sines, table.found, {v: table.value(v) for v in table.values},
         frozenset(table.turning),

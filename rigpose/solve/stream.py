@@ -21,16 +21,19 @@ from rigpose.solve.table import Inputs, Table
 LONG = 64
 """Choices one after another from which on rounding is looked for."""
 BLOCK = 1 << 14
+WIDE = 1 << 19
+"""Branches of a block where all of them are held anyway."""
 
 
-def stream_cells(context: Context, group: Group, inputs: Inputs) -> Iterator[Cells]:
+def stream_cells(context: Context, group: Group, inputs: Inputs, block: int = BLOCK) -> (
+        Iterator[Cells]):
     """Blocks of branches, in the order of placing. ``inputs`` hold one frame.
 
     From the first block in which a crossing comes close to a dead centre on, error bounds are
     carried along and what rounding has left is polished.
     """
     seen = 0
-    for table in _tables(context, group, inputs, False):
+    for table in _tables(context, group, inputs, False, block):
         if table.flagged is not None and table.flagged.any():
             break
         yield cells_of(group, table)
@@ -38,48 +41,58 @@ def stream_cells(context: Context, group: Group, inputs: Inputs) -> Iterator[Cel
     else:
         return
     base = base_table(context, inputs, True)
-    for k, table in enumerate(_tables(context, group, inputs, True)):
+    for k, table in enumerate(_tables(context, group, inputs, True, block)):
         if k >= seen:
             cells = cells_of(group, table)
             polish(context.rest, context.plan, cells, base, inputs)
             yield cells
 
 
-def _tables(context: Context, group: Group, inputs: Inputs, careful: bool) -> Iterator[Table]:
+def _tables(context: Context, group: Group, inputs: Inputs, careful: bool, block: int) -> (
+        Iterator[Table]):
     base = base_table(context, inputs, True) if careful else shared_base(context, inputs)
     base.heights_wanted = False  # a single frame passes no dead centre
     if base.alive is not None and not base.alive.any():
         return
-    for table in _split(context, group, group_table(base, None), 0):
+    # A point of a branch takes as many numbers as the rig has dimensions, and some on the way.
+    a_branch = 16 * context.plan.eqs.dim * max(context.plan.points, 1)
+    block = max(1, min(block, int(context.budget.bytes // a_branch)))
+    for table in _split(context, group, group_table(base, None), block):
         if base.flagged is not None:
             table.flagged = base.flagged
         yield table
 
 
-def _split(context: Context, group: Group, table: Table, start: int) -> Iterator[Table]:
+def _split(context: Context, group: Group, table: Table, block: int) -> Iterator[Table]:
+    """Tables with all branches, none much larger than a block: depth-first over their parts."""
     offset = len(context.plan.base)
-    # A point of a branch takes as many numbers as the rig has dimensions, and some on the way.
-    a_branch = 16 * context.plan.eqs.dim * max(context.plan.points, 1)
-    block = max(1, min(BLOCK, int(context.budget.bytes // a_branch)))
-    for k in range(start, len(group.steps)):
-        run_steps(group.steps[k:k + 1], table, None, offset + k)
-        if table.branches == 0:
-            if table.turning or table.flagged is not None:
-                # Nothing is left, but what turns freely is to be told, and what died close to a
-                # dead centre is to be looked at again.
-                yield table
-            return
-        if table.branches > block and k + 1 < len(group.steps):
-            for a in range(0, table.branches, block):
-                yield from _split(context, group, part_of(table, a, a + block), k + 1)
-            return
-    yield table
+    waiting = [(table, 0, 0)]  # with the step to run next and the first branch still to take
+    while waiting:
+        table, start, first = waiting.pop()
+        if table.branches > block:
+            if first + block < table.branches:
+                waiting.append((table, start, first + block))
+            table = part_of(table, first, first + block)
+        for k in range(start, len(group.steps)):
+            run_steps(group.steps[k:k + 1], table, None, offset + k)
+            if table.branches == 0:
+                break
+            if table.branches > block and k + 1 < len(group.steps):
+                waiting.append((table, k + 1, 0))
+                break
+        else:
+            yield table
+            continue
+        if table.branches == 0 and (table.turning or table.flagged is not None):
+            # Nothing is left, but what turns freely is to be told, and what died close to a
+            # dead centre is to be looked at again.
+            yield table
 
 
 def part_of(table: Table, start: int, stop: int) -> Table:
     """Some of a table's branches, as a table of its own."""
     part = copy(table)
-    for name in ("points", "values", "level_of", "bounds", "bound_level"):
+    for name in ("points", "values", "level_of", "bounds", "bound_level", "made"):
         setattr(part, name, dict(getattr(table, name)))
     for name in ("maps", "codes", "sines", "sine_bounds"):
         setattr(part, name, list(getattr(table, name)))
@@ -91,9 +104,9 @@ def all_cells(context: Context, group: Group, inputs: Inputs, most: int) -> tupl
     """The branches of one frame as one value, at most about ``most``; whether that cut it short."""
     pieces: list[Cells] = []
     total, end = 0, monotonic() + context.budget.seconds
-    for cells in stream_cells(context, group, inputs):
+    for cells in stream_cells(context, group, inputs, max(BLOCK, min(most, WIDE))):
         pieces.append(cells)
-        total += len(cells.codes)
+        total += cells.branches
         if total > most or monotonic() > end:
             return joined(pieces), True
     whole = joined(pieces) if pieces else _none(group, context.plan.eqs.dim)
@@ -119,7 +132,7 @@ def joined(pieces: list[Cells]) -> Cells:
     first = pieces[0]
 
     def whole(arrays: list[Any], axis: int) -> Any:
-        wide = [np.broadcast_to(a, (*a.shape[:axis], len(c.codes), *a.shape[axis + 1:]))
+        wide = [np.broadcast_to(a, (*a.shape[:axis], c.branches, *a.shape[axis + 1:]))
                 for a, c in zip(arrays, pieces, strict=True)]
         return np.concatenate(wide, axis=axis)
 

@@ -57,6 +57,7 @@ class Table:
     points: dict[Point, Array] = field(default_factory=dict)
     values: dict[int, Array] = field(default_factory=dict)
     level_of: dict[Point | tuple[str, int], int] = field(default_factory=dict)
+    made: dict[Point, tuple[Array, int]] = field(default_factory=dict)
     bounds: dict[Point, Array | float] = field(default_factory=dict)
     bound_level: dict[Point, int] = field(default_factory=dict)
     maps: list[Ints] = field(default_factory=list)
@@ -105,6 +106,8 @@ class Table:
         """Store a point made at today's level."""
         self.points[p] = array
         self.level_of[p] = self.level
+        if self.inputs.frames == 1:
+            self.made[p] = array, self.level
         if self.careful:
             self.bounds[p] = bound
             self.bound_level[p] = self.level

@@ -1,0 +1,142 @@
+"""Whole poses of one frame from the rows of groups.
+
+Each joint has its places side by side, taken from the nodes of its own level in the order of the
+branches; bends are measured once a node and taken along in the same way.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rigpose.model.bends import Bend, Signs, bends_of, joints_of, side_of
+from rigpose.model.equations import Array, Equations, Ints
+from rigpose.motion.product import Picks, Sorted
+from rigpose.solve.rest import Rest
+from rigpose.solve.tree import Tree
+
+BLOCK = 1 << 18
+"""Poses gathered in one go."""
+NODES = 1 << 13
+"""Nodes whose bends are measured in one go: what is made on the way stays in the cache."""
+FEW = 1 << 12
+"""Poses up to which the coordinates of each are laid side by side."""
+
+
+@dataclass(frozen=True)
+class Level:
+    """What is settled at one level of a group's tree: ``joints`` with their places ``(nodes,
+    dim)`` in the rig's frame and ``bends`` with their signs ``(nodes,)``, all by number;
+    ``before``: for each node the one it grew from."""
+
+    joints: list[tuple[int, Array]]
+    bends: list[tuple[int, Signs]]
+    before: Ints | None
+
+
+class Gathering:
+    """Poses of one frame by the rows that they are made of. ``base`` are places ``(dim, 1, 1)`` of
+    joints that hang on what is known."""
+
+    def __init__(self, rest: Rest, picks: Sequence[Sorted], base: Mapping[int, Array]) -> None:
+        self.eqs = eqs = rest.equations
+        self.base = {j: place[:, :, 0] for j, place in base.items() if j < eqs.n}
+        inside = {j for p in picks for j in p.rows.group.joints}
+        self.others = sorted(set(range(eqs.n)) - inside)
+        tree = picks[0].rows.places if len(picks) == 1 else None
+        self.bends = bends_of(eqs.rig) if isinstance(tree, Tree) else ()
+        self.levels = [list(_levels(eqs, p, self.base, self.bends)) for p in picks]
+
+    def poses(self, mixed: Picks) -> tuple[Array, Signs | None]:
+        """``(n_branches, 1, n_joints, dim)`` in the rig's frame, and the bends where they come
+        cheap ``(n_branches, n_bends)``, else None."""
+        eqs, count = self.eqs, len(mixed.index)
+        out = np.empty((eqs.n, count, eqs.dim))
+        for j in self.others:
+            place = self.base.get(j)
+            out[j] = np.nan if place is None else _outward(eqs, place)
+        signs = np.empty((len(self.bends), count), dtype=np.int8)
+        for start in range(0, count, BLOCK):
+            part = slice(start, start + BLOCK)
+            for g, levels in enumerate(self.levels):
+                _fill(out[:, part], signs[:, part], levels, mixed.index[part, g])
+        if not mixed.alive.all():
+            out[:, ~mixed.alive[:, 0]] = np.nan
+            signs[:, ~mixed.alive[:, 0]] = -2
+        poses = out.transpose(1, 0, 2)[:, None]
+        if count <= FEW:
+            poses = np.ascontiguousarray(poses)
+        return poses, signs.T if self.bends else None
+
+
+def _fill(out: Array, signs: Signs, levels: Sequence[Level], index: Ints) -> None:
+    """A block of poses, from the level placed last to the first."""
+    for level in levels:
+        for joint, places in level.joints:
+            _take(places, index, out[joint])
+        for bend, sides in level.bends:
+            _take(sides, index, signs[bend])
+        if level.before is not None:
+            index = level.before.take(index)
+
+
+def _take(values: NDArray[np.generic], index: Ints, out: NDArray[np.generic]) -> None:
+    if len(values) == 1:
+        out[:] = values[0]
+    else:
+        np.take(values, index, axis=0, out=out, mode="clip")
+
+
+def _outward(eqs: Equations, place: Array) -> Array:
+    """Places ``(nodes, dim)`` in the rig's frame, from ``(dim, nodes)`` in the equations'."""
+    out = np.empty(place.shape[::-1])
+    np.multiply(place.T, eqs.scale, out=out)
+    if eqs.origin.any():
+        out += eqs.origin
+    return out
+
+
+def _levels(eqs: Equations, pick: Sorted, base: Mapping[int, Array],
+            bends: Sequence[Bend]) -> Iterator[Level]:
+    """From the level placed last down to the first."""
+    joints, places = pick.rows.group.joints, pick.rows.places
+    if not isinstance(places, Tree):
+        own = [p[:, :, 0] for p in places]
+        yield Level([(j, _outward(eqs, p)) for j, p in zip(joints, own, strict=True)], [], None)
+        return
+    own = [p[:, :, 0] for p in places.nodes]
+    sides = _sides(eqs, places, dict(zip(joints, own, strict=True)), base, bends)
+    for level in range(places.last, -1, -1):
+        mine = [k for k, settled in enumerate(places.levels) if settled == level]
+        yield Level([(joints[k], _outward(eqs, own[k])) for k in mine],
+                    [(k, sign) for k, (settled, sign) in enumerate(sides) if settled == level],
+                    places.maps[level - 1] if level else None)
+
+
+def _sides(eqs: Equations, tree: Tree, own: Mapping[int, Array], base: Mapping[int, Array],
+           bends: Sequence[Bend]) -> list[tuple[int, Signs]]:
+    """For each bend the level from which on it is settled, and its sign at the nodes there."""
+    level_of = dict(zip(own, tree.levels, strict=True))
+    out = []
+    for bend in bends:
+        joints = joints_of(eqs.rig, bend)
+        level = max((level_of.get(j, 0) for j in joints), default=0)
+        sources = {j: (own[j], tree.between(level_of[j], level)) if j in own else (base[j], None)
+                   for j in joints}
+        sign = np.empty(tree.size(level), dtype=np.int8)
+        for start in range(0, len(sign), NODES):
+            part = slice(start, start + NODES)
+            sign[part] = side_of(eqs.rig, {j: _part(*source, part)
+                                           for j, source in sources.items()}, bend)
+        out.append((level, sign))
+    return out
+
+
+def _part(places: Array, index: Ints | None, part: slice) -> Array:
+    """Some nodes' places ``(dim, m)``, or ``(dim, 1)`` where all have the same."""
+    if places.shape[1] == 1:
+        return places
+    return places[:, part] if index is None else places.take(index[part], axis=1)
