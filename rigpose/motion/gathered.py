@@ -29,10 +29,10 @@ FEW = 1 << 12
 @dataclass(frozen=True)
 class Level:
     """What is settled at one level of a group's tree: ``joints`` with their places ``(nodes,
-    dim)`` in the rig's frame and ``bends`` with their signs ``(nodes,)``, all by number;
-    ``before``: for each node the one it grew from."""
+    dim)`` in the rig's frame, or several with theirs ``(k, nodes, dim)``, and ``bends`` with their
+    signs ``(nodes,)``, all by number; ``before``: for each node the one it grew from."""
 
-    joints: list[tuple[int, Array]]
+    joints: list[tuple[int | Ints, Array]]
     bends: list[tuple[int, Signs]]
     before: Ints | None
 
@@ -76,7 +76,10 @@ def _fill(out: Array, signs: Signs, levels: Sequence[Level], index: Ints) -> Non
     """A block of poses, from the level placed last to the first."""
     for level in levels:
         for joint, places in level.joints:
-            _take(places, index, out[joint])
+            if isinstance(joint, int):
+                _take(places, index, out[joint])
+            else:
+                out[joint] = places.take(index, axis=1)
         for bend, sides in level.bends:
             _take(sides, index, signs[bend])
         if level.before is not None:
@@ -104,8 +107,12 @@ def _levels(eqs: Equations, pick: Sorted, base: Mapping[int, Array],
     """From the level placed last down to the first."""
     joints, places = pick.rows.group.joints, pick.rows.places
     if not isinstance(places, Tree):
-        own = [p[:, :, 0] for p in places]
-        yield Level([(j, _outward(eqs, p)) for j, p in zip(joints, own, strict=True)], [], None)
+        together = np.empty((len(joints), len(pick.rows.alive), eqs.dim))
+        for k, place in enumerate(places):
+            together[k] = place[:, :, 0].T
+        together *= eqs.scale
+        together += eqs.origin
+        yield Level([(np.array(joints, dtype=np.intp), together)], [], None)
         return
     own = [p[:, :, 0] for p in places.nodes]
     sides = _sides(eqs, places, dict(zip(joints, own, strict=True)), base, bends)

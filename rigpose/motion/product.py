@@ -24,6 +24,8 @@ MEET = 1e-9
 PLACE = 2e-7
 """At a dead centre places are known to the square root of rounding; nearer ones are one pose."""
 SAME = 1e-10
+FEW = 32
+"""Joints looked at in one go."""
 MANY = 1 << 14
 """Branches of one frame above which they are put in order as whole poses."""
 
@@ -174,22 +176,35 @@ def _gaps(rest: Rest, rows: Rows) -> Array:
     """Squared distances to rest ``(B,)``, summed over the group's joints, at the first pose."""
     if not len(rows.alive):
         return np.zeros(0)
-    single = rows.alive.shape[1] == 1
+    joints = rows.group.joints
     if isinstance(rows.places, Tree):
-        return rows.places.total(lambda k, place: _squared(rest, rows.group.joints[k], place))
+        return rows.places.total(lambda k, place: _squared(rest.scaled[joints[k]], place))
+    if rows.alive.shape[1] == 1:
+        return _gaps_of_one(rest, rows)
     first = np.argmax(rows.alive, axis=1)
     each = np.arange(len(first))
     total = np.zeros(len(first))
-    for j, place in zip(rows.group.joints, rows.places, strict=True):
+    for j, place in zip(joints, rows.places, strict=True):
         at = np.minimum(first, place.shape[2] - 1)
-        mine = place[:, :, 0] if single else place[:, each if place.shape[1] > 1 else 0, at]
-        total += _squared(rest, j, mine)
+        total += _squared(rest.scaled[j], place[:, each if place.shape[1] > 1 else 0, at])
     return total
 
 
-def _squared(rest: Rest, joint: int, places: Array) -> Array:
-    """Squared distances of places ``(dim, m)`` from a joint's own at rest."""
-    gap = places - rest.scaled[joint][:, None]
+def _gaps_of_one(rest: Rest, rows: Rows) -> Array:
+    """The same of a single frame, a few joints at a time."""
+    b, joints = len(rows.alive), rows.group.joints
+    total = np.zeros(b)
+    for start in range(0, len(joints), FEW):
+        few = [p[:, :, 0] for p in rows.places[start:start + FEW]]
+        wide = [p if p.shape[1] == b else np.broadcast_to(p, (len(p), b)) for p in few]
+        total += _squared(rest.scaled[list(joints[start:start + FEW])].ravel(),
+                          np.concatenate(wide))
+    return total
+
+
+def _squared(here: Array, places: Array) -> Array:
+    """Squared distances ``(m,)`` of places ``(k, m)`` from ``(k,)``."""
+    gap = places - here[:, None]
     gap *= gap
     total: Array = gap.sum(axis=0)
     return total
