@@ -6,19 +6,21 @@ answers go through it before they are called right.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import lru_cache
 from itertools import combinations
 
 import numpy as np
 
-from rigpose.model.equations import Array
-from rigpose.model.rig import Bone, Coordinates, Limit, Pair, Plane, Plate, Rail, Ram, Rig
+from rigpose.model.equations import Array, Ints
+from rigpose.model.rig import Limit, Pair, Plane, Plate, Rail, Ram, Rig
 from rigpose.model.torsion import torsion
 
 POSES = 1 << 11
 """Poses measured in one go: few enough to stay in the cache."""
+CELLS = 1 << 15
+"""Parts times poses measured in one go."""
 
 
 @dataclass(frozen=True)
@@ -78,9 +80,9 @@ def judge(rig: Rig, positions: Array, size: float) -> Verdict:
     """Measure poses ``(..., n, dim)`` in the rig's frame; NaN poses give NaN columns."""
     lead = positions.shape[:-2]
     flat = positions.reshape(-1, *positions.shape[-2:])
-    measured: list[Bone | Plate | Rail | Plane] = [*rig.bones, *rig.plates, *rig.rails,
-                                                   *rig.planes]
-    names = tuple(p.name for p in measured)
+    flat_plates = rig.plates if rig.dim == 2 else ()
+    others: list[Plate | Rail | Plane] = [*rig.plates[len(flat_plates):], *rig.rails, *rig.planes]
+    names = tuple(p.name for p in (*rig.bones, *flat_plates, *others))
     over_names = tuple(p.name for p in _ranged(rig))
     broken, over = np.empty((len(names), len(flat))), np.empty((len(over_names), len(flat)))
     largest = np.zeros(len(flat))
@@ -88,7 +90,10 @@ def judge(rig: Rig, positions: Array, size: float) -> Verdict:
         which = slice(start, start + POSES)
         # Joints and coordinates lead, so that every measure runs along the poses without gaps.
         x = np.ascontiguousarray(flat[which].transpose(1, 2, 0))
-        for k, part in enumerate(measured):
+        _bones(rig, x, broken[:len(rig.bones), which])
+        if flat_plates:
+            _plates(rig, x, broken[len(rig.bones):len(names) - len(others), which])
+        for k, part in enumerate(others, len(names) - len(others)):
             broken[k, which] = _departure(rig, x, part)
         for k, limited in enumerate(_ranged(rig)):
             over[k, which] = _passing(rig, x, limited)
@@ -105,19 +110,81 @@ def _ranged(rig: Rig) -> list[Ram | Rail | Limit]:
     return [*ranged, *rig.limits]
 
 
-def _departure(rig: Rig, x: Array, part: Bone | Plate | Rail | Plane) -> Array:
-    """How far one part is off, ``(m,)``, in places ``(n, dim, m)``."""
+def _blocks(parts: int, poses: int) -> Iterator[slice]:
+    """Parts cut so that a block has about `CELLS` cells."""
+    step = max(1, CELLS // max(poses, 1))
+    return (slice(start, start + step) for start in range(0, parts, step))
+
+
+def _bones(rig: Rig, x: Array, out: Array) -> None:
+    """How far all bones are off ``(bones, m)``, in places ``(n, dim, m)``."""
+    ends, length = _bone_table(rig)
+    for some in _blocks(len(ends), x.shape[2]):
+        gap = x[ends[some, 1]] - x[ends[some, 0]]
+        out[some] = np.abs(_long(gap.transpose(1, 0, 2)) - length[some, None])
+
+
+@lru_cache(maxsize=8)
+def _bone_table(rig: Rig) -> tuple[Ints, Array]:
+    """All bones' joints ``(bones, 2)`` and lengths."""
+    ends = np.array([rig.index[j] for b in rig.bones for j in b.ends], dtype=np.intp)
+    return ends.reshape(-1, 2), np.array([b.length for b in rig.bones])
+
+
+def _plates(rig: Rig, x: Array, out: Array) -> None:
+    """How far all plates of the plane are off ``(plates, m)``: the largest distance of a joint
+    from where the plate's two farthest joints carry it, and of these two from their own distance;
+    a mirrored plate is far off."""
+    for rows, joints, far, shape in _plate_table(rig):
+        row = np.arange(len(rows))
+        w = shape[row, far[:, 1]] - shape[row, far[:, 0]]
+        long = np.hypot(w[:, 0], w[:, 1])
+        v = (shape - shape[row, far[:, 0]][:, None]) / (long**2)[:, None, None]
+        along = (v * w[:, None]).sum(axis=2)
+        across = w[:, None, 0] * v[..., 1] - w[:, None, 1] * v[..., 0]
+        first, last = joints[row, far[:, 0]], joints[row, far[:, 1]]
+        for some in _blocks(len(rows), x.shape[2]):
+            start = x[first[some]]
+            e = (x[last[some]] - start).transpose(1, 0, 2)
+            worst = np.abs(_long(e) - long[some, None])
+            for k in range(shape.shape[1]):
+                gap = (x[joints[some, k]] - start).transpose(1, 0, 2)
+                a, b = along[some, k, None], across[some, k, None]
+                np.maximum(worst, _long(np.stack([gap[0] - a * e[0] + b * e[1],
+                                                  gap[1] - b * e[0] - a * e[1]])), out=worst)
+            out[rows[some]] = worst
+
+
+@lru_cache(maxsize=8)
+def _plate_table(rig: Rig) -> list[tuple[Ints, Ints, Ints, Array]]:
+    """Plates with equally many joints: which they are ``(m,)``, their joints ``(m, k)``, the two
+    of them farthest apart ``(m, 2)`` and their shapes ``(m, k, 2)``."""
+    counts = np.array([len(p.joints) for p in rig.plates], dtype=np.intp)
+    table = []
+    for k in np.unique(counts):
+        rows = np.flatnonzero(counts == k)
+        some = [rig.plates[r] for r in rows]
+        joints = np.array([[rig.index[j] for j in p.joints] for p in some], dtype=np.intp)
+        shape = np.array([p.shape for p in some])
+        pairs = np.array(list(combinations(range(int(k)), 2)), dtype=np.intp)
+        longest, far = np.full(len(rows), -1.0), np.zeros((len(rows), 2), dtype=np.intp)
+        for pair in pairs:
+            gap = np.linalg.norm(shape[:, pair[1]] - shape[:, pair[0]], axis=1)
+            far[gap > longest] = pair
+            longest = np.maximum(longest, gap)
+        table.append((rows, joints, far, shape))
+    return table
+
+
+def _departure(rig: Rig, x: Array, part: Plate | Rail | Plane) -> Array:
+    """How far one part is off, ``(m,)``, in places ``(n, dim, m)``; a plate in space."""
     if isinstance(part, Plane):
         normal, through = np.array(part.normal), np.array(part.through)
         gaps = [np.abs(normal @ (x[rig.index[j]] - through[:, None])) for j in part.joints]
         worst: Array = np.max(gaps, axis=0)
         return worst
-    if isinstance(part, Bone):
-        a, b = (x[rig.index[j]] for j in part.ends)
-        off: Array = np.abs(_long(b - a) - part.length)
-        return off
     if isinstance(part, Plate):
-        return _plate([x[rig.index[j]] for j in part.joints], part.shape)
+        return _pairs([x[rig.index[j]] for j in part.joints], np.array(part.shape))
     through, direction = _rail_line(rig, x, part)
     w = x[rig.index[part.joint]] - through
     off = _long(w - (w * direction).sum(axis=0) * direction)
@@ -136,36 +203,6 @@ def _long(v: Array) -> Array:
     for more in v[1:]:
         long += more * more
     return np.sqrt(long, out=long)
-
-
-def _plate(p: Sequence[Array], places: tuple[Coordinates, ...]) -> Array:
-    """The largest distance ``(m,)`` of a joint from where the plate's two farthest joints carry
-    it, and of these two from their own distance; a mirrored plate is far off."""
-    shape = np.array(places)
-    if shape.shape[1] != 2:
-        return _pairs(p, shape)
-    i, j = _farthest(places)
-    e, w = p[j] - p[i], shape[j] - shape[i]
-    long = float(np.hypot(*w))
-    worst: Array = np.abs(_long(e) - long)
-    for k in range(len(p)):
-        if k not in (i, j):
-            v = (shape[k] - shape[i]) / long**2
-            along, across = float(v @ w), float(w[0] * v[1] - w[1] * v[0])
-            gap = p[k] - p[i]
-            gap[0] -= along * e[0] - across * e[1]
-            gap[1] -= across * e[0] + along * e[1]
-            np.maximum(worst, _long(gap), out=worst)
-    return worst
-
-
-@lru_cache(maxsize=1024)
-def _farthest(places: tuple[Coordinates, ...]) -> tuple[int, int]:
-    """The two joints of a plate that lie farthest apart."""
-    shape = np.array(places)
-    gap = np.linalg.norm(shape[:, None] - shape[None], axis=-1)
-    i, j = np.unravel_index(int(np.argmax(gap)), gap.shape)
-    return int(i), int(j)
 
 
 def _pairs(p: Sequence[Array], shape: Array) -> Array:

@@ -7,11 +7,11 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
+from rigpose.model.alike import bodies_of
 from rigpose.model.equations import (
     GROUND,
     Angles,
     Array,
-    Body,
     Distances,
     Equations,
     Fences,
@@ -24,10 +24,9 @@ from rigpose.model.rig import Bone, Drive, Limit, Ram, Rig
 
 def _frame(rig: Rig) -> tuple[float, Array, Array]:
     """Scale, origin and the scaled places (NaN where unknown)."""
-    at = np.full((len(rig.joints), rig.dim), np.nan)
-    for k, joint in enumerate(rig.joints):
-        if joint.at is not None:
-            at[k] = joint.at
+    nowhere = (np.nan,) * rig.dim
+    at = np.array([nowhere if j.at is None else j.at for j in rig.joints],
+                  dtype=np.float64).reshape(len(rig.joints), rig.dim)
     known = at[~np.isnan(at[:, 0])]
     lengths = [b.length for b in rig.bones] or [1.0]
     extent = float(np.linalg.norm(np.ptp(known, axis=0))) if len(known) else 0.0
@@ -53,7 +52,8 @@ def _distances(rig: Rig, scale: float, value: dict[str, int]) -> Distances:
     nb = len(rig.bones)
     return Distances(
         names=tuple(p.name for p in parts),
-        ends=_ints([(at[p.ends[0]], at[p.ends[1]]) for p in parts], 2),
+        ends=np.fromiter((at[j] for p in parts for j in p.ends), np.intp,
+                         2 * len(parts)).reshape(-1, 2),
         length=np.array([b.length / scale for b in rig.bones] + [np.nan] * len(rig.rams)),
         value=np.array([-1] * nb + [value[r.name] for r in rig.rams], dtype=np.intp),
         play=np.array([b.play / scale for b in rig.bones] + [0.0] * len(rig.rams)),
@@ -163,16 +163,11 @@ def lower(rig: Rig) -> Equations:
     for row, tie in enumerate(rig.ties):
         for name, factor in tie.sum:
             ties[row, number[name]] += factor / unit[number[name]]
-    bodies = tuple(
-        Body(p.name, np.array([rig.index[j] for j in p.joints], dtype=np.intp),
-             np.array(p.shape) / scale)
-        for p in rig.plates
-    )
     return Equations(
         rig=rig, scale=scale, origin=origin, at=at,
         pinned=np.array([j.pin for j in rig.joints], dtype=bool),
         distances=_distances(rig, scale, number),
-        bodies=bodies,
+        bodies=bodies_of(rig.plates, dict(rig.index), scale),
         lines=_lines(rig, scale, origin, number),
         angles=_angles(rig, number),
         fences=_fences(rig.limits, dict(rig.index)),

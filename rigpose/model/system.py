@@ -14,7 +14,8 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
-from rigpose.model.equations import GROUND, Array, Body, Equations, Ints
+from rigpose.model.alike import affine_rows, base_ends
+from rigpose.model.equations import GROUND, Array, Equations, Ints
 from rigpose.model.gauges import gauge_gradients, measure
 from rigpose.model.spacerows import (
     BodyRows,
@@ -52,31 +53,19 @@ class System:
     def dist_rows(self) -> Ints:
         """Distance rows in force: all bones, and the rams whose length is known."""
         d = self.eqs.distances
-        return np.array(
-            [k for k, v in enumerate(d.value)
-             if (v < 0 or int(v) in self.drives) and d.names[k] not in self.without],
-            dtype=np.intp,
-        )
+        held = d.value < 0
+        if self.drives:
+            held |= np.isin(d.value, np.array(sorted(self.drives)))
+        if self.without:
+            held &= np.array([name not in self.without for name in d.names], dtype=bool)
+        return np.flatnonzero(held)
 
     @cached_property
     def _affine(self) -> tuple[Ints, Array, tuple[str, ...]]:
         """Joints (a, b, c) and weights (u, v) with c = a + u (b - a) + v perp(b - a)."""
-        joints: list[tuple[int, int, int]] = []
-        weights: list[tuple[float, float]] = []
-        names: list[str] = []
-        for body in self.eqs.bodies:
-            a, b = body.base
-            e = body.shape[b] - body.shape[a]
-            for k, c in enumerate(body.joints):
-                if k in (a, b):
-                    continue
-                w = body.shape[k] - body.shape[a]
-                scale = float(e @ e)
-                joints.append((int(body.joints[a]), int(body.joints[b]), int(c)))
-                weights.append((float(w @ e) / scale, float(e[0] * w[1] - e[1] * w[0]) / scale))
-                names.append(body.name)
-        return (np.array(joints, dtype=np.intp).reshape(-1, 3),
-                np.array(weights).reshape(-1, 2), tuple(names))
+        joints, weights = affine_rows(self.eqs.bodies)
+        names = tuple(b.name for b in self.eqs.bodies for _ in range(len(b.joints) - 2))
+        return joints, weights, names
 
     @cached_property
     def space(self) -> BodyRows:
@@ -88,11 +77,7 @@ class System:
         if self.eqs.dim == 3:
             return self.space.ends, self.space.length, self.space.names[0]
 
-        def base(b: Body) -> tuple[int, int]:
-            return int(b.joints[b.base[0]]), int(b.joints[b.base[1]])
-
-        ends = np.array([base(b) for b in self.eqs.bodies], dtype=np.intp).reshape(-1, 2)
-        length = np.array([b.distance(*base(b)) for b in self.eqs.bodies])
+        ends, length = base_ends(self.eqs.bodies)
         return ends, length, tuple(b.name for b in self.eqs.bodies)
 
     @cached_property
