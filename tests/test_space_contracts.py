@@ -153,8 +153,6 @@ def cases() -> Iterator[object]:
         marks = []
         if name in LARGE or (name in SHOTS and how in ("scaled", "mirrored")):
             marks.append(pytest.mark.slow)
-        if (name, how) == ("lamplighter", "axes changed about"):
-            marks.append(pytest.mark.xfail(reason="its hand is off by 1e-8 of the size"))
         yield pytest.param(name, how, marks=marks)
 
 

@@ -1,17 +1,27 @@
 """Blocks of several joints: Newton's method from many seeded real starts, all at once.
 
 What it finds is real and complete only with probability: the set is marked so. Starts are drawn
-until a whole round brings nothing new; a block of which one solution was seen just once draws on.
+until whole rounds bring nothing new; a block of which one solution was seen just once draws on.
 """
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+
 import numpy as np
+from numpy.typing import NDArray
 
 from rigpose.ground.words import Found, weaker
 from rigpose.model.equations import Array, Ints
+from rigpose.solve.continua import free_poses
+from rigpose.solve.descent import POLISHING, margins, newton, polished
+from rigpose.solve.ownrows import OwnRows, own_rows
 from rigpose.solve.plan import Cluster
+from rigpose.solve.starts import starts
 from rigpose.solve.table import Table
+
+Mask = NDArray[np.bool_]
 
 ROUND = 512
 LEAST_ROUNDS = 4
@@ -20,143 +30,188 @@ QUIET_ROUNDS = 3
 LONE_ROUNDS = 10
 """Rounds for which a solution that was seen only once keeps the search going."""
 UNKNOWNS = 8192
-PATIENCE, CLOSING = 12, 0.1
-STEPS = 40
 SAME = 1e-6
+HOLD = 1e-13
+"""Rows hold to this once polished: some hundred roundings of the size."""
+LOOSE = 1e-3
+"""A solution of the chosen rows that is off by more in the others is none of theirs."""
+FOLLOWING = 12
 
 
-def _columns(step: Cluster, dim: int) -> Ints:
-    return (np.array(step.joints)[:, None] * dim + np.arange(dim)).ravel()
+@dataclass(frozen=True)
+class Block:
+    """A block with what it hangs on: poses ``x (B, k, dim)`` of the joints that it touches, known
+    ``values (B, v)`` and targets ``goal (B, k, dim)``."""
+
+    step: Cluster
+    own: OwnRows
+    x: Array
+    values: Array
+    goal: Array
+    reach: float
+    slack: float
+    wished: bool
+
+    def settled(self, place: Array, owner: Ints, steps: int = POLISHING) -> (
+            tuple[Array, Mask]):
+        """Poses ``(N, k, dim)`` of branches ``owner (N,)`` polished, and which hold their rows.
+
+        Where given numbers contradict each other, or the rig's own do, the chosen rows hold and
+        the others are off by no more than slack.
+        """
+        own, v, g = self.own, self.values[owner], self.goal[owner]
+        place, size = polished(own, place, v, g, own.agreed, steps)
+        good: Mask = size < HOLD
+        some = np.flatnonzero(~good & np.isfinite(size))
+        if len(some) and (self.wished or len(own.agreed) < len(own.rows)):
+            rough, size = polished(own, place[some], v[some], g[some], own.choice, steps)
+            off = np.abs(own.residual(rough, v[some], g[some])).max(axis=1)
+            fine = (size < HOLD) & (off < max(self.slack, 1e-11) * self.reach * 4)
+            place[some[fine]], good[some[fine]] = rough[fine], True
+        return place, good
+
+    def margin(self, place: Array, owner: Ints) -> Array:
+        """The margins ``(N,)`` of poses of branches."""
+        return margins(self.own, place, self.values[owner], self.goal[owner], self.own.agreed)
 
 
-def _surroundings(step: Cluster, table: Table) -> tuple[Array, Array, Array]:
-    """Poses ``(B, n, 2)`` with the placed joints in, values ``(B, v)``, targets ``(B, n, 2)``."""
-    eqs = table.eqs
-    b = table.branches
-    x = np.repeat(eqs.at[None], b, axis=0)
+def _block(step: Cluster, table: Table) -> Block:
+    own, eqs, b = own_rows(step), table.eqs, table.branches
+    x = np.repeat(eqs.at[own.keep][None], b, axis=0)
+    at = {int(j): k for k, j in enumerate(own.keep)}
     for j in step.around:
-        x[:, j] = np.broadcast_to(table.point(j)[:, :, 0], (eqs.dim, b)).T
+        x[:, at[j]] = np.broadcast_to(table.point(j)[:, :, 0], (eqs.dim, b)).T
     values = np.full((b, len(eqs.values)), np.nan)
     for v in step.system.drives:
         values[:, v] = table.value(v)[..., 0]
     goal = np.zeros_like(x)
     for (j, axis), given in table.inputs.targets.items():
-        goal[:, j, axis] = given[0]
-    return x, values, goal
+        if j in at:
+            goal[:, at[j], axis] = given[0]
+    wished = own.wished or bool(table.inputs.targets)
+    return Block(step, own, x, values, goal, table.reach, table.slack, wished)
 
 
-def newton(
-    step: Cluster, x: Array, values: Array, goal: Array, steps: int = STEPS
-) -> tuple[Array, Array]:
-    """Newton from poses ``(N, n, 2)``; returns the poses and their largest residuals ``(N,)``."""
-    columns, square = _columns(step, step.system.eqs.dim), np.array(step.square)
-    x = x.copy()
-    flat = x.reshape(len(x), -1)
-    active = np.arange(len(x))
-    size = np.full(len(x), np.inf)
-    for turn in range(steps):
-        r, jac = step.system.both(x[active], values[active], goal[active])
-        r = r[:, square]
-        size[active] = np.abs(r).max(axis=1)
-        going = np.isfinite(size[active]) & (size[active] > 1e-15) & (size[active] < 1e6)
-        if turn >= PATIENCE:
-            # Starts that wander are given up; others lie nearer to what they would find.
-            going &= size[active] < CLOSING
-        active, r = active[going], r[going]
-        if not len(active):
-            break
-        a = jac[going][:, square][:, :, columns]
-        try:
-            move = np.linalg.solve(a, -r[..., None])[..., 0]
-        except np.linalg.LinAlgError:
-            move = np.einsum("nmr,nr->nm", np.linalg.pinv(a, rcond=1e-10), -r)
-        # A step longer than the whole rig leaves the region in which the slopes mean anything.
-        long = np.abs(move).max(axis=1, keepdims=True)
-        move *= np.minimum(1.0, 1.0 / np.maximum(long, 1e-300))
-        flat[np.ix_(active, columns)] += move
-    r = step.system.residual(x, values, goal)
-    return x, np.nan_to_num(np.abs(r[:, np.array(step.square)]).max(axis=1), nan=np.inf)
+@dataclass
+class _Poses:
+    """The poses of one branch: places ``(joints, dim)``, how often each was seen, and the latest
+    round that brought a new one."""
+
+    known: list[Array] = field(default_factory=list)
+    seen: list[int] = field(default_factory=list)
+    latest: int = -1
+
+    def search_on(self, rounds: int) -> bool:
+        """Whether more starts are wanted after some rounds."""
+        lone = 1 in self.seen and rounds < LONE_ROUNDS
+        return rounds < LEAST_ROUNDS or rounds - 1 - self.latest < QUIET_ROUNDS or lone
 
 
-def _starts(step: Cluster, x: Array, reach: float, rng: np.random.Generator, n: int) -> Array:
-    """``(B * n, n_joints, 2)``: joints of the block thrown about the placed ones."""
-    b = len(x)
-    start = np.repeat(x, n, axis=0)
-    around = x[:, list(step.around)].mean(axis=1) if step.around else x.mean(axis=1)
-    places = rng.normal(size=(b * n, len(step.joints), x.shape[2])) * reach * 0.7
-    start[:, list(step.joints)] = places + np.repeat(around, n, axis=0)[:, None]
-    return start
-
-
-def _new_ones(known: list[Array], seen: list[int], found: Array, reach: float) -> int:
-    """Sort solutions into the known ones of a branch; returns how many were new."""
-    new = 0
-    for place in found:
-        for k, old in enumerate(known):
-            if np.abs(old - place).max() < SAME * reach:
-                seen[k] += 1
-                break
-        else:
-            known.append(place)
-            seen.append(1)
-            new += 1
-    return new
-
-
-def solve_block(step: Cluster, table: Table) -> list[Array]:
-    """For every branch the solutions ``(k, joints, 2)`` found."""
-    x, values, goal = _surroundings(step, table)
-    b, reach = len(x), table.reach
+def solve_block(block: Block, table: Table) -> list[Array]:
+    """For every branch the solutions ``(k, joints, dim)`` found."""
+    own, b = block.own, len(block.x)
     rng = np.random.default_rng(1789)
-    known: list[list[Array]] = [[] for _ in range(b)]
-    seen: list[list[int]] = [[] for _ in range(b)]
-    joints, rows = list(step.joints), np.array(step.rows)
-    per = max(32, min(ROUND, 40_000 // b, UNKNOWNS // (len(joints) * x.shape[2])))
-    quiet = 0
-    for turn in range(MOST_ROUNDS):
-        start = _starts(step, x, reach, rng, per)
-        if turn == 0:
-            start[::per] = x
-        v, g = np.repeat(values, per, axis=0), np.repeat(goal, per, axis=0)
-        with np.errstate(all="ignore"):
-            place, size = newton(step, start, v, g)
-            off = np.abs(step.system.residual(place, v, g)[:, rows]).max(axis=1)
-        good = (size < 1e-12) & (off < max(table.slack, 1e-11) * reach * 4)
-        new = 0
-        for k in range(b):
-            mine = place[k * per : (k + 1) * per][good[k * per : (k + 1) * per]][:, joints]
-            new += _new_ones(known[k], seen[k], mine, reach)
-        quiet = 0 if new else quiet + 1
-        once = any(1 in s for s in seen)
-        lone = once and turn + 1 < LONE_ROUNDS
-        if turn + 1 >= LEAST_ROUNDS and quiet >= QUIET_ROUNDS and not lone:
+    sets = [_Poses() for _ in range(b)]
+    done = 0
+    while done < MOST_ROUNDS:
+        branches = np.array([k for k, s in enumerate(sets) if s.search_on(done)], dtype=np.intp)
+        if not len(branches):
             break
+        per = max(32, min(ROUND, 40_000 // len(branches), UNKNOWNS // own.width))
+        # The least number of rounds is run in one go.
+        rounds = max(LEAST_ROUNDS - done, 1)
+        turn = np.repeat(np.arange(done, done + rounds), per * len(branches))
+        owner = np.tile(np.repeat(branches, per), rounds)
+        start = starts(own, block.x[owner], block.values[owner], block.reach, rng)
+        if done == 0:
+            start[: per * b : per] = block.x
+        with np.errstate(all="ignore"):
+            _sort_in(block, sets, *_near(block, start, owner, turn), table)
+        done += rounds
     table.found = weaker(table.found, Found.PROBABLY)
-    return [np.array(k).reshape(-1, len(joints), x.shape[2]) for k in known]
+    return [np.array(s.known).reshape(-1, len(own.inside), table.eqs.dim) for s in sets]
 
 
-def block_margin(step: Cluster, x: Array, values: Array, goal: Array) -> Array:
-    """``(N,)``: one over the largest movement of a joint per unit change of a row."""
-    dim = step.system.eqs.dim
-    _, jac = step.system.both(x, values, goal)
-    a = jac[:, np.array(step.square)][:, :, _columns(step, dim)]
-    known = np.isfinite(a).all(axis=(1, 2))
-    if not known.all():
-        # What the block hangs on is dead in some of these.
-        out = np.full(len(x), np.nan)
-        if known.any():
-            out[known] = block_margin(step, x[known], values[known], goal[known])
-        return out
-    move = np.linalg.pinv(a, rcond=1e-14)
-    n, w, m = move.shape
-    far = np.sqrt((move.reshape(n, w // dim, dim, m) ** 2).sum(axis=2)).max(axis=(1, 2))
-    margin: Array = np.minimum(1.0, 1.0 / np.maximum(far, 1.0))
-    return margin
+def _near(block: Block, start: Array, owner: Ints, turn: Ints) -> tuple[Array, Ints, Ints]:
+    """Poses near solutions, with their branches and rounds."""
+    own, values, goal = block.own, block.values, block.goal
+    place, near = newton(own, start, values[owner], goal[owner])
+    place, owner, turn = place[near], owner[near], turn[near]
+    off = np.abs(own.residual(place, values[owner], goal[owner])).max(axis=1, initial=0.0)
+    some = off < LOOSE * block.reach
+    return place[some], owner[some], turn[some]
+
+
+def _sort_in(block: Block, sets: Sequence[_Poses], place: Array, owner: Ints, turn: Ints,
+             table: Table) -> None:
+    """Count the solutions of some rounds; new ones that are poses apart become known."""
+    if not len(place):
+        return
+    inside, same = block.own.inside, SAME * block.reach
+    flat = place[:, inside].reshape(len(place), -1)
+    left: Mask = np.ones(len(place), dtype=bool)
+    for mine, poses in enumerate(sets):
+        for number, old in enumerate(poses.known):
+            hit = left & _alike(flat, owner, old.ravel(), mine, same)
+            poses.seen[number] += int(hit.sum())
+            left &= ~hit
+    # One of each kind is polished; those that are polished into one are one.
+    first, count = _kinds(flat, owner, left, same)
+    polished, good = _apart(block, place[first], owner[first], table)
+    for k in np.flatnonzero(good):
+        _add(sets[owner[first[k]]], polished[k, inside], int(count[k]), int(turn[first[k]]), same)
+
+
+def _alike(flat: Array, owner: Ints, one: Array, mine: int, same: float) -> Mask:
+    alike: Mask = (owner == mine) & (np.abs(flat - one).max(axis=1, initial=0) < same)
+    return alike
+
+
+def _kinds(flat: Array, owner: Ints, left: Mask, same: float) -> tuple[Ints, Ints]:
+    """The first of every kind of solution among those left, and how many there are of it."""
+    first, count = [], []
+    rest = np.flatnonzero(left)
+    while len(rest):
+        hit = _alike(flat[rest], owner[rest], flat[rest[0]], int(owner[rest[0]]), same)
+        first.append(rest[0])
+        count.append(int(hit.sum()))
+        rest = rest[~hit]
+    return np.array(first, dtype=np.intp), np.array(count, dtype=np.intp)
+
+
+def _add(poses: _Poses, place: Array, count: int, turn: int, same: float) -> None:
+    """A polished pose into its branch's set."""
+    for k, old in enumerate(poses.known):
+        if np.abs(old - place).max() < same:
+            poses.seen[k] += count
+            return
+    poses.known.append(place)
+    poses.seen.append(count)
+    poses.latest = max(poses.latest, turn)
+
+
+def _apart(block: Block, place: Array, owner: Ints, table: Table) -> tuple[Array, Mask]:
+    """The poses polished, and which hold and don't move freely; what moves freely is told."""
+    if not len(place):
+        return place, np.zeros(0, dtype=bool)
+    place, good = block.settled(place, owner)
+    which = np.flatnonzero(good)
+    place_, mine = place[which], owner[which]
+
+    def settle(tried: Array, pose: Ints) -> tuple[Array, Mask]:
+        return block.settled(tried, mine[pose])
+
+    free = free_poses(block.own, place_, block.values[mine], block.goal[mine], block.reach, settle)
+    for joint in set(free.values()):
+        table.turning.add((block.step.joints[joint], block.step.parts))
+    good[which[list(free)]] = False
+    return place, good
 
 
 def cluster_branches(step: Cluster, table: Table, number: int) -> None:
     """Every branch splits into the block's solutions; only for a single frame."""
-    found = solve_block(step, table)
+    block = _block(step, table)
+    found = solve_block(block, table)
     index = np.repeat(np.arange(table.branches), [len(k) for k in found])
     places = np.concatenate(found) if found else np.zeros((0, len(step.joints), table.eqs.dim))
     table.kill(np.array([[len(k) > 0] for k in found]), number)
@@ -171,28 +226,27 @@ def cluster_branches(step: Cluster, table: Table, number: int) -> None:
     for k, j in enumerate(step.joints):
         table.put(j, np.ascontiguousarray(places[:, k].T[:, :, None]), table.rounding * 100)
     if len(index):
-        _narrow(step, table, places)
+        x = block.x[index]
+        x[:, block.own.inside] = places
+        _narrow(block, table, x, index)
 
 
-def _narrow(step: Cluster, table: Table, places: Array) -> None:
-    x, values, goal = _surroundings(step, table)
-    x[:, list(step.joints)] = places
-    margin = block_margin(step, x, values, goal)[:, None]
+def _narrow(block: Block, table: Table, x: Array, owner: Ints) -> None:
+    margin = block.margin(x, owner)[:, None]
     table.sines.append(margin**2)
     table.narrow(margin)
 
 
 def cluster_follow(step: Cluster, table: Table, number: int) -> None:
-    """The block's pose that Newton reaches from the guess; only for a single frame."""
-    x, values, goal = _surroundings(step, table)
-    joints = list(step.joints)
+    """The block's pose that is reached from the guess; only for a single frame."""
     if table.guess is None:
         raise ValueError("a block of several joints is followed from a pose")
-    x[:, joints] = table.guess[:, joints]
+    block, joints = _block(step, table), list(step.joints)
+    x, owner = block.x.copy(), np.arange(len(block.x))
+    x[:, block.own.inside] = table.guess[:, joints]
     with np.errstate(all="ignore"):
-        place, size = newton(step, x, values, goal, 12)
-    good = size < 1e-12
+        place, good = block.settled(x, owner, FOLLOWING)
     table.kill(good[:, None], number)
-    for j in joints:
-        table.put(j, np.ascontiguousarray(place[:, j].T[:, :, None]), table.rounding * 100)
-    _narrow(step, table, place[:, joints])
+    for k, j in zip(block.own.inside, joints, strict=True):
+        table.put(j, np.ascontiguousarray(place[:, k].T[:, :, None]), table.rounding * 100)
+    _narrow(block, table, place, owner)
