@@ -12,6 +12,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from rigpose.kernels.meet import Array, dot
 from rigpose.solve.growth import Locus
@@ -72,7 +73,21 @@ def _(step: Fit, table: Table, ways: Ways, number: int) -> None:
     # The volume that all unit normals span together: with three it is that of the junction.
     table.narrow(np.sqrt(np.clip(volume2, 0.0, 1.0)))
     good = (worst < NEAR * table.reach) & np.isfinite(move[0])
-    table.put(step.dst, np.where(good, x + move, x), table.bound(step.dst))
+    x = np.where(good, x + move, x)
+    table.put(step.dst, x, _bound(step, table, x, volume2, good) if table.careful else 0.0)
+
+
+def _bound(step: Fit, table: Table, x: Array, volume2: Array, good: NDArray[np.bool_]) -> (
+        Array | float):
+    """What the lengths show the place to be off by, where that is less than what was handed on:
+    bounds handed on grow by one over the margin at every step, however well all lengths hold."""
+    left = np.zeros((1, 1))
+    for circle in step.circles:
+        e = x - table.point(circle.centre)
+        left = np.maximum(left, np.abs(np.sqrt(dot(e, e)) - circle.radius.constant))
+    shown = (left + table.rounding) / np.sqrt(np.maximum(volume2, 1e-300))
+    before = table.bound(step.dst)
+    return np.where(good, np.minimum(shown, before), before)
 
 
 def _solved(a: list[list[Array]], b: list[Array]) -> tuple[Array, Array]:

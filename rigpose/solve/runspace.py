@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
 
 from rigpose.ground.tolerance import EPS
 from rigpose.kernels.meet import Array, Crossing, dot
@@ -17,7 +18,16 @@ from rigpose.kernels.space import (
 )
 from rigpose.solve.hanging import carried
 from rigpose.solve.plan import Circle, Hang, Hinge, Junction, Line, Point, Sheet
-from rigpose.solve.run import Ways, choose, execute, length_of, line_of, local_of, parents_bound
+from rigpose.solve.run import (
+    ONE_PLACE,
+    Ways,
+    choose,
+    execute,
+    length_of,
+    line_of,
+    local_of,
+    parents_bound,
+)
 from rigpose.solve.table import Table
 
 Rate = tuple[Array | float, Array | float, Array | float]
@@ -59,6 +69,8 @@ def _(step: Junction, table: Table, ways: Ways, number: int) -> None:
         _one_way(step, table, number, lines[0], sheets[0], sine)
         return
     crossing, rate = _two_ways(lines, sheets, spheres, sine)
+    if not lines:
+        crossing = _in_line(step, table, crossing, spheres, sheets)
     before = table.margin
     choose(step.dst, step.bit, crossing, table, ways, number, _points(step), lambda: rate)
     if step.fitted:
@@ -103,6 +115,64 @@ def _two_ways(lines: list[tuple[Array, Array]], sheets: list[tuple[Array, Array]
     share = area2 / (product * product)
     return crossing, (2.0 * r1 * (1.0 + lever) * share, r1 * (1.0 + lever),
                       16 * EPS * r1 * r1 * (1.0 + lever) * share)
+
+
+def _in_line(step: Junction, table: Table, crossing: Crossing,
+             spheres: list[tuple[Array, Array | float]],
+             sheets: list[tuple[Array, Array]]) -> Crossing:
+    """Where the surfaces have one axis in common they meet nowhere, in one point of it or in a
+    circle, on which the joint turns freely: that is told, and no pose is listed."""
+    (c1, r1), (c2, r2) = spheres[:2]
+    e = c2 - c1
+    room = ONE_PLACE * parents_bound(table, _points(step))
+    if sheets:
+        through, n = sheets[0]
+        off = dot(through - c1, n)
+        flat = cross3(n, e)
+        alike = np.sqrt(dot(flat, flat)) <= room
+        foot, rise2 = c1 + n * off, (r1 - off) * (r1 + off)
+        wrong = np.abs(r2 * r2 - rise2 - (dot(e, n) - off) ** 2) > room * (r1 + r2)
+    else:
+        c3, r3 = spheres[2]
+        f = c3 - c1
+        n = cross3(e, f)
+        long2 = np.maximum(dot(e, e), dot(f, f))
+        alike = dot(n, n) <= room * room * long2
+        foot, rise2, wrong = _ring(c1, r1, ((e, r2), (f, r3)), room)
+    if not alike.any():
+        return crossing
+    base, side, sine2, sine = crossing
+    if not table.careful:
+        # Looked at again with error bounds.
+        return base, side, np.where(alike, 0.0, sine2), np.where(alike, 0.0, sine)
+    free = alike & ~wrong & (rise2 > room * (r1 + room))
+    alive = free if table.alive is None else free & table.alive
+    if alive.any():
+        table.turning.add((step.dst, step.parts))
+    single = alike & ~wrong & ~free & (rise2 > -room * (r1 + room))
+    sine2 = np.where(alike, np.where(single, 0.0, -1.0), sine2)
+    return (np.where(single, foot, base), np.where(single, 0.0, side), sine2,
+            np.where(single, 0.0, np.where(alike, np.nan, sine)))
+
+
+def _ring(c1: Array, r1: Array | float, others: tuple[tuple[Array, Array | float], ...],
+          room: Array | float) -> tuple[Array, Array, NDArray[np.bool_]]:
+    """Spheres with centres in line: the middle of the circle in which they meet, the square of its
+    radius, and whether they don't agree on it."""
+    (e, r2), (f, r3) = others
+    # The centre farther from the first tells the middle; where both lie on it, any middle does.
+    far = dot(e, e) >= dot(f, f)
+    d, r = np.where(far, e, f), np.where(far, r2, r3)
+    d2 = dot(d, d)
+    one = d2 <= room * room
+    along = np.where(one, 0.0, 0.5 * (d2 + (r1 - r) * (r1 + r)) / np.where(one, 1.0, d2))
+    rise2 = (r1 - along * np.sqrt(d2)) * (r1 + along * np.sqrt(d2))
+    wrong = np.zeros(np.shape(rise2), dtype=bool)
+    for way, radius in others:
+        gap = way - d * along
+        off = dot(gap, gap) + rise2 - radius * radius
+        wrong = wrong | (np.abs(off) > room * (r1 + radius + np.sqrt(dot(gap, gap))))
+    return c1 + d * along, rise2, wrong
 
 
 @execute.register

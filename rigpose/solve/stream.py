@@ -12,7 +12,7 @@ import numpy as np
 
 from rigpose.ground.words import Found, weaker
 from rigpose.solve.longchains import bring_back
-from rigpose.solve.plan import Check, Group
+from rigpose.solve.plan import Check, Fit, Group
 from rigpose.solve.polish import polish
 from rigpose.solve.run import run_steps
 from rigpose.solve.search import Cells, Context, base_table, cells_of, group_table, shared_base
@@ -44,7 +44,9 @@ def stream_cells(context: Context, group: Group, inputs: Inputs, block: int = BL
     for k, table in enumerate(_tables(context, group, inputs, True, block)):
         if k >= seen:
             cells = cells_of(group, table)
-            polish(context.rest, context.plan, cells, base, inputs)
+            # Corrected all at once, a long chain would take minutes.
+            correct = bring_back if group.bits > LONG else polish
+            correct(context.rest, context.plan, cells, base, inputs)
             yield cells
 
 
@@ -112,7 +114,8 @@ def all_cells(context: Context, group: Group, inputs: Inputs, most: int) -> tupl
     whole = joined(pieces) if pieces else _none(group, context.plan.eqs.dim)
     if group.bits > LONG:
         bring_back(context.rest, context.plan, whole, shared_base(context, inputs), inputs)
-        if any(isinstance(s, Check) for s in group.steps):
+        held = sum(isinstance(s, Fit) for s in group.steps)
+        if group.bits - held > LONG and any(isinstance(s, Check) for s in group.steps):
             # Rounding may have grown past what a check forgives: not a claim to make.
             doubt = Found.PROBABLY if whole.alive.any() else Found.SOME
             whole.found = weaker(whole.found, doubt)
