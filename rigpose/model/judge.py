@@ -226,8 +226,10 @@ def _turned_over(p: Sequence[Array], shape: Array) -> Array:
         return worst
     a, b, c, d = four
     own = float(np.linalg.det(shape[[b, c, d]] - shape[a]))
-    edges = np.stack([p[k] - p[a] for k in (b, c, d)])
-    volume = np.linalg.det(edges.transpose(2, 0, 1))
+    u, v, w = (p[k] - p[a] for k in (b, c, d))
+    # A determinant written out, so that poses that don't exist pass through as NaN.
+    volume = (u[0] * (v[1] * w[2] - v[2] * w[1]) + u[1] * (v[2] * w[0] - v[0] * w[2])
+              + u[2] * (v[0] * w[1] - v[1] * w[0]))
     size = float(np.linalg.norm(np.ptp(shape, axis=0)))
     mirrored: Array = np.where(volume * own < 0, size, worst)
     return mirrored
