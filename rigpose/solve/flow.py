@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from functools import singledispatch
+from collections.abc import Callable
+from typing import Any
 
 from rigpose.model.equations import Equations
 from rigpose.solve.plan import (
@@ -50,99 +51,73 @@ def _curve(curve: Circle | Line | Sheet) -> set[Point]:
     return {*curve.points, *(curve.moved or ())} | _heading(curve.heading)
 
 
-@singledispatch
-def reads(step: Step) -> set[Point]:
-    """Points that a step reads."""
+def _nothing(step: Step) -> set[Point]:
     return set()
 
 
-@reads.register
-def _(step: Meet) -> set[Point]:
-    return _curve(step.first) | _curve(step.second)
+def _meet(step: Meet) -> set[Point]:
+    one, two = step.first, step.second
+    if type(one) is type(two) is Circle and one.radius.points is two.radius.points is None:
+        return {one.centre, two.centre}
+    return _curve(one) | _curve(two)
 
 
-@reads.register
-def _(step: Carry) -> set[Point]:
+def _carried(step: Carry | Hang) -> set[Point]:
     return {*step.placed, *_points(*step.local, *step.base)}
 
 
-@reads.register
-def _(step: Aim) -> set[Point]:
+def _aim(step: Aim) -> set[Point]:
     return {step.pivot, *_heading(step.heading),
             *_points(*step.local, step.pivot_local, *step.line)}
 
 
-@reads.register
-def _(step: Swing) -> set[Point]:
+def _swing(step: Swing) -> set[Point]:
     return {step.pivot, step.through, *_points(*step.local, step.pivot_local, *step.slot)}
 
 
-@reads.register
-def _(step: Slide) -> set[Point]:
-    return set(step.line)
-
-
-@reads.register
-def _(step: Seat) -> set[Point]:
-    return _points(*step.local)
-
-
-@reads.register
-def _(step: Shift) -> set[Point]:
-    return {step.point, step.minus, step.plus}
-
-
-@reads.register
-def _(step: Orient) -> set[Point]:
-    return {*_heading(step.heading), *_points(*step.local, *step.line)}
-
-
-@reads.register
-def _(step: Level) -> set[Point]:
-    return _points(*step.local, *step.pair)
-
-
-@reads.register
-def _(step: Junction) -> set[Point]:
-    return set[Point]().union(*(_curve(c) for c in step.curves))
-
-
-@reads.register
-def _(step: Fit) -> set[Point]:
-    return {step.dst, *(c.centre for c in step.circles)}
-
-
-@reads.register
-def _(step: Hang) -> set[Point]:
-    return {*step.placed, *_points(*step.local, *step.base)}
-
-
-@reads.register
-def _(step: Hinge) -> set[Point]:
+def _hinge(step: Hinge) -> set[Point]:
     start = set() if step.start is None else {step.start}
     return {*step.axis, *start, *_points(*step.local, *step.axis_local, step.pointer)}
 
 
-@reads.register
-def _(step: Check) -> set[Point]:
-    return set(step.points)
+_READS: dict[type[Step], Callable[[Any], set[Point]]] = {
+    Meet: _meet, Carry: _carried, Hang: _carried, Aim: _aim, Swing: _swing, Hinge: _hinge,
+    Slide: lambda step: set(step.line),
+    Seat: lambda step: _points(*step.local),
+    Shift: lambda step: {step.point, step.minus, step.plus},
+    Orient: lambda step: {*_heading(step.heading), *_points(*step.local, *step.line)},
+    Level: lambda step: _points(*step.local, *step.pair),
+    Junction: lambda step: set[Point]().union(*map(_curve, step.curves)),
+    Fit: lambda step: {step.dst, *(c.centre for c in step.circles)},
+    Check: lambda step: set(step.points),
+}
+
+
+def reads(step: Step) -> set[Point]:
+    """Points that a step reads."""
+    return _READS.get(type(step), _nothing)(step)
+
+
+_ONE = frozenset({Given, Meet, Junction, Fit, Slide, Shift})
+_SEVERAL = frozenset({Carry, Aim, Swing, Seat, Orient, Level, Hang, Hinge})
 
 
 def writes(step: Step) -> tuple[Point, ...]:
     """Points that a step writes."""
-    if isinstance(step, Cluster):
-        return step.joints
-    if isinstance(step, (Given, Meet, Junction, Fit, Slide, Shift)):
-        return (step.dst,)
-    if isinstance(step, (Carry, Aim, Swing, Seat, Orient, Level, Hang, Hinge)):
-        return step.dst
-    return ()
+    kind = type(step)
+    if kind in _ONE:
+        return (step.dst,)  # type: ignore[attr-defined]
+    if kind in _SEVERAL:
+        return step.dst  # type: ignore[attr-defined, no-any-return]
+    return step.joints if isinstance(step, Cluster) else ()
 
 
 def values_read(step: Step, eqs: Equations) -> set[int]:
     """Value numbers that a step reads."""
     found: set[int] = set()
-    if isinstance(step, (Meet, Junction)):
+    if isinstance(step, Meet) and type(step.first) is type(step.second) is Circle:
+        found = {step.first.radius.value, step.second.radius.value}
+    elif isinstance(step, (Meet, Junction)):
         curves = (step.first, step.second) if isinstance(step, Meet) else step.curves
         for curve in curves:
             found |= _curve_values(curve)
@@ -183,10 +158,13 @@ def value_written(step: Step) -> int:
     return step.value if isinstance(step, (Gauge, Tied)) else -1
 
 
+_TWO_WAY = frozenset({Meet, Junction, Swing, Level})
+
+
 def has_choice(step: Step) -> bool:
     """Whether a step has more than one way."""
-    two_way = (Meet, Junction, Swing, Level)
-    return isinstance(step, Cluster) or (isinstance(step, two_way) and step.bit >= 0)
+    kind = type(step)
+    return (kind in _TWO_WAY and step.bit >= 0) or kind is Cluster  # type: ignore[attr-defined]
 
 
 def alive_steps(steps: list[Step], joints: int) -> list[Step]:
@@ -195,6 +173,8 @@ def alive_steps(steps: list[Step], joints: int) -> list[Step]:
     A body's own frame may have choices that place nothing any more, because the ground placed
     those joints by other means; each would list every branch twice.
     """
+    if all(_is_root(step, joints) for step in steps):
+        return steps
     makers = {p: k for k, step in enumerate(steps) for p in writes(step)}
     keep = [k for k, step in enumerate(steps) if _is_root(step, joints)]
     alive = set(keep)
@@ -214,11 +194,12 @@ def alive_steps(steps: list[Step], joints: int) -> list[Step]:
 
 
 def _is_root(step: Step, joints: int) -> bool:
-    if isinstance(step, (Gauge, Tied)):
-        return True
+    kind = type(step)
+    if kind in _ONE:
+        return step.dst < joints  # type: ignore[attr-defined, no-any-return]
     if isinstance(step, Check):
         return not step.points or min(step.points) < joints
-    return any(p < joints for p in writes(step))
+    return kind is Gauge or kind is Tied or any(p < joints for p in writes(step))
 
 
 def _needs(step: Step) -> set[Point]:

@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import replace
+
+from msgspec.structs import replace
 
 from rigpose.model.equations import Equations
 from rigpose.solve.flow import has_choice, reads, value_written, values_read, writes
-from rigpose.solve.plan import Check, Cluster, Group, Junction, Level, Meet, Step, Swing
+from rigpose.solve.plan import Check, Cluster, Group, Step
 from rigpose.solve.values import joints_of_value
 
-Node = tuple[str, int]
+Node = int
+"""A point, or below zero a value: -1 less its number."""
 
 
 class _Sets:
@@ -20,34 +22,34 @@ class _Sets:
         self.parent: dict[Node, Node] = {}
 
     def find(self, x: Node) -> Node:
-        self.parent.setdefault(x, x)
-        while self.parent[x] != x:
-            self.parent[x] = self.parent[self.parent[x]]
-            x = self.parent[x]
+        parent = self.parent
+        above = parent.setdefault(x, x)
+        while above != x:
+            parent[x] = parent[above]
+            x = parent[x]
+            above = parent[x]
         return x
 
     def join(self, nodes: list[Node]) -> None:
-        roots = [self.find(x) for x in nodes]
-        for r in roots[1:]:
-            self.parent[r] = roots[0]
+        first = self.find(nodes[0])
+        for x in nodes[1:]:
+            self.parent[self.find(x)] = first
 
 
-def _nodes(step: Step, eqs: Equations) -> tuple[list[Node], list[Node]]:
-    """Nodes read and written."""
-    ins = [("p", p) for p in sorted(reads(step))]
-    ins += [("v", v) for v in sorted(values_read(step, eqs))]
-    outs = [("p", p) for p in writes(step)]
-    if value_written(step) >= 0:
-        outs.append(("v", value_written(step)))
-    return ins, outs
+def _read(step: Step, eqs: Equations) -> list[Node]:
+    return [*reads(step), *(-1 - v for v in values_read(step, eqs))]
 
 
-def _reads_fully(step: Step, eqs: Equations, ins: list[Node]) -> list[Node]:
+def _written(step: Step) -> list[Node]:
+    value = value_written(step)
+    return [*writes(step)] if value < 0 else [*writes(step), -1 - value]
+
+
+def _read_fully(step: Step, eqs: Equations) -> list[Node]:
+    ins = _read(step, eqs)
     if value_written(step) >= 0 and not values_read(step, eqs):
-        return ins + [("p", j) for j in joints_of_value(eqs, value_written(step))]
-    if isinstance(step, Cluster):
-        return ins + [("p", j) for j in step.around]
-    return ins
+        return ins + joints_of_value(eqs, value_written(step))
+    return [*ins, *step.around] if isinstance(step, Cluster) else ins
 
 
 def grouped(
@@ -58,37 +60,34 @@ def grouped(
     sets, many = _Sets(), set[Node]()
     owner: list[Node | None] = []
     for step in ordered:
-        ins, outs = _nodes(step, eqs)
-        touched = [x for x in _reads_fully(step, eqs, ins) if x in many]
-        if has_choice(step) or touched:
-            many.update(outs)
-            sets.join([*touched, *outs])
-            owner.append((touched + outs)[0])
+        touched = [x for x in _read_fully(step, eqs) if x in many]
+        if touched or has_choice(step):
+            touched += _written(step)
+            many.update(touched)
+            sets.join(touched)
+            owner.append(touched[0])
         else:
             owner.append(None)
-    base = tuple(s for s, o in zip(ordered, owner, strict=True) if o is None)
+    base: list[Step] = []
     members: dict[Node, list[Step]] = {}
     for step, node in zip(ordered, owner, strict=True):
-        if node is not None:
-            members.setdefault(sets.find(node), []).append(step)
-    return base, tuple(_group(eqs, m) for m in members.values())
+        (base if node is None else members.setdefault(sets.find(node), [])).append(step)
+    return tuple(base), tuple(_group(eqs, m) for m in members.values())
 
 
 def _interleave(eqs: Equations, steps: list[Step], checks: list[Check]) -> list[Step]:
     """Every check right after the step that completes it."""
-    born: dict[Node, int] = {}
-    for k, step in enumerate(steps):
-        born.update((("p", p), k) for p in writes(step))
-        if value_written(step) >= 0:
-            born["v", value_written(step)] = k
+    if not checks:
+        return steps
+    born = {x: k for k, step in enumerate(steps) for x in _written(step)}
     after: dict[int, list[Check]] = {}
     for check in checks:
-        last = max((born.get(x, -1) for x in _nodes(check, eqs)[0]), default=-1)
+        last = max((born.get(x, -1) for x in _read(check, eqs)), default=-1)
         after.setdefault(last, []).append(check)
     out: list[Step] = list(after.get(-1, []))
     for k, step in enumerate(steps):
         out.append(step)
-        out += after.get(k, [])
+        out += after.get(k, ())
     return out
 
 
@@ -96,7 +95,7 @@ def _group(eqs: Equations, steps: list[Step]) -> Group:
     numbered: list[Step] = []
     bits = 0
     for step in steps:
-        if isinstance(step, (Meet, Junction, Swing, Level, Cluster)) and has_choice(step):
+        if has_choice(step):
             numbered.append(replace(step, bit=bits))
             bits += 1
         else:

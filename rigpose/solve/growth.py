@@ -12,11 +12,13 @@ from collections.abc import Callable
 from dataclasses import dataclass, field
 from heapq import heappop, heappush
 from itertools import combinations
-from math import hypot
+from math import dist, hypot
+from operator import sub
 
 import numpy as np
 
 from rigpose.model.equations import GROUND, Array
+from rigpose.model.record import Record
 from rigpose.solve.net import Net, Solid
 from rigpose.solve.plan import (
     Aim,
@@ -44,8 +46,7 @@ PARALLEL = 1e-7
 """Curves that cross at less than this sine, at rest and close by, do not place a joint."""
 
 
-@dataclass(frozen=True)
-class Locus:
+class Locus(Record, frozen=True, eq=False):
     """A curve that a joint lies on, with the equation behind it, its unit normal in each of the
     poses (zeros where it has none) and the joint at its centre."""
 
@@ -185,14 +186,15 @@ class Growth:
             self.held[number].update(joints)
 
     def _arrived(self, joint: int) -> None:
-        net = self.net
-        for k, other in net.links[joint]:
-            self._link(k, joint, other)
-        for number in net.solids_on[joint]:
+        net, place = self.net, self.place
+        for k, other in net.links.get(joint, ()):
+            if other not in place:
+                self._link(k, joint, other)
+        for number in net.solids_on.get(joint, ()):
             self._touch(number, joint)
-        for k in net.rails_on[joint]:
+        for k in net.rails_on.get(joint, ()):
             self._rail(k)
-        for k in net.cranks_on[joint]:
+        for k in net.cranks_on.get(joint, ()):
             if int(net.eqs.angles.value[k]) in self.known:
                 self._push(0, k, "crank")
         if self.on_place is not None:
@@ -205,19 +207,19 @@ class Growth:
                 self._touch(number, j)
 
     def _link(self, k: int, joint: int, other: int) -> None:
-        d = self.net.eqs.distances
-        value = int(d.value[k])
-        if joint not in self.place or other in self.place or ("distance", k) in self.net.absorbed:
+        net, key = self.net, ("distance", k)
+        value = net.value[k]
+        if joint not in self.place or other in self.place or key in net.absorbed:
             return
         if value >= 0 and value not in self.known:
             return
-        radius = Length(value=value) if value >= 0 else Length(constant=float(d.length[k]))
-        self._circle(other, joint, radius, ("distance", k), d.names[k])
+        radius = Length(0.0, value) if value >= 0 else Length(net.radius[k])
+        self._circle(other, joint, radius, key, net.eqs.distances.names[k])
 
     def _circle(self, joint: int, centre: int, radius: Length, uses: Key, part: str) -> None:
         normals = []
         for pose in self.net.listed(self.poses):
-            away = [a - b for a, b in zip(pose[joint], pose[centre], strict=True)]
+            away = list(map(sub, pose[joint], pose[centre]))
             long = hypot(*away) or 1.0
             normals.append([a / long for a in away])
         self._offer(joint, Locus(Circle(self.place[centre], radius), uses, part, normals, centre))
@@ -235,7 +237,8 @@ class Growth:
         elif len(inside) == 1:
             for j in missing:
                 self._circle(j, joint, solid.length(joint, j), ("solid", number), solid.name)
-        for k in {k for j in solid.local for k in self.net.rails_on[j]}:
+        rails_on = self.net.rails_on
+        for k in {k for j in solid.local for k in rails_on.get(j, ())} if rails_on else ():
             self._try_swing(k)
 
     def _rail(self, k: int) -> None:
@@ -261,12 +264,13 @@ class Growth:
     def _offer(self, joint: int, locus: Locus) -> None:
         if joint in self.place:
             return
-        mine = self.loci[joint]
-        if any(x.uses == locus.uses for x in mine):
-            return
+        mine, uses = self.loci[joint], locus.uses
+        for x in mine:
+            if x.uses == uses:
+                return
         mine.append(locus)
-        if len(mine) >= self.net.eqs.dim:
-            self._push(1 if len(mine) > self.net.eqs.dim else 2, joint, "joint")
+        if len(mine) >= 2:
+            self._push(1 if len(mine) > 2 else 2, joint, "joint")
 
     # -- placing ------------------------------------------------------------------------------
 
@@ -275,8 +279,8 @@ class Growth:
             return
         loci = self.loci[joint]
         # A length that gives way places a joint only where nothing else does.
-        best = self._best_pair([x for x in loci if x.part not in self.surplus])
-        best = best or self._best_pair(loci)
+        some = [x for x in loci if x.part not in self.surplus] if self.surplus else loci
+        best = self._best_pair(some) or self._best_pair(loci)
         if best is None:
             return
         self._meet_at(joint, *best)
@@ -285,14 +289,15 @@ class Growth:
         """Place a joint where two curves meet."""
         self.used |= {first.uses, second.uses}
         for kind, number in (first.uses, second.uses):
-            self._hold(number if kind == "solid" else None, [joint])
-        curves = [c for c in (first.curve, second.curve) if not isinstance(c, Sheet)]
-        if isinstance(curves[0], Circle) and isinstance(curves[1], Line):
-            curves.reverse()
-        one_way = all(isinstance(c, Line) for c in curves)
+            if kind == "solid":
+                self.held[number].add(joint)
+        one, two = first.curve, second.curve
+        assert not isinstance(one, Sheet) and not isinstance(two, Sheet)  # they belong to space
+        if isinstance(one, Circle) and isinstance(two, Line):
+            one, two = two, one
         dst = joint if self.ground else self.new_point()
-        step = Meet(dst=dst, first=curves[0], second=curves[1],
-                    bit=-1 if one_way else 0, parts=(first.part, second.part))
+        step = Meet(dst, one, two, -1 if isinstance(two, Line) else 0,
+                    parts=(first.part, second.part))
         self._placed(joint, dst, step)
 
     def force(self) -> bool:
@@ -329,10 +334,11 @@ class Growth:
         """The pair that crosses best; the file's order decides between equals."""
         best, found = PARALLEL, None
         for a, b in combinations(loci, 2):
-            if a.uses[0] == b.uses[0] == "solid" and a.uses[1] == b.uses[1]:
+            if a.uses == b.uses and a.uses[0] == "solid":
                 continue
-            worth = max(abs(float(u[0] * v[1] - u[1] * v[0]))
-                        for u, v in zip(a.normals, b.normals, strict=True))
+            worth = 0.0
+            for (p, q), (r, s) in zip(a.normals, b.normals, strict=True):
+                worth = max(abs(float(p * s - q * r)), worth)
             if worth > best * (1 + 1e-6):
                 best, found = worth, (a, b)
                 if worth > 0.3:
@@ -344,9 +350,10 @@ class Growth:
         inside = [j for j in solid.local if j in self.place]
         if len(inside) > 12:
             inside = inside[:12]
+        poses = self.net.listed(self.poses)
         best, found = 1e-9, None
         for a, b in combinations(inside, 2):
-            gap = float(np.nanmax(np.linalg.norm(self.poses[:, a] - self.poses[:, b], axis=1)))
+            gap = max(dist(pose[a], pose[b]) for pose in poses)
             if gap > best * (1 + 1e-9):
                 best, found = gap, (a, b)
         return found

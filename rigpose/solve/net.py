@@ -3,16 +3,14 @@
 from __future__ import annotations
 
 from collections import defaultdict
-from dataclasses import dataclass
-
-import numpy as np
+from math import dist
 
 from rigpose.model.equations import GROUND, Array, Equations
+from rigpose.model.record import Record
 from rigpose.solve.plan import Length, Local, Step
 
 
-@dataclass(frozen=True)
-class Solid:
+class Solid(Record, frozen=True, eq=False):
     """A rigid body as the planner sees it: a plate, a bone, or a group solved in its own frame.
 
     local : joint to its place (numbers, or a point of the group's frame)
@@ -28,7 +26,7 @@ class Solid:
         """Between two of its joints."""
         a, b = self.local[i], self.local[j]
         if isinstance(a, tuple) and isinstance(b, tuple):
-            return Length(constant=float(np.linalg.norm(np.subtract(a, b))))
+            return Length(constant=dist(a, b))
         if isinstance(a, int) and isinstance(b, int):
             return Length(points=(a, b))
         raise TypeError("a body's places are all numbers or all points")
@@ -39,10 +37,14 @@ class Net:
 
     def __init__(self, eqs: Equations) -> None:
         self.eqs = eqs
+        d = eqs.distances
+        self.ends: list[list[int]] = d.ends.tolist()
+        self.value: list[int] = d.value.tolist()
+        self.radius: list[float] = d.length.tolist()
         self.links: dict[int, list[tuple[int, int]]] = defaultdict(list)
-        for k, (a, b) in enumerate(eqs.distances.ends):
-            self.links[int(a)].append((k, int(b)))
-            self.links[int(b)].append((k, int(a)))
+        for k, (a, b) in enumerate(self.ends):
+            self.links[a].append((k, b))
+            self.links[b].append((k, a))
         self.rails_on: dict[int, list[int]] = defaultdict(list)
         for k, joint in enumerate(eqs.lines.joint):
             for j in {int(joint), *map(int, eqs.lines.along[k])} - {GROUND}:
@@ -56,12 +58,11 @@ class Net:
         self.solids: list[Solid] = []
         self.solids_on: dict[int, list[int]] = defaultdict(list)
         for k, body in enumerate(eqs.bodies):
-            places = {int(j): tuple(map(float, p))
-                      for j, p in zip(body.joints, body.shape, strict=True)}
+            places = zip(body.joints.tolist(), map(tuple, body.shape.tolist()), strict=True)
             self.add(Solid(body.name, dict(places), frozenset({("body", k)})))
-        for k, (a, b) in enumerate(eqs.distances.ends):
+        for k, (a, b) in enumerate(self.ends if eqs.bodies else ()):
             # A bone inside a plate can only check the plate, never place a joint.
-            if set(self.solids_on[int(a)]) & set(self.solids_on[int(b)]):
+            if set(self.solids_on[a]) & set(self.solids_on[b]):
                 self.absorbed.add(("distance", k))
 
     def listed(self, poses: Array) -> list[list[list[float]]]:

@@ -48,6 +48,7 @@ class Planner:
     targets: frozenset[tuple[int, int]]
     poses: Array
     surplus: frozenset[str] = frozenset()
+    looks: Array = field(init=False)
     points: count[int] = field(init=False)
     net: Net = field(init=False)
     ground: Growth = field(init=False)
@@ -56,8 +57,11 @@ class Planner:
     def __post_init__(self) -> None:
         self.points = count(self.eqs.n)
         self.net = Net(self.eqs)
+        # A large rig's two poses are the same: one is looked at.
+        same = self.poses[0] is self.poses[1] or np.array_equal(self.poses[0], self.poses[1])
+        self.looks = self.poses[:1] if same else self.poses
         kind = Growth if self.eqs.dim == 2 else SpaceGrowth
-        self.ground = kind(self.net, self.poses, set(self.drives), self.points.__next__,
+        self.ground = kind(self.net, self.looks, set(self.drives), self.points.__next__,
                            targets=self.targets, surplus=self.surplus)
 
     def run(self) -> tuple[list[Step], tuple[int, ...]]:
@@ -154,7 +158,7 @@ class Planner:
         # Rigid groups have at least one more joint that two parts of them hold; look for one
         # candidate before growing, so that long chains stay cheap.
         kind = Growth if self.eqs.dim == 2 else SpaceGrowth
-        frame = kind(self.net, self.poses, set(self.ground.known), self.points.__next__,
+        frame = kind(self.net, self.looks, set(self.ground.known), self.points.__next__,
                      ground=False, surplus=self.surplus)
         frame.seat(number, solid)
         frame.run()
@@ -242,6 +246,8 @@ def _last_of_sets(rest: Rest, poses: Array) -> frozenset[str]:
 def _with_solids(planner: Planner, steps: list[Step]) -> list[Step]:
     """Put the steps that make a group's own frame before the first step that uses it."""
     makers = {p: solid for solid in planner.net.solids for s in solid.steps for p in writes(s)}
+    if not makers:
+        return steps
     done: set[int] = set()
     out: list[Step] = []
 
