@@ -72,7 +72,6 @@ def test_enough_rows_are_compared() -> None:
     assert sum(rows_agree(random_space_case(seed, 2, MOVING), seed) for seed in range(6)) > 6
 
 
-@pytest.mark.xfail(raises=RuntimeWarning, reason="a determinant of NaN is taken")
 def test_the_judge_measures_frames_without_a_pose_in_silence() -> None:
     found = swept(random_space_case(102, 3, MOVING), 102, COARSE)
     assert not (found.state == rp.State.MET).all()

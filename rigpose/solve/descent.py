@@ -26,11 +26,16 @@ NEAR = 1e-10
 POLISHING = 30
 CUT = 1e-9
 """Singular values below this part of the largest count as zero."""
+DEAD = 3e-8
+"""A pose whose smallest singular value is below this part of the largest is at a dead centre: it is
+known to the square root of rounding only, and so is its margin."""
 ALL_BUT = 1e-6
 """Those below this may be: normal equations tell no less."""
 DAMPING = 1e-15
 FINE = 1e-15
 """Residual that is rounding."""
+STUCK = 1e-8
+"""Last steps that are longer have stopped for want of rank, not for being there."""
 
 
 def _moved(a: Array, r: Array) -> Array:
@@ -109,43 +114,51 @@ def polished(own: OwnRows, x: Array, values: Array, goal: Array, rows: Ints,
     """Gauss-Newton on some rows from poses ``(N, k, dim)`` until their residual stops falling;
     the best poses on the way and their largest residuals ``(N,)``."""
     best, size = x.copy(), np.full(len(x), np.inf)
-    _fall(own, best, size, np.arange(len(x)), (values, goal), rows, _by_squares, steps)
+    long = _fall(own, best, size, np.arange(len(x)), (values, goal), rows, _by_squares, steps)
     # Normal equations square the condition: what they leave off is done without them.
-    rough = np.flatnonzero((size > FINE) & np.isfinite(size))
-    _fall(own, best, size, rough, (values, goal), rows, _shortest, steps)
+    rough = np.flatnonzero(((size > FINE) | (long > STUCK)) & np.isfinite(size))
+    if len(rough):
+        # A step along what is all but open may raise the residual before it falls again.
+        _fall(own, best, size, rough, (values, goal), rows, _shortest, steps, 3)
     return best, size
 
 
 def _fall(own: OwnRows, best: Array, size: Array, active: Ints, given: tuple[Array, Array],
-          rows: Ints, step: Callable[[Array, Array], Array], steps: int) -> None:
-    """Steps of some poses as long as their residual falls; keeps the best in place."""
+          rows: Ints, step: Callable[[Array, Array], Array], steps: int,
+          patience: int = 1) -> Array:
+    """Steps of some poses until their residual has not fallen for ``patience`` steps; keeps the
+    best in place, and tells how long the last steps were ``(N,)``."""
     flat, now = best.reshape(len(best), -1), best.reshape(len(best), -1).copy()
-    size[active] = np.inf
+    size[active], long, idle = np.inf, np.zeros(len(best)), np.zeros(len(best), dtype=np.intp)
     for _ in range(steps):
-        if not len(active):
-            return
         values, goal = given[0][active], given[1][active]
         r, a = own.both(now[active].reshape(-1, *best.shape[1:]), values, goal, rows)
         off = np.nan_to_num(np.abs(r).max(axis=1), nan=np.inf)
         falls = off < size[active]
         flat[active[falls]] = now[active[falls]]
         # Halving is what a step does at worst near a solution, a quarter of the residual.
-        going = (off < 0.7 * size[active]) & (off > 0)
+        idle[active] = np.where(off < 0.7 * size[active], 0, idle[active] + 1)
+        going = (idle[active] < patience) & (off > 0)
         size[active] = np.minimum(size[active], off)
         active = active[going]
-        now[np.ix_(active, own.columns)] += _cut(step(a[going], r[going]))
+        if not len(active):
+            break
+        move = _cut(step(a[going], r[going]))
+        long[active] = np.abs(move).max(axis=1)
+        now[np.ix_(active, own.columns)] += move
+    return long
 
 
 def margins(own: OwnRows, x: Array, values: Array, goal: Array, rows: Ints) -> Array:
     """``(N,)``: one over the largest movement of a joint per unit change of a row, cut at 1; 0
-    where the rows have lost their rank, NaN where what the block hangs on is unknown."""
+    at dead centres, NaN where what the block hangs on is unknown."""
     _, a = own.both(x, values, goal, rows)
     out = np.full(len(x), np.nan)
     known = np.isfinite(a).all(axis=(1, 2))
     if not known.any():
         return out
     u, s, vt = np.linalg.svd(a[known], full_matrices=False)
-    full = s[:, -1] >= CUT * s[:, 0]
+    full = s[:, -1] >= DEAD * s[:, 0]
     inverse = (vt.transpose(0, 2, 1) / np.maximum(s, 1e-300)[:, None]) @ u.transpose(0, 2, 1)
     dim = x.shape[2]
     each = inverse.reshape(len(inverse), -1, dim, inverse.shape[2])

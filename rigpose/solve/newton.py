@@ -31,6 +31,8 @@ LONE_ROUNDS = 10
 """Rounds for which a solution that was seen only once keeps the search going."""
 UNKNOWNS = 8192
 SAME = 1e-6
+CLOSE = 1e-4
+"""Poses at dead centres nearer than this part of the reach are one: they are known no better."""
 HOLD = 1e-13
 """Rows hold to this once polished: some hundred roundings of the size."""
 LOOSE = 1e-3
@@ -94,10 +96,11 @@ def _block(step: Cluster, table: Table) -> Block:
 
 @dataclass
 class _Poses:
-    """The poses of one branch: places ``(joints, dim)``, how often each was seen, and the latest
-    round that brought a new one."""
+    """The poses of one branch: places ``(joints, dim)``, which are at dead centres, how often each
+    was seen, and the latest round that brought a new one."""
 
     known: list[Array] = field(default_factory=list)
+    dead: list[bool] = field(default_factory=list)
     seen: list[int] = field(default_factory=list)
     latest: int = -1
 
@@ -158,8 +161,11 @@ def _sort_in(block: Block, sets: Sequence[_Poses], place: Array, owner: Ints, tu
     # One of each kind is polished; those that are polished into one are one.
     first, count = _kinds(flat, owner, left, same)
     polished, good = _apart(block, place[first], owner[first], table)
-    for k in np.flatnonzero(good):
-        _add(sets[owner[first[k]]], polished[k, inside], int(count[k]), int(turn[first[k]]), same)
+    first, count, polished = first[good], count[good], polished[good]
+    dead = block.margin(polished, owner[first]) == 0 if len(first) else first
+    for k, one in enumerate(first):
+        _add(sets[owner[one]], polished[k, inside], bool(dead[k]), int(count[k]), int(turn[one]),
+             block.reach)
 
 
 def _alike(flat: Array, owner: Ints, one: Array, mine: int, same: float) -> Mask:
@@ -179,13 +185,14 @@ def _kinds(flat: Array, owner: Ints, left: Mask, same: float) -> tuple[Ints, Int
     return np.array(first, dtype=np.intp), np.array(count, dtype=np.intp)
 
 
-def _add(poses: _Poses, place: Array, count: int, turn: int, same: float) -> None:
+def _add(poses: _Poses, place: Array, dead: bool, count: int, turn: int, reach: float) -> None:
     """A polished pose into its branch's set."""
     for k, old in enumerate(poses.known):
-        if np.abs(old - place).max() < same:
+        if np.abs(old - place).max() < (CLOSE if dead and poses.dead[k] else SAME) * reach:
             poses.seen[k] += count
             return
     poses.known.append(place)
+    poses.dead.append(dead)
     poses.seen.append(count)
     poses.latest = max(poses.latest, turn)
 

@@ -16,7 +16,8 @@ from rigpose.model.equations import Array, Body, Equations
 from rigpose.solve.ownrows import OwnRows
 
 ORDERS = 4
-"""Orders in which parts are thrown: which of two bones leads a joint differs between them."""
+"""Orders in which parts are thrown: which of two bones leads a joint differs between them, and in
+every second one bones come before bodies that hang on one joint."""
 WIDTH = 0.7
 """Joints that hang on nothing are thrown so far about the placed ones, as a part of the reach."""
 FLAT = 1e-9
@@ -65,11 +66,12 @@ def hung(own: OwnRows, x: Array, values: Array, reach: float, rng: np.random.Gen
 def orders(own: OwnRows) -> list[list[Throw]]:
     """Some orders in which the block's bodies and bones are thrown."""
     rng = np.random.default_rng(7)
-    return [_order(own, rng) for _ in range(ORDERS)]
+    return [_order(own, rng, k % 2 == 0) for k in range(ORDERS)]
 
 
-def _order(own: OwnRows, rng: np.random.Generator) -> list[Throw]:
-    """What is settled most comes first, then what hangs on a joint that stands."""
+def _order(own: OwnRows, rng: np.random.Generator, whole: bool) -> list[Throw]:
+    """What is settled most comes first, then what hangs on a joint that stands: bodies before
+    bones (``whole``), or bones before bodies."""
     eqs = own.system.eqs
     stands = np.ones(eqs.n, dtype=bool)
     stands[own.inside] = False
@@ -79,17 +81,18 @@ def _order(own: OwnRows, rng: np.random.Generator) -> list[Throw]:
     while True:
         bodies = [b for b in bodies if not stands[b.joints].all()]
         bones = [k for k in bones if not stands[eqs.distances.ends[k]].all()]
-        throw = _next(eqs, bodies, bones, stands)
+        throw = _next(eqs, bodies, bones, stands, whole)
         if throw is None:
             return order
         order.append(throw)
         stands[list(throw.dst)] = True
 
 
-def _next(eqs: Equations, bodies: list[Body], bones: list[int], stands: Array) -> Throw | None:
+def _next(eqs: Equations, bodies: list[Body], bones: list[int], stands: Array,
+          whole: bool) -> Throw | None:
     held = [int(stands[b.joints].sum()) for b in bodies]
     most = max(held, default=0)
-    if most >= 2:
+    if most >= (1 if whole else 2):
         return _thrown(bodies[held.index(most)], stands)
     for k in bones:
         a, b = map(int, eqs.distances.ends[k])
