@@ -112,9 +112,14 @@ def writes(step: Step) -> tuple[Point, ...]:
     return step.joints if isinstance(step, Cluster) else ()
 
 
+_WITHOUT_VALUES = frozenset({Given, Carry, Hang, Seat, Shift, Level, Fit, Swing, Cluster, Gauge})
+
+
 def values_read(step: Step, eqs: Equations) -> set[int]:
     """Value numbers that a step reads."""
     found: set[int] = set()
+    if not eqs.values or type(step) in _WITHOUT_VALUES:
+        return found
     if isinstance(step, Meet) and type(step.first) is type(step.second) is Circle:
         found = {step.first.radius.value, step.second.radius.value}
     elif isinstance(step, (Meet, Junction)):

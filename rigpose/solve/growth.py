@@ -13,7 +13,6 @@ from dataclasses import dataclass, field
 from heapq import heappop, heappush
 from itertools import combinations
 from math import dist, hypot
-from operator import sub
 
 import numpy as np
 
@@ -38,7 +37,7 @@ from rigpose.solve.plan import (
 )
 
 Key = tuple[str, int]
-Normals = Array | list[list[float]]
+Normals = Array | list[tuple[float, ...]]
 """A unit vector for each pose; plain numbers for circles, of which a large rig has very many."""
 APART = 1e-6
 """Centres farther apart than this part of the size, at rest or close by, are two."""
@@ -76,6 +75,10 @@ class Growth:
     held: dict[int, set[int]] = field(default_factory=lambda: defaultdict(set))
     on_place: Callable[[int], None] | None = None
     surplus: frozenset[str] = frozenset()
+    views: list[list[list[float]]] = field(init=False)
+
+    def __post_init__(self) -> None:
+        self.views = self.net.listed(self.poses)
 
     # -- starting -----------------------------------------------------------------------------
 
@@ -217,29 +220,31 @@ class Growth:
         self._circle(other, joint, radius, key, net.eqs.distances.names[k])
 
     def _circle(self, joint: int, centre: int, radius: Length, uses: Key, part: str) -> None:
-        normals = []
-        for pose in self.net.listed(self.poses):
-            away = list(map(sub, pose[joint], pose[centre]))
-            long = hypot(*away) or 1.0
-            normals.append([a / long for a in away])
+        normals: list[tuple[float, ...]] = []
+        for pose in self.views:
+            (a, b), (c, d) = pose[joint], pose[centre]
+            x, y = a - c, b - d
+            long = hypot(x, y) or 1.0
+            normals.append((x / long, y / long))
         self._offer(joint, Locus(Circle(self.place[centre], radius), uses, part, normals, centre))
 
     def _touch(self, number: int, joint: int) -> None:
-        solid = self.net.solids[number]
-        inside = [j for j in solid.local if j in self.place]
-        missing = [j for j in solid.local if j not in self.place]
-        if len(inside) == 1:
+        net, place = self.net, self.place
+        solid = net.solids[number]
+        missing = [j for j in solid.local if j not in place]
+        inside = len(solid.local) - len(missing)
+        if inside == 1:
             self.held[number].add(joint)
         if not missing:
             return
-        if len(inside) >= 2 and self._base(solid) is not None:
+        if inside >= 2 and self._base(solid) is not None:
             self._push(0, number, "solid")
-        elif len(inside) == 1:
+        elif inside == 1:
             for j in missing:
                 self._circle(j, joint, solid.length(joint, j), ("solid", number), solid.name)
-        rails_on = self.net.rails_on
-        for k in {k for j in solid.local for k in rails_on.get(j, ())} if rails_on else ():
-            self._try_swing(k)
+        if net.slots:
+            for k in {k for j in solid.local for k in net.rails_on.get(j, ())}:
+                self._try_swing(k)
 
     def _rail(self, k: int) -> None:
         lines = self.net.eqs.lines
@@ -350,10 +355,9 @@ class Growth:
         inside = [j for j in solid.local if j in self.place]
         if len(inside) > 12:
             inside = inside[:12]
-        poses = self.net.listed(self.poses)
         best, found = 1e-9, None
         for a, b in combinations(inside, 2):
-            gap = max(dist(pose[a], pose[b]) for pose in poses)
+            gap = max([dist(pose[a], pose[b]) for pose in self.views])
             if gap > best * (1 + 1e-9):
                 best, found = gap, (a, b)
         return found

@@ -49,6 +49,7 @@ class Net:
         for k, joint in enumerate(eqs.lines.joint):
             for j in {int(joint), *map(int, eqs.lines.along[k])} - {GROUND}:
                 self.rails_on[j].append(k)
+        self.slots = bool((eqs.lines.along[:, 0] != GROUND).any())
         self.cranks_on: dict[int, list[int]] = defaultdict(list)
         for k in range(len(eqs.angles.names)):
             for j in {*map(int, eqs.angles.line[k]), *map(int, eqs.angles.base[k])} - {GROUND}:

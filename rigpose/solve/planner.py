@@ -15,6 +15,7 @@ from itertools import count
 import numpy as np
 
 from rigpose.model.equations import Array, Equations
+from rigpose.model.record import all_kept
 from rigpose.model.rig import Rig
 from rigpose.model.system import System
 from rigpose.solve.blocks import smallest_block
@@ -130,6 +131,8 @@ class Planner:
         """Merge floating parts that place each other into bodies; True if any was made."""
         made = False
         placed = self.ground.place
+        if len(placed) >= self.eqs.n:
+            return False
         for number, solid in self._seeds():
             if number is not None and not any(
                 number in self.net.solids_on[j] for j in solid.local
@@ -273,9 +276,10 @@ def plan_for(
     """The cached plan for drive names and (joint name, axis) pairs."""
     rest = find_rest(rig)
     eqs = rest.equations
-    return make_plan(
-        rest,
-        frozenset(eqs.value_index[d] for d in drives),
-        frozenset((rig.index[j], axis) for j, axis in targets),
-    )
+    with all_kept():
+        return make_plan(
+            rest,
+            frozenset(eqs.value_index[d] for d in drives),
+            frozenset((rig.index[j], axis) for j, axis in targets),
+        )
 

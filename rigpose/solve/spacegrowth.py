@@ -9,15 +9,18 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 from itertools import combinations
+from math import hypot
 
 import numpy as np
 
-from rigpose.model.equations import GROUND, Array
+from rigpose.model.equations import GROUND
 from rigpose.solve.growth import APART, PARALLEL, Growth, Key, Locus
 from rigpose.solve.net import Solid
 from rigpose.solve.plan import Circle, Given, Hang, Hinge, Junction, Length, Line, Point, Sheet
 
 MOST_LOCI = 14
+FEW = 10
+"""Sets up to which plain numbers are quicker than arrays."""
 GOOD = 2.0
 """A volume that is good enough to stop looking for a better choice."""
 ORDER = (Line, Sheet, Circle)
@@ -112,11 +115,13 @@ class SpaceGrowth(Growth):
     def _offer(self, joint: int, locus: Locus) -> None:
         if joint in self.place:
             return
-        mine = self.loci[joint]
-        if any(x.uses == locus.uses and x.curve == locus.curve for x in mine):
-            return
+        mine, weight = self.loci[joint], 0
+        for x in mine:
+            if x.uses == locus.uses and x.curve == locus.curve:
+                return
+            weight += 2 if type(x.curve) is Line else 1
         mine.append(locus)
-        weight = sum(2 if isinstance(x.curve, Line) else 1 for x in mine)
+        weight += 2 if type(locus.curve) is Line else 1
         if weight >= 3:
             self._push(1 if weight > 3 else 2, joint, "joint")
 
@@ -126,8 +131,8 @@ class SpaceGrowth(Growth):
         if joint in self.place:
             return
         loci = self.loci[joint]
-        chosen = self._best_set([x for x in loci if x.part not in self.surplus])
-        chosen = chosen or self._best_set(loci)
+        some = [x for x in loci if x.part not in self.surplus] if self.surplus else loci
+        chosen = self._best_set(some) or self._best_set(loci)
         if chosen is not None:
             self._join_at(joint, chosen)
 
@@ -146,14 +151,17 @@ class SpaceGrowth(Growth):
 
     def _join_at(self, joint: int, chosen: tuple[Locus, ...]) -> None:
         """Place a joint where surfaces meet."""
-        self.used |= {x.uses for x in chosen}
-        for number in {x.uses[1] for x in chosen if x.uses[0] == "solid"}:
+        uses = {x.uses for x in chosen}
+        self.used |= uses
+        for number in [k for kind, k in uses if kind == "solid"]:
             spheres = sum(x.uses == ("solid", number) for x in chosen)
             placed = sum(j in self.place for j in self.net.solids[number].local)
             if spheres == placed <= 2:
                 self._hold(number, [joint])
-        curves = tuple(sorted((x.curve for x in chosen), key=lambda c: ORDER.index(type(c))))
-        two_ways = any(isinstance(c, Circle) for c in curves)
+        curves = tuple([x.curve for x in chosen])
+        if any(type(c) is not Circle for c in curves):
+            curves = tuple(sorted(curves, key=lambda c: ORDER.index(type(c))))
+        two_ways = type(curves[-1]) is Circle
         dst = joint if self.ground else self.new_point()
         self._placed(joint, dst, Junction(dst=dst, curves=curves, bit=0 if two_ways else -1,
                                           parts=tuple(dict.fromkeys(x.part for x in chosen))))
@@ -162,16 +170,17 @@ class SpaceGrowth(Growth):
     def _best_set(loci: list[Locus]) -> tuple[Locus, ...] | None:
         """The surfaces whose unit normals span the largest volume; the file's order decides."""
         some = loci[:MOST_LOCI]
-        lines = [k for k, x in enumerate(some) if isinstance(x.curve, Line)]
-        others = [k for k, x in enumerate(some) if not isinstance(x.curve, Line)]
+        lines = [k for k, x in enumerate(some) if type(x.curve) is Line]
+        others = [k for k, x in enumerate(some) if type(x.curve) is not Line]
         sets: list[tuple[int, ...]] = [(a, b) for a in lines for b in others]
         sets += combinations(others, 3)
         if not sets:
             return None
-        worth = np.nan_to_num(_volumes(some, sets), nan=0.0)
-        best = float(worth.max())
+        worth = _few_volumes(some, sets) if len(sets) <= FEW else _volumes(some, sets)
+        best = max(worth)
         # The first that is good enough or as good as any: the same on every machine.
-        chosen = int(np.argmax(worth >= min(GOOD, best * (1.0 - 1e-6))))
+        enough = min(GOOD, best * (1.0 - 1e-6))
+        chosen = next(k for k, volume in enumerate(worth) if volume >= enough)
         return tuple(some[k] for k in sets[chosen]) if best > PARALLEL else None
 
     def _hooks(self, solid: Solid) -> tuple[int, ...] | None:
@@ -251,10 +260,33 @@ class SpaceGrowth(Growth):
     def _circle(self, joint: int, centre: int, radius: Length, uses: Key, part: str) -> None:
         if not radius.constant and radius.value < 0 and radius.points is None:
             return
-        super()._circle(joint, centre, radius, uses, part)
+        normals: list[tuple[float, ...]] = []
+        for pose in self.views:
+            (a, b, c), (d, e, f) = pose[joint], pose[centre]
+            x, y, z = a - d, b - e, c - f
+            long = hypot(x, y, z) or 1.0
+            normals.append((x / long, y / long, z / long))
+        self._offer(joint, Locus(Circle(self.place[centre], radius), uses, part, normals, centre))
 
 
-def _volumes(loci: list[Locus], sets: list[tuple[int, ...]]) -> Array:
+def _few_volumes(loci: list[Locus], sets: list[tuple[int, ...]]) -> list[float]:
+    """As `_volumes`, in plain numbers: quicker for a few sets."""
+    found = []
+    for chosen in sets:
+        first, second, *third = (loci[k].normals for k in chosen)
+        best = 0.0
+        for k, ((a, b, c), (d, e, f)) in enumerate(zip(first, second, strict=True)):
+            if third:
+                p, q, r = third[0][k]
+                size = abs((b * f - c * e) * p + (c * d - a * f) * q + (a * e - b * d) * r)
+            else:
+                size = abs(a * d + b * e + c * f)
+            best = max(best, float(size) if size == size else 0.0)  # noqa: PLR0124 - not a number
+        found.append(best)
+    return found
+
+
+def _volumes(loci: list[Locus], sets: list[tuple[int, ...]]) -> list[float]:
     """What the unit normals of each set span in the better of the two poses, ``(n_sets,)``."""
     normals = np.array([np.asarray(x.normals) for x in loci])
     pairs = [s for s in sets if len(s) == 2]
@@ -266,5 +298,5 @@ def _volumes(loci: list[Locus], sets: list[tuple[int, ...]]) -> Array:
                        p[..., 0] * q[..., 1] - p[..., 1] * q[..., 0]], axis=-1)
     every = np.concatenate([np.array(first).reshape(len(pairs), normals.shape[1]),
                             np.abs((across * r).sum(axis=-1))])
-    largest: Array = np.fmax.reduce(every, axis=1)
+    largest: list[float] = np.nan_to_num(np.fmax.reduce(every, axis=1), nan=0.0).tolist()
     return largest
