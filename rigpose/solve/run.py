@@ -25,7 +25,7 @@ from rigpose.kernels.meet import (
     turn,
 )
 from rigpose.model.gauges import measure
-from rigpose.solve.measure import check_passes
+from rigpose.solve.measure import FORGIVEN, check_passes
 from rigpose.solve.newton import cluster_branches, cluster_follow
 from rigpose.solve.plan import (
     Aim,
@@ -218,13 +218,14 @@ def choose(
     if table.careful:
         per_place, radius, own = rate()
         delta = parents_bound(table, parents)
-        allowed = per_place * delta + own
+        allowed = np.minimum(per_place * delta + own, CAREFUL)
         touch = np.abs(sine2) <= allowed
         if touch.any():
             side = np.where(touch, 0.0, side)
             sine = np.where(touch, 0.0, sine)
             sine2 = np.where(touch, 0.0, sine2)
         bound = np.minimum(delta / np.maximum(sine, 1e-300), np.sqrt(2 * radius * delta))
+        bound = np.minimum(bound, FORGIVEN * table.reach)
         table.sine_bounds.append(np.broadcast_to(allowed, sine2.shape))
     else:
         near = np.abs(sine2) < CAREFUL

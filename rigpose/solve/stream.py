@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 
 from rigpose.ground.words import Found, weaker
+from rigpose.solve.alone import LONG, search_alone
 from rigpose.solve.longchains import bring_back
 from rigpose.solve.plan import Check, Fit, Group
 from rigpose.solve.polish import polish
@@ -18,8 +19,8 @@ from rigpose.solve.run import run_steps
 from rigpose.solve.search import Cells, Context, base_table, cells_of, group_table, shared_base
 from rigpose.solve.table import Inputs, Table
 
-LONG = 64
-"""Choices one after another from which on rounding is looked for."""
+FEW = 64
+"""Branches of a long chain up to which they are looked for one by one."""
 BLOCK = 1 << 14
 WIDE = 1 << 19
 """Branches of a block where all of them are held anyway."""
@@ -106,12 +107,20 @@ def all_cells(context: Context, group: Group, inputs: Inputs, most: int) -> tupl
     """The branches of one frame as one value, at most about ``most``; whether that cut it short."""
     pieces: list[Cells] = []
     total, end = 0, monotonic() + context.budget.seconds
+    alone = search_alone(context, group, shared_base(context, inputs), min(most, FEW))
+    if alone is not None:
+        return _settled(context, group, inputs, alone), False
     for cells in stream_cells(context, group, inputs, max(BLOCK, min(most, WIDE))):
         pieces.append(cells)
         total += cells.branches
         if total > most or monotonic() > end:
             return joined(pieces), True
     whole = joined(pieces) if pieces else _none(group, context.plan.eqs.dim)
+    return _settled(context, group, inputs, whole), False
+
+
+def _settled(context: Context, group: Group, inputs: Inputs, whole: Cells) -> Cells:
+    """Long chains brought back to their lengths, and in doubt where rounding may have decided."""
     if group.bits > LONG:
         bring_back(context.rest, context.plan, whole, shared_base(context, inputs), inputs)
         held = sum(isinstance(s, Fit) for s in group.steps)
@@ -119,7 +128,7 @@ def all_cells(context: Context, group: Group, inputs: Inputs, most: int) -> tupl
             # Rounding may have grown past what a check forgives: not a claim to make.
             doubt = Found.PROBABLY if whole.alive.any() else Found.SOME
             whole.found = weaker(whole.found, doubt)
-    return whole, False
+    return whole
 
 
 def _none(group: Group, dim: int) -> Cells:
