@@ -12,7 +12,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 from scipy.sparse import csr_array, csr_matrix
-from scipy.sparse.csgraph import connected_components, maximum_bipartite_matching
+from scipy.sparse.csgraph import (
+    breadth_first_order,
+    connected_components,
+    maximum_bipartite_matching,
+)
 
 from rigpose.model.equations import Array, Ints
 from rigpose.model.gauges import measure
@@ -20,6 +24,13 @@ from rigpose.model.system import System
 
 DEPENDENT = 1e-7
 """A row that adds less than this to the span of the earlier ones is a check."""
+
+
+DENSE = 1500
+"""Open coordinates above which the pattern of the rows says where to look for a block."""
+LARGEST = 600
+"""Coordinates of a block that is found so: it is measured as the others are."""
+TRIED = 8
 
 
 @dataclass(frozen=True)
@@ -78,6 +89,8 @@ def smallest_block(system: System, poses: Array, placed: frozenset[int]) -> Bloc
     open_joints = np.array([j for j in range(eqs.n) if j not in placed], dtype=np.intp)
     if not len(open_joints):
         return None
+    if len(open_joints) * eqs.dim > DENSE:
+        return large_block(system, poses, open_joints)
     full = jacobian_near(system, poses)
     touched = np.abs(full).reshape(len(full), eqs.n, eqs.dim).max(axis=2) > 1e-13
     fixed = determined(full[:, _columns(open_joints, eqs.dim)], open_joints, eqs.dim)
@@ -120,3 +133,72 @@ def _component(square: Array, n: int, dim: int) -> tuple[Ints, Ints]:
     members = np.flatnonzero(label == best)
     columns = (members[:, None] * dim + np.arange(dim)).ravel()
     return members, np.sort(row_of[columns])
+
+
+def large_block(system: System, poses: Array, open_joints: Ints) -> Block | None:
+    """As `smallest_block`, found by the pattern of the rows and then measured.
+
+    The pattern alone takes dependent rows for independent ones, so a block that it misses or that
+    the measure refuses is left open.
+    """
+    eqs, dim = system.eqs, system.eqs.dim
+    values = measure(eqs, poses[1:2], np.arange(len(eqs.values)))[0]
+    with np.errstate(invalid="ignore"):
+        rows, cols, entries = system.triplets(poses[1], values)
+    entries = np.nan_to_num(entries)
+    some = np.abs(entries) > 1e-13
+    full = csr_array((entries[some], (rows[some], cols[some])),
+                     shape=(int(rows.max(initial=-1)) + 1, eqs.n * dim))
+    part = full[:, _columns(open_joints, dim)]
+    for members in _closed(part, dim):
+        chosen = open_joints[members]
+        mine = np.zeros(len(open_joints), dtype=bool)
+        mine[members] = True
+        every = np.setdiff1d(_rows_on(part, np.repeat(mine, dim)),
+                             _rows_on(part, np.repeat(~mine, dim)))
+        matrix = full[every][:, _columns(chosen, dim)].toarray()
+        square = independent_rows(matrix)
+        if len(square) == matrix.shape[1]:
+            around = np.setdiff1d(full[every].indices // dim, chosen)
+            return Block(tuple(map(int, chosen)), tuple(map(int, every)),
+                         tuple(map(int, every[square])), tuple(map(int, around)))
+    return None
+
+
+def _rows_on(part: csr_array, columns: NDArray[np.bool_]) -> Ints:
+    """Rows with an entry in some of the columns."""
+    found: Ints = np.flatnonzero(np.diff(part[:, np.flatnonzero(columns)].indptr) > 0)
+    return found
+
+
+def _closed(part: csr_array, dim: int) -> list[Ints]:
+    """Small sets of joints that as many rows as they have coordinates hold, and that lean on no
+    other: strongly connected parts of a maximum matching, where it leaves nothing free."""
+    width = part.shape[1]
+    row_of = maximum_bipartite_matching(csr_matrix(part), perm_type="row")
+    matched = np.full(part.shape[0], -1, dtype=np.intp)
+    held = row_of >= 0
+    matched[row_of[held]] = np.flatnonzero(held)
+    entries = part.tocoo()
+    keep = matched[entries.row] >= 0
+    tail, head = matched[entries.row[keep]], entries.col[keep]
+    # What a free column touches is free as well: along rows to the columns matched to them.
+    source = width
+    ways = csr_array((np.ones(len(tail) + int((~held).sum())), (
+        np.concatenate([head, np.full(int((~held).sum()), source)]),
+        np.concatenate([tail, np.flatnonzero(~held)]))), shape=(width + 1, width + 1))
+    free = np.zeros(width + 1, dtype=bool)
+    free[breadth_first_order(ways, source, return_predecessors=False)] = True
+    joints: NDArray[np.bool_] = ~np.any(free[:width].reshape(-1, dim), axis=1)
+    graph = csr_array((np.ones(len(tail)), (tail // dim, head // dim)),
+                      shape=(len(joints), len(joints)))
+    count, label = connected_components(graph, directed=True, connection="strong")
+    leans = np.zeros(count, dtype=bool)
+    cross = label[tail // dim] != label[head // dim]
+    leans[label[tail[cross] // dim]] = True
+    sizes = np.bincount(label, minlength=count)
+    good = ~leans & (sizes * dim <= LARGEST)
+    good[label[~joints]] = False
+    some = np.flatnonzero(good)
+    some = some[np.argsort(sizes[some], kind="stable")][:TRIED]
+    return [np.flatnonzero(label == k) for k in some]

@@ -10,6 +10,8 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 from itertools import combinations
+from math import dist
+from typing import NamedTuple
 
 import numpy as np
 from scipy.sparse import csr_array
@@ -44,8 +46,7 @@ class Gap:
         return self.least - self.reach
 
 
-@dataclass(frozen=True)
-class Reach:
+class Reach(NamedTuple):
     """One pair of joints that a part keeps between ``least`` and ``most``."""
 
     part: str
@@ -55,9 +56,16 @@ class Reach:
     most: float
 
 
-def open_gaps(rig: Rig, tolerance: float) -> tuple[Gap, ...]:
-    """All that can never close by more than ``tolerance`` (rig's unit), widest first."""
-    reaches = list(_reaches(rig))
+def open_gaps(rig: Rig, tolerance: float, pose: Array | None = None) -> tuple[Gap, ...]:
+    """All that can never close by more than ``tolerance`` (rig's unit), widest first.
+
+    pose : (n_joints, dim) where one is known that keeps pins and rails, in the rig's frame: if it
+    keeps everything within its reach, then everything can close
+    """
+    parts = list(_parts(rig))
+    if pose is not None and _hold(parts, pose, tolerance / (len(rig.joints) + 1)):
+        return ()
+    reaches = [*parts, *_on_ground(rig)]
     if not reaches:
         return ()
     best = _longest_ways(reaches)
@@ -81,6 +89,17 @@ def open_gaps(rig: Rig, tolerance: float) -> tuple[Gap, ...]:
     return tuple(sorted(gaps, key=lambda g: -g.short))
 
 
+def _hold(reaches: list[Reach], pose: Array, tolerance: float) -> bool:
+    """Whether a pose has every pair of joints within its reach. Along a chain what they are off
+    by adds up, so each may have but a share of what is told."""
+    ends = np.array([(r.a, r.b) for r in reaches], dtype=np.intp).reshape(-1, 2)
+    away = pose[ends[:, 1]] - pose[ends[:, 0]]
+    gap = np.sqrt((away * away).sum(axis=1))
+    least = np.array([r.least for r in reaches])
+    most = np.array([r.most for r in reaches])
+    return bool((gap >= least - tolerance).all() and (gap <= most + tolerance).all())
+
+
 def _way(before: Ints, a: int, b: int) -> list[tuple[int, int]]:
     """The edges of the shortest way from a to b."""
     way = []
@@ -100,7 +119,8 @@ def _longest_ways(reaches: list[Reach]) -> dict[tuple[int, int], Reach]:
     return best
 
 
-def _reaches(rig: Rig) -> Iterator[Reach]:
+def _parts(rig: Rig) -> Iterator[Reach]:
+    """Bones, rams and plates."""
     at = rig.index
     for bone in rig.bones:
         yield Reach(bone.name, at[bone.ends[0]], at[bone.ends[1]], bone.length, bone.length)
@@ -109,6 +129,11 @@ def _reaches(rig: Rig) -> Iterator[Reach]:
         yield Reach(ram.name, at[ram.ends[0]], at[ram.ends[1]], low, high)
     for plate in rig.plates:
         yield from _plate(rig, plate)
+
+
+def _on_ground(rig: Rig) -> Iterator[Reach]:
+    """Pinned joints, and pinned joints with rails."""
+    at = rig.index
     pins = [j for j in rig.joints if j.pin and j.at is not None]
     for p, q in combinations(pins, 2):
         gap = float(np.linalg.norm(np.subtract(p.at, q.at)))  # type: ignore[arg-type]
@@ -124,10 +149,9 @@ def _reaches(rig: Rig) -> Iterator[Reach]:
 def _plate(rig: Rig, plate: Plate) -> Iterator[Reach]:
     """All pairs of a plate's joints."""
     joints = [rig.index[j] for j in plate.joints]
-    shape = np.array(plate.shape)
-    for i, j in combinations(range(len(joints)), 2):
-        gap = float(np.linalg.norm(shape[i] - shape[j]))
-        yield Reach(plate.name, joints[i], joints[j], gap, gap)
+    for (i, p), (j, q) in combinations(zip(joints, plate.shape, strict=True), 2):
+        gap = dist(p, q)
+        yield Reach(plate.name, i, j, gap, gap)
 
 
 def _from_rail(rail: Rail, place: Array) -> float:

@@ -58,7 +58,8 @@ class Locus(Record, frozen=True, eq=False):
 
 @dataclass
 class Growth:
-    """A frame being grown. ``place`` maps joints to points; ``known`` are value numbers."""
+    """A frame being grown. ``place`` maps joints to points; ``known`` are value numbers;
+    ``offered`` lists joints as they got their first curve."""
 
     net: Net
     poses: Array
@@ -76,6 +77,7 @@ class Growth:
     on_place: Callable[[int], None] | None = None
     surplus: frozenset[str] = frozenset()
     views: list[list[list[float]]] = field(init=False)
+    offered: list[int] = field(default_factory=list)
 
     def __post_init__(self) -> None:
         self.views = self.net.listed(self.poses)
@@ -273,6 +275,8 @@ class Growth:
         for x in mine:
             if x.uses == uses:
                 return
+        if not mine:
+            self.offered.append(joint)
         mine.append(locus)
         if len(mine) >= 2:
             self._push(1 if len(mine) > 2 else 2, joint, "joint")
@@ -305,11 +309,11 @@ class Growth:
                     parts=(first.part, second.part))
         self._placed(joint, dst, step)
 
-    def force(self) -> bool:
+    def force(self) -> int | None:
         """Place a joint that nothing else places by curves that touch at rest and close by.
 
         Two different circles, or a circle and a line, meet in finitely many points even so: such
-        a joint is stretched out for good, and stands at a dead centre. True where one was placed.
+        a joint is stretched out for good, and stands at a dead centre. Which, if any.
         """
         for joint in sorted(self.loci):
             if joint not in self.place:
@@ -317,8 +321,8 @@ class Growth:
                             None)
                 if pair is not None:
                     self._meet_at(joint, *pair)
-                    return True
-        return False
+                    return joint
+        return None
 
     def _finite(self, a: Locus, b: Locus) -> bool:
         """Whether two curves can't have a stretch in common, whatever their lengths."""

@@ -287,6 +287,7 @@ class Plan:
     loose : joints that still move; redundant : parts that only check
     singular : parts of meetings that are dead centres at rest and close by
     unreachable : targets along which their joint cannot move
+    forced : joints placed where their curves only touch, at rest and close by
     """
 
     eqs: Equations
@@ -298,6 +299,7 @@ class Plan:
     redundant: tuple[str, ...]
     points: int
     notes: tuple[str, ...] = field(default=())
+    forced: tuple[int, ...] = ()
 
     @cached_property
     def bits(self) -> int:

@@ -54,6 +54,7 @@ class Planner:
     net: Net = field(init=False)
     ground: Growth = field(init=False)
     settled_ties: set[int] = field(default_factory=set)
+    forced: list[int] = field(default_factory=list)
 
     def __post_init__(self) -> None:
         self.points = count(self.eqs.n)
@@ -75,10 +76,12 @@ class Planner:
                 ground._push(0, k, "crank")
         while True:
             ground.run()
-            if (self._ties() or self._condense() or self._turned() or self._cluster()
-                    or ground.force()):
+            if self._ties() or self._condense() or self._turned() or self._cluster():
                 continue
-            break
+            forced = ground.force()
+            if forced is None:
+                break
+            self.forced.append(forced)
         loose = tuple(j for j in range(self.eqs.n) if j not in ground.place)
         return ground.steps, loose
 
@@ -236,7 +239,7 @@ def make_plan(
         c.parts[0] for c in checks if c.kind in rigid and c.parts))
     return Plan(eqs=eqs, drives=tuple(eqs.values[v] for v in sorted(drives)),
                 targets=tuple(sorted(targets)), base=base, groups=groups, loose=loose,
-                redundant=redundant, points=next(planner.points))
+                redundant=redundant, points=next(planner.points), forced=tuple(planner.forced))
 
 
 def _last_of_sets(rest: Rest, poses: Array) -> frozenset[str]:

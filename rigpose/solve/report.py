@@ -65,8 +65,10 @@ def _at_rest(rest: Rest, verdict: Verdict) -> Report:
 
 
 def _lengths(report: Report, found: Study) -> Report:
-    rig = found.rest.rig
-    return replace(report, gaps=open_gaps(rig, rig.slack * report.size), loose=_loose(rig))
+    rig, rest = found.rest.rig, found.rest
+    good = rest.misfit * (len(rig.joints) + 1) <= rig.slack
+    gaps = open_gaps(rig, rig.slack * report.size, rest.positions if good else None)
+    return replace(report, gaps=gaps, loose=_loose(rig))
 
 
 def _loose(rig: Rig) -> tuple[str, ...]:

@@ -120,6 +120,8 @@ class SpaceGrowth(Growth):
             if x.uses == locus.uses and x.curve == locus.curve:
                 return
             weight += 2 if type(x.curve) is Line else 1
+        if not mine:
+            self.offered.append(joint)
         mine.append(locus)
         weight += 2 if type(locus.curve) is Line else 1
         if weight >= 3:
@@ -136,7 +138,7 @@ class SpaceGrowth(Growth):
         if chosen is not None:
             self._join_at(joint, chosen)
 
-    def force(self) -> bool:
+    def force(self) -> int | None:
         """As in the plane: spheres about three joints not in line meet in two points at most."""
         for joint in sorted(self.loci):
             if joint in self.place:
@@ -146,8 +148,8 @@ class SpaceGrowth(Growth):
                 a, b, c = (self.poses[:, x.centre] for x in three)
                 if float(np.nanmax(np.linalg.norm(np.cross(b - a, c - a), axis=1))) > APART:
                     self._join_at(joint, three)
-                    return True
-        return False
+                    return joint
+        return None
 
     def _join_at(self, joint: int, chosen: tuple[Locus, ...]) -> None:
         """Place a joint where surfaces meet."""
