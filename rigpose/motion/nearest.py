@@ -105,7 +105,7 @@ def _straight_on(context: Context, group: Group, base: Table, aim: Array) -> Row
     if np.isnan(aim).any():
         return None
     table = group_table(base, 1)
-    table.guess = aim[None]
+    table.guess = aim[None, None]
     ways = {k: np.ones((1, 1)) for k in range(group.bits)}
     run_steps(group.steps, table, ways, len(context.plan.base))
     if table.flagged is not None or (table.alive is not None and not table.alive.all()):

@@ -78,18 +78,20 @@ class Block:
 
 
 def _block(step: Cluster, table: Table) -> Block:
-    own, eqs, b = own_rows(step), table.eqs, table.branches
-    x = np.repeat(eqs.at[own.keep][None], b, axis=0)
+    """The block in every cell: branch by branch, each frame by frame."""
+    own, eqs = own_rows(step), table.eqs
+    b, f = table.branches, table.inputs.frames
+    x = np.repeat(eqs.at[own.keep][None], b * f, axis=0)
     at = {int(j): k for k, j in enumerate(own.keep)}
     for j in step.around:
-        x[:, at[j]] = np.broadcast_to(table.point(j)[:, :, 0], (eqs.dim, b)).T
-    values = np.full((b, len(eqs.values)), np.nan)
+        x[:, at[j]] = np.broadcast_to(table.point(j), (eqs.dim, b, f)).reshape(eqs.dim, b * f).T
+    values = np.full((b * f, len(eqs.values)), np.nan)
     for v in step.system.drives:
-        values[:, v] = table.value(v)[..., 0]
+        values[:, v] = np.broadcast_to(table.value(v), (b, f)).ravel()
     goal = np.zeros_like(x)
     for (j, axis), given in table.inputs.targets.items():
         if j in at:
-            goal[:, at[j], axis] = given[0]
+            goal[:, at[j], axis] = np.broadcast_to(given, (b, f)).ravel()
     wished = own.wished or bool(table.inputs.targets)
     return Block(step, own, x, values, goal, table.reach, table.slack, wished)
 
@@ -239,21 +241,22 @@ def cluster_branches(step: Cluster, table: Table, number: int) -> None:
 
 
 def _narrow(block: Block, table: Table, x: Array, owner: Ints) -> None:
-    margin = block.margin(x, owner)[:, None]
+    margin = block.margin(x, owner).reshape(-1, table.inputs.frames)
     table.sines.append(margin**2)
     table.narrow(margin)
 
 
 def cluster_follow(step: Cluster, table: Table, number: int) -> None:
-    """The block's pose that is reached from the guess; only for a single frame."""
+    """The block's poses that are reached from the guess, in all cells at once."""
     if table.guess is None:
         raise ValueError("a block of several joints is followed from a pose")
     block, joints = _block(step, table), list(step.joints)
     x, owner = block.x.copy(), np.arange(len(block.x))
-    x[:, block.own.inside] = table.guess[:, joints]
+    x[:, block.own.inside] = table.guess[:, :, joints].reshape(len(x), len(joints), -1)
     with np.errstate(all="ignore"):
         place, good = block.settled(x, owner, FOLLOWING)
-    table.kill(good[:, None], number)
+    shape = table.branches, table.inputs.frames
+    table.kill(good.reshape(shape), number)
     for k, j in zip(block.own.inside, joints, strict=True):
-        table.put(j, np.ascontiguousarray(place[:, k].T[:, :, None]), table.rounding * 100)
+        table.put(j, place[:, k].T.reshape(-1, *shape), table.rounding * 100)
     _narrow(block, table, place, owner)

@@ -236,7 +236,7 @@ def choose(
         way = ways[bit]
         if table.guess is not None and dst >= 0 and dst < table.eqs.n:
             # Followed frame by frame: the side that continues the motion.
-            away = table.guess[:, dst].T[:, :, None] - base
+            away = table.guess[:, :, dst].transpose(2, 0, 1) - base
             way = np.where(dot(away, side) < 0, -1.0, 1.0)
         place = base + side * way
         table.sines.append(sine2)

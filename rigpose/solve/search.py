@@ -185,6 +185,9 @@ def _again(
 ) -> Cells:
     """Run the frames near dead centres with error bounds, polish them and put them in."""
     some = inputs.part(columns)
+    guess = more.get("guess")
+    if isinstance(guess, np.ndarray):
+        more = {**more, "guess": guess[:, columns]}
     base = base_table(context, some, True, **more)
     mine = None if ways is None else {k: _part(v, columns) for k, v in ways.items()}
     careful, _ = run_group(context, group, base, mine, rows)

@@ -1,8 +1,9 @@
-"""Following rows frame by frame, where a block of several joints has no closed form.
+"""Following rows where a block of several joints has no closed form.
 
-Each frame starts Newton's method from the last poses continued; a step that ends far from there
-is halved (predictor and corrector; Allgower and Georg 1990, chapter 6). Every so many frames all
-solutions are looked for again, so that rows that begin later are found too.
+Each step starts Newton's method from the last poses continued; a step that ends far from there is
+halved (predictor and corrector; Allgower and Georg 1990, chapter 6). As long as steps go well they
+grow over many frames, and those between are solved all at once. Every so many frames all solutions
+are looked for again, so that rows that begin later are found too.
 """
 
 from __future__ import annotations
@@ -15,17 +16,19 @@ from numpy.typing import NDArray
 from rigpose.ground.budget import Watch, go_on
 from rigpose.ground.words import Found, weaker
 from rigpose.model.equations import Array
+from rigpose.solve.between import fill, poses_of, steady, ways_of
 from rigpose.solve.clock import Clock
 from rigpose.solve.plan import Group
 from rigpose.solve.rows import Codes, Rows
 from rigpose.solve.search import Cells, Context, search
-from rigpose.solve.table import Inputs
 
 EVERY = 32
 SMALLEST = 1 / 64
 FAR = 0.02
 """A corrected pose farther than this part of the reach from its prediction is not trusted."""
 SAME = 1e-5
+WIDEST = 1 << 12
+"""Frames that a step may take at most."""
 
 
 @dataclass
@@ -62,21 +65,85 @@ def enumerate_rows(context: Context, group: Group, clock: Clock,
 def walk(context: Context, group: Group, clock: Clock, start: Cells, frame: int, way: int,
          watch: Watch | None = None) -> Rows:
     """Rows from the poses of one frame to the last (``way`` 1) or to the first frame (-1)."""
-    b, n = len(start.codes), context.plan.eqs.n
     rows = _empty(group, start, clock.count)
-    x = _pose(context, group, clock.whole(slice(frame, frame + 1)), start)
-    now = _Walk(start.codes, float(frame), x, start.alive[:, 0], x, 0.0, start.values)
     _write(rows, frame, start)
-    frames = range(frame + 1, clock.count) if way > 0 else range(frame - 1, -1, -1)
-    for f in frames:
-        if b == 0 or n == 0 or not now.alive.any():
-            break
-        cells = _advance(context, group, clock, now, float(f))
-        _write(rows, f, cells)
-        if f % EVERY == 0 and not go_on(watch, "frames", f, clock.count):
+    last = clock.count - 1 if way > 0 else 0
+    solved = _stride(context, group, clock, rows, start, (frame, last), watch)
+    for a, b in fill(context, group, clock, rows, solved, watch):
+        if rows.found is not Found.STOPPED:
+            low, high = (a, b) if way > 0 else (b, a)
+            _step_by_step(context, group, clock, rows, low, high)
+    return rows
+
+
+def _begun(context: Context, group: Group, start: Cells, frame: int) -> _Walk:
+    x = poses_of(context, group, start)[:, 0]
+    return _Walk(start.codes, float(frame), x, start.alive[:, 0], x, 0.0, start.values)
+
+
+def _stride(context: Context, group: Group, clock: Clock, rows: Rows, start: Cells,
+            ends: tuple[int, int], watch: Watch | None) -> list[int]:
+    """Solve frames from the first end to the last, as far apart as the motion allows."""
+    frame, last = ends
+    solved, wide = [frame], 1
+    now = _begun(context, group, start, frame)
+    while frame != last and len(start.alive) and group.joints and now.alive.any():
+        goal = frame + int(np.sign(last - frame)) * min(wide, abs(last - frame))
+        if wide > 1:
+            cells = _leap(context, group, clock, rows, now, solved, goal)
+            if cells is None:
+                wide //= 2
+                continue
+        else:
+            cells = _advance(context, group, clock, now, float(goal))
+        _write(rows, goal, cells)
+        solved.append(goal)
+        frame, wide = goal, min(2 * wide, WIDEST)
+        if not go_on(watch, "frames", abs(frame - ends[0]), clock.count):
             rows.found = Found.STOPPED
             break
-    return rows
+    return solved
+
+
+def _leap(context: Context, group: Group, clock: Clock, rows: Rows, now: _Walk,
+          solved: list[int], goal: int) -> Cells | None:
+    """On over many frames in one step, or None where that is not to be trusted."""
+    before = np.array(solved[-3:])
+    weight = np.ones(len(before))
+    for k in range(len(before)):
+        for other in range(len(before)):
+            if other != k:
+                weight[k] *= (goal - before[other]) / (before[k] - before[other])
+    guess = np.repeat(context.plan.eqs.at[None], len(now.alive), axis=0)
+    for j, place in zip(group.joints, rows.places, strict=True):
+        guess[:, j] = (place[:, :, before] * weight).sum(axis=-1).T
+    guess = np.nan_to_num(guess, nan=0.0)
+    cells = search(context, group, clock.at(np.array([float(goal)])),
+                   ways_of(group, now.codes), len(now.codes), guess=guess[:, None],
+                   hints=now.values, consecutive=True)
+    x = poses_of(context, group, cells)[:, 0]
+    off = np.abs(x - guess).max(axis=(1, 2))
+    good = cells.alive[:, 0] & steady(context, off, cells.margin[:, 0]) & (
+        off < FAR * context.rest.reach)
+    if not good[now.alive].all():
+        return None
+    cells.alive = cells.alive & now.alive[:, None]
+    now.x, now.before, now.gap = x, x, 0.0
+    now.time, now.values = float(goal), cells.values
+    return cells
+
+
+def _step_by_step(context: Context, group: Group, clock: Clock, rows: Rows, start: int,
+                  stop: int) -> None:
+    """Follow the rows frame by frame over a stretch whose ends are solved, in place."""
+    cells = Cells(group, rows.codes, [p[:, :, start:start + 1] for p in rows.places],
+                  rows.alive[:, start:start + 1] & rows.alive[:, stop:stop + 1],
+                  rows.margin[:, start:start + 1], [], rows.found,
+                  {v: a[:, start:start + 1] for v, a in rows.values.items()})
+    now = _begun(context, group, cells, start)
+    way = 1 if stop > start else -1
+    for frame in range(start + way, stop, way):
+        _write(rows, frame, _advance(context, group, clock, now, float(frame)))
 
 
 def _advance(context: Context, group: Group, clock: Clock, now: _Walk, goal: float) -> Cells:
@@ -86,10 +153,9 @@ def _advance(context: Context, group: Group, clock: Clock, now: _Walk, goal: flo
         step = np.sign(step) * min(abs(step), abs(goal - now.time))
         guess = now.x + (now.x - now.before) * (step / now.gap if now.gap else 0.0)
         inputs = clock.at(np.array([now.time + step]))
-        cells = search(context, group, inputs,
-                       {k: np.sign(now.codes[:, k:k + 1] + 0.5) for k in range(group.bits)},
-                       len(now.codes), guess=guess, hints=now.values, consecutive=True)
-        x = _pose(context, group, inputs, cells)
+        cells = search(context, group, inputs, ways_of(group, now.codes), len(now.codes),
+                       guess=guess[:, None], hints=now.values, consecutive=True)
+        x = poses_of(context, group, cells)[:, 0]
         off = np.abs(x - guess).max(axis=(1, 2))
         alive = cells.alive[:, 0] & now.alive
         bad = now.alive & ~(cells.alive[:, 0] & (off < FAR * context.rest.reach))
@@ -105,14 +171,6 @@ def _advance(context: Context, group: Group, clock: Clock, now: _Walk, goal: flo
         if abs(goal - now.time) < 1e-12:
             return cells
         step *= 2
-
-
-def _pose(context: Context, group: Group, inputs: Inputs, cells: Cells) -> Array:
-    """Poses ``(B, n, 2)`` with the group's joints in; others stay at rest."""
-    x = np.repeat(context.plan.eqs.at[None], len(cells.codes), axis=0)
-    for j, place in zip(group.joints, cells.places, strict=True):
-        x[:, j] = np.broadcast_to(place[:, :, 0].T, (len(x), x.shape[2]))
-    return np.nan_to_num(x, nan=0.0)
 
 
 def _empty(group: Group, start: Cells, frames: int) -> Rows:
