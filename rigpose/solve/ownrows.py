@@ -26,6 +26,7 @@ from rigpose.model.equations import (
 )
 from rigpose.model.gauges import measure
 from rigpose.model.system import Family, System
+from rigpose.solve.blocksystem import BlockSystem
 from rigpose.solve.plan import Cluster
 
 Parts = TypeVar("Parts", Distances, Lines, Angles, Planes)
@@ -135,9 +136,9 @@ def _made(step: Cluster) -> OwnRows:
     joints = np.array(step.joints, dtype=np.intp)
     keep = np.unique(np.concatenate([_joints_of(eqs), joints, targets[:, 0]]))
     new = _places(system.eqs.n, keep)
-    small = System(_renumbered(eqs, keep, new), system.drives,
-                   tuple((int(new[j]), int(axis)) for j, axis in targets), system.ties,
-                   system.without)
+    small = BlockSystem(_renumbered(eqs, keep, new), system.drives,
+                        tuple((int(new[j]), int(axis)) for j, axis in targets), system.ties,
+                        system.without)
     at = np.searchsorted(np.flatnonzero(mine), rows)
     choice = np.searchsorted(rows, np.array(step.square))
     agreed = np.arange(len(rows)) if _misfit(small, at) <= AGREE else choice
