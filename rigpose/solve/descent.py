@@ -31,6 +31,8 @@ DEAD = 3e-8
 known to the square root of rounding only, and so is its margin."""
 ALL_BUT = 1e-6
 """Those below this may be: normal equations tell no less."""
+POOR = 1e4
+"""Condition from which on margins are told by singular values."""
 DAMPING = 1e-15
 FINE = 1e-15
 """Residual that is rounding."""
@@ -157,13 +159,29 @@ def margins(own: OwnRows, x: Array, values: Array, goal: Array, rows: Ints) -> A
     known = np.isfinite(a).all(axis=(1, 2))
     if not known.any():
         return out
-    u, s, vt = np.linalg.svd(a[known], full_matrices=False)
-    full = s[:, -1] >= DEAD * s[:, 0]
-    inverse = (vt.transpose(0, 2, 1) / np.maximum(s, 1e-300)[:, None]) @ u.transpose(0, 2, 1)
-    dim = x.shape[2]
+    out[known] = _least_moves(a[known], x.shape[2])
+    return out
+
+
+def _least_moves(a: Array, dim: int) -> Array:
+    """Margins of matrices ``(N, m, w)``."""
+    turned = a.transpose(0, 2, 1)
+    try:
+        inverse = np.linalg.inv(turned @ a) @ turned
+    except np.linalg.LinAlgError:
+        inverse = np.full(turned.shape, np.inf)
+    size = np.abs(a).max(axis=(1, 2)) * np.abs(inverse).max(axis=(1, 2), initial=0.0)
+    # Normal equations square the condition: where that is poor, singular values tell.
+    poor = np.flatnonzero(~(size < POOR))
+    if len(poor):
+        u, s, vt = np.linalg.svd(a[poor], full_matrices=False)
+        inverse[poor] = (vt.transpose(0, 2, 1) / np.maximum(s, 1e-300)[:, None]) @ (
+            u.transpose(0, 2, 1))
     each = inverse.reshape(len(inverse), -1, dim, inverse.shape[2])
-    far = np.sqrt((each**2).sum(axis=2)).max(axis=(1, 2))
-    out[known] = np.where(full, np.minimum(1.0, 1.0 / np.maximum(far, 1.0)), 0.0)
+    far = np.sqrt((each * each).sum(axis=2).max(axis=(1, 2), initial=0.0))
+    out: Array = np.minimum(1.0, 1.0 / np.maximum(far, 1.0))
+    if len(poor):
+        out[poor[s[:, -1] < DEAD * s[:, 0]]] = 0.0
     return out
 
 
