@@ -192,6 +192,28 @@ def test_the_lift_at_full_height_is_one_pose_at_a_dead_centre() -> None:
     assert found.positions[0, 0, found.joints.index("lamp"), 2] == pytest.approx(74, abs=1e-6)
 
 
+# -- numbers that agree to slack only -------------------------------------------------------------
+
+@pytest.mark.parametrize(("rounded", "off"), [(0.0, 2e-4), (1e-8, 2e-4), (1e-8, 0.0)])
+def test_a_surplus_leg_rules_out_what_it_does_not_fit(rounded: float, off: float) -> None:
+    """The fourth leg is a mirror image's too where its pin is on the mirror line (``off`` 0)."""
+    drawn = three_equal_legs()
+    at = {j.name: j.at for j in drawn.joints}
+    sixth = math.radians(60)
+    below = (0.3 * math.sin(sixth), -0.3 * math.cos(sixth))
+    joints = {n: {"at": list(p), "pin": True} if len(n) == 1 else list(p) for n, p in at.items()}
+    joints |= {"d": {"at": [off, -2], "pin": True}, "d'": list(below)}
+    bones: dict[str, object] = {f"leg_{n}": [n, n + "'"] for n in "abc"}
+    length = math.dist((off, -2), below) + rounded
+    bones["leg_d"] = {"ends": ["d", "d'"], "length": length}
+    rig = rp.make_rig(joints, bones, plates={"deck": ["a'", "b'", "c'", "d'"]})
+    found = rp.find_branches(rig)
+    assert len(found) == (1 if off else 2)
+    exact = found.positions[:, 0, [rig.index[n] for n in ("d", "d'")]]
+    gap = np.linalg.norm(exact[:, 1] - exact[:, 0], axis=1) - length
+    assert np.abs(gap).max() == pytest.approx(rounded, abs=1e-13)
+
+
 # -- the judge ------------------------------------------------------------------------------------
 
 def test_poses_that_do_not_exist_are_measured_as_unknown_without_a_warning() -> None:

@@ -41,7 +41,7 @@ FOLLOWING = 12
 
 
 @dataclass(frozen=True)
-class Block:
+class Hung:
     """A block with what it hangs on: poses ``x (B, k, dim)`` of the joints that it touches, known
     ``values (B, v)`` and targets ``goal (B, k, dim)``."""
 
@@ -64,11 +64,14 @@ class Block:
         own, v, g = self.own, self.values[owner], self.goal[owner]
         place, size = polished(own, place, v, g, own.agreed, steps)
         good: Mask = size < HOLD
-        some = np.flatnonzero(~good & np.isfinite(size))
-        if len(some) and (self.wished or len(own.agreed) < len(own.rows)):
+        room = max(self.slack, 1e-11) * self.reach * 4
+        if len(own.agreed) < len(own.rows):
+            good &= np.abs(own.residual(place, v, g)).max(axis=1) < room
+        elif self.wished and not good.all():
+            some = np.flatnonzero(~good & np.isfinite(size))
             rough, size = polished(own, place[some], v[some], g[some], own.choice, steps)
-            off = np.abs(own.residual(rough, v[some], g[some])).max(axis=1)
-            fine = (size < HOLD) & (off < max(self.slack, 1e-11) * self.reach * 4)
+            off = np.abs(own.residual(rough, v[some], g[some])).max(axis=1, initial=0.0)
+            fine = (size < HOLD) & (off < room)
             place[some[fine]], good[some[fine]] = rough[fine], True
         return place, good
 
@@ -77,7 +80,7 @@ class Block:
         return margins(self.own, place, self.values[owner], self.goal[owner], self.own.agreed)
 
 
-def _block(step: Cluster, table: Table) -> Block:
+def _block(step: Cluster, table: Table) -> Hung:
     """The block in every cell: branch by branch, each frame by frame."""
     own, eqs = own_rows(step), table.eqs
     b, f = table.branches, table.inputs.frames
@@ -93,7 +96,7 @@ def _block(step: Cluster, table: Table) -> Block:
         if j in at:
             goal[:, at[j], axis] = np.broadcast_to(given, (b, f)).ravel()
     wished = own.wished or bool(table.inputs.targets)
-    return Block(step, own, x, values, goal, table.reach, table.slack, wished)
+    return Hung(step, own, x, values, goal, table.reach, table.slack, wished)
 
 
 @dataclass
@@ -112,7 +115,7 @@ class _Poses:
         return rounds < LEAST_ROUNDS or rounds - 1 - self.latest < QUIET_ROUNDS or lone
 
 
-def solve_block(block: Block, table: Table) -> list[Array]:
+def solve_block(block: Hung, table: Table) -> list[Array]:
     """For every branch the solutions ``(k, joints, dim)`` found."""
     own, b = block.own, len(block.x)
     rng = np.random.default_rng(1789)
@@ -137,7 +140,7 @@ def solve_block(block: Block, table: Table) -> list[Array]:
     return [np.array(s.known).reshape(-1, len(own.inside), table.eqs.dim) for s in sets]
 
 
-def _near(block: Block, start: Array, owner: Ints, turn: Ints) -> tuple[Array, Ints, Ints]:
+def _near(block: Hung, start: Array, owner: Ints, turn: Ints) -> tuple[Array, Ints, Ints]:
     """Poses near solutions, with their branches and rounds."""
     own, values, goal = block.own, block.values, block.goal
     place, near = newton(own, start, values[owner], goal[owner])
@@ -147,7 +150,7 @@ def _near(block: Block, start: Array, owner: Ints, turn: Ints) -> tuple[Array, I
     return place[some], owner[some], turn[some]
 
 
-def _sort_in(block: Block, sets: Sequence[_Poses], place: Array, owner: Ints, turn: Ints,
+def _sort_in(block: Hung, sets: Sequence[_Poses], place: Array, owner: Ints, turn: Ints,
              table: Table) -> None:
     """Count the solutions of some rounds; new ones that are poses apart become known."""
     if not len(place):
@@ -199,7 +202,7 @@ def _add(poses: _Poses, place: Array, dead: bool, count: int, turn: int, reach: 
     poses.latest = max(poses.latest, turn)
 
 
-def _apart(block: Block, place: Array, owner: Ints, table: Table) -> tuple[Array, Mask]:
+def _apart(block: Hung, place: Array, owner: Ints, table: Table) -> tuple[Array, Mask]:
     """The poses polished, and which hold and don't move freely; what moves freely is told."""
     if not len(place):
         return place, np.zeros(0, dtype=bool)
@@ -240,7 +243,7 @@ def cluster_branches(step: Cluster, table: Table, number: int) -> None:
         _narrow(block, table, x, index)
 
 
-def _narrow(block: Block, table: Table, x: Array, owner: Ints) -> None:
+def _narrow(block: Hung, table: Table, x: Array, owner: Ints) -> None:
     margin = block.margin(x, owner).reshape(-1, table.inputs.frames)
     table.sines.append(margin**2)
     table.narrow(margin)

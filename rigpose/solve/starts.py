@@ -11,9 +11,12 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from rigpose.model.equations import Array, Body, Equations
 from rigpose.solve.ownrows import OwnRows
+
+Mask = NDArray[np.bool_]
 
 ORDERS = 4
 """Orders in which parts are thrown: which of two bones leads a joint differs between them, and in
@@ -88,7 +91,7 @@ def _order(own: OwnRows, rng: np.random.Generator, whole: bool) -> list[Throw]:
         stands[list(throw.dst)] = True
 
 
-def _next(eqs: Equations, bodies: list[Body], bones: list[int], stands: Array,
+def _next(eqs: Equations, bodies: list[Body], bones: list[int], stands: Mask,
           whole: bool) -> Throw | None:
     held = [int(stands[b.joints].sum()) for b in bodies]
     most = max(held, default=0)
@@ -101,7 +104,7 @@ def _next(eqs: Equations, bodies: list[Body], bones: list[int], stands: Array,
     return _thrown(bodies[held.index(most)], stands) if bodies else None
 
 
-def _thrown(body: Body, stands: Array) -> Throw:
+def _thrown(body: Body, stands: Mask) -> Throw:
     """A body with up to three standing joints, which don't lie in one line if there are such."""
     shape = body.shape
     up = [k for k, j in enumerate(body.joints) if stands[j]]
