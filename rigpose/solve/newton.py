@@ -67,8 +67,9 @@ class Hung:
         room = max(self.slack, 1e-11) * self.reach * 4
         if len(own.agreed) < len(own.rows):
             good &= np.abs(own.residual(place, v, g)).max(axis=1) < room
-        elif self.wished and not good.all():
-            some = np.flatnonzero(~good & np.isfinite(size))
+            return place, good
+        some = np.flatnonzero(~good & np.isfinite(size))
+        if self.wished and len(some):
             rough, size = polished(own, place[some], v[some], g[some], own.choice, steps)
             off = np.abs(own.residual(rough, v[some], g[some])).max(axis=1, initial=0.0)
             fine = (size < HOLD) & (off < room)
