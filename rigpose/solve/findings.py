@@ -15,6 +15,8 @@ from rigpose.solve.words import amount, count, large, listed
 
 T = TypeVar("T")
 SHOWN = 4
+MOST_WRITTEN = 10**300
+"""Counts from here on are written as text: what reads JSON would take them for infinite."""
 
 
 @dataclass(frozen=True)
@@ -42,14 +44,13 @@ class Report:
     moved : joints that rest moves from their written places, and how far
     unplaced : joints that have no written place; rest has found one
     freedoms : finite mobility; freedoms_first_order : by rank at rest; freedoms_counted :
-    coordinates less conditions; why : how they come to differ, in words
+    coordinates less conditions; why : how they come to differ, in words; None : not known
     moving : groups that still move; loose : joints that nothing holds
     redundant : sets of which any one part could go; rounding : motions that rounding has stopped
     gaps : lengths that can never close; suggestions : what makes the poses finite, best first
     groups : for a rig that doesn't move, its independent groups with their branches
     slack, close : the rig's tolerances, fractions of the size
-    measured : whether all motions were tried (False: in part known to first order only, and
-    redundant lengths not at all, as the rig is large)
+    measured : whether redundant lengths were looked for (False: not all, as the rig is large)
     stopped : whether the caller stopped the work, so that the later fields are empty
     """
 
@@ -65,8 +66,8 @@ class Report:
     slack: float
     close: float
     unplaced: tuple[str, ...] = ()
-    freedoms: int = 0
-    freedoms_first_order: int = 0
+    freedoms: int | None = 0
+    freedoms_first_order: int | None = 0
     freedoms_counted: int = 0
     why: tuple[str, ...] = ()
     moving: tuple[Moving, ...] = ()
@@ -98,6 +99,9 @@ class Report:
         plain["gaps"] = [{**asdict(g), "short": g.short} for g in self.gaps]
         plain["suggestions"] = [{**asdict(s), "names": s.names} for s in self.suggestions]
         plain["moved"] = dict(self.moved)
+        for told in (*plain["suggestions"], *plain["groups"]):
+            if told["branches"] is not None and told["branches"] >= MOST_WRITTEN:
+                told["branches"] = large(told["branches"])
         return plain
 
     def __str__(self) -> str:
@@ -110,8 +114,11 @@ class Report:
         yield from self._short(self.gaps, self._gap, "lengths that can never close")
         if self.loose:
             yield f"Nothing holds {listed(self.loose)}."
-        yield (f"Freedoms: {self.freedoms}; to first order {self.freedoms_first_order}; "
-               f"counted {self.freedoms_counted}.")
+        if self.freedoms is None:
+            yield f"Freedoms: not known; counted {self.freedoms_counted}."
+        else:
+            yield (f"Freedoms: {self.freedoms}; to first order {self.freedoms_first_order}; "
+                   f"counted {self.freedoms_counted}.")
         yield from (f"  {sentence}" for sentence in self.why)
         yield from self._short(self.moving, self._mover, "groups that move")
         yield from self._short(self.redundant, self._set, "redundant sets")
@@ -178,7 +185,7 @@ class Report:
         for s in best:
             how = "joint by joint" if s.block == 1 else f"{s.block} joints at once"
             most = "" if s.branches is None else f", at most {count(s.branches, 'pose')}"
-            weakly = ", but weakly" if s.margin < WEAK else ""
+            weakly = ", but weakly" if s.margin is not None and s.margin < WEAK else ""
             yield f"  {listed(s.names, SHOWN)}: {how}{most}{weakly}."
         if len(self.suggestions) > len(best):
             yield f"  and {count(len(self.suggestions) - len(best), 'more way')}."

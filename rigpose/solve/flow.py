@@ -43,7 +43,8 @@ def _heading(heading: Heading | None) -> set[Point]:
     return set(heading.base) if heading and heading.base else set()
 
 
-def _curve(curve: Circle | Line | Sheet) -> set[Point]:
+def on_curve(curve: Circle | Line | Sheet) -> set[Point]:
+    """Points that a curve hangs on."""
     if isinstance(curve, Sheet):
         return set()
     if isinstance(curve, Circle):
@@ -59,7 +60,7 @@ def _meet(step: Meet) -> set[Point]:
     one, two = step.first, step.second
     if type(one) is type(two) is Circle and one.radius.points is two.radius.points is None:
         return {one.centre, two.centre}
-    return _curve(one) | _curve(two)
+    return on_curve(one) | on_curve(two)
 
 
 def _carried(step: Carry | Hang) -> set[Point]:
@@ -87,7 +88,7 @@ _READS: dict[type[Step], Callable[[Any], set[Point]]] = {
     Shift: lambda step: {step.point, step.minus, step.plus},
     Orient: lambda step: {*_heading(step.heading), *_points(*step.local, *step.line)},
     Level: lambda step: _points(*step.local, *step.pair),
-    Junction: lambda step: set[Point]().union(*map(_curve, step.curves)),
+    Junction: lambda step: set[Point]().union(*map(on_curve, step.curves)),
     Fit: lambda step: {step.dst, *(c.centre for c in step.circles)},
     Check: lambda step: set(step.points),
 }

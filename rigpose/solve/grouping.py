@@ -15,7 +15,7 @@ Node = int
 """A point, or below zero a value: -1 less its number."""
 
 
-class _Sets:
+class Sets:
     """Union-find over points and values that depend on a choice."""
 
     def __init__(self) -> None:
@@ -57,7 +57,7 @@ def grouped(
 ) -> tuple[tuple[Step, ...], tuple[Group, ...]]:
     """Base steps and groups, each with its checks as early as they can stand."""
     ordered = _interleave(eqs, steps, list(checks))
-    sets, many = _Sets(), set[Node]()
+    sets, many = Sets(), set[Node]()
     owner: list[Node | None] = []
     for step in ordered:
         touched = [x for x in _read_fully(step, eqs) if x in many]

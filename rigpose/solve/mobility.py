@@ -40,9 +40,9 @@ class Motions:
     rest; pose (n, dim) : a pose close to rest, moved along a real motion (rest if there is none)
     tangents (c, finite) : the real motions there; lame (c, ...) : those of first order only
     stresses (m, ...) : combinations of rows that are redundant there
-    exact : whether ``tangents`` hold to rounding; structural : known to
-    first order only
-    singular : singular values at rest, rising
+    exact : whether ``tangents`` hold to rounding; structural : counted by structure, redundant
+    rows not looked for; singular : singular values at rest, rising
+    unknown : structure doesn't tell how many motions there are
     """
 
     piece: Piece
@@ -56,6 +56,7 @@ class Motions:
     exact: bool = True
     structural: bool = False
     singular: Array = field(default_factory=lambda: np.zeros(0))
+    unknown: bool = False
 
 
 @dataclass(frozen=True)

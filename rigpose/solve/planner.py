@@ -8,6 +8,8 @@ Ait-Aoudia, Jegou and Michelucci 1993) with independence measured at the rest po
 
 from __future__ import annotations
 
+from collections import Counter
+from collections.abc import Iterator
 from dataclasses import dataclass, field
 from functools import lru_cache
 from itertools import count
@@ -143,7 +145,7 @@ class Planner:
                 continue
             if number is None and solid.uses & self.net.absorbed:
                 continue
-            if sum(j in placed for j in solid.local) > 1:
+            if sum(j in placed for j in solid.local) > 1 or not self._may_grow(solid):
                 continue
             grown = self._grow_from(number, solid)
             if grown is not None:
@@ -151,14 +153,31 @@ class Planner:
                 made = True
         return made
 
-    def _seeds(self) -> list[tuple[int | None, Solid]]:
-        found: list[tuple[int | None, Solid]] = list(enumerate(self.net.solids))
-        d = self.eqs.distances
-        for k in range(len(d.names)):
-            a, b = map(int, d.ends[k])
-            if d.value[k] < 0 and not (a in self.ground.place and b in self.ground.place):
-                found.append((None, self.net.bone(k)))
-        return found
+    def _seeds(self) -> Iterator[tuple[int | None, Solid]]:
+        net, placed = self.net, self.ground.place
+        yield from list(enumerate(net.solids))
+        for k, (a, b) in enumerate(net.ends):
+            if net.value[k] < 0 and not (a in placed and b in placed) and (
+                    ("distance", k) not in net.absorbed):
+                yield None, net.bone(k)
+
+    def _may_grow(self, solid: Solid) -> bool:
+        """Whether a body's own joints give another joint curves enough for a first placing."""
+        net, local = self.net, solid.local
+        curves: Counter[int] = Counter()
+        met: set[int] = set()
+        for j in local:
+            if j in net.cranks_on or (net.slots and j in net.rails_on):
+                return True
+            curves.update(other for _, other in net.links.get(j, ()) if other not in local)
+            for number in net.solids_on.get(j, ()):
+                other = net.solids[number].local
+                if other is not local:
+                    if number in met:
+                        return True
+                    met.add(number)
+                    curves.update(i for i in other if i not in local)
+        return max(curves.values(), default=0) >= self.eqs.dim
 
     def _grow_from(self, number: int | None, solid: Solid) -> Solid | None:
         # Rigid groups have at least one more joint that two parts of them hold; look for one

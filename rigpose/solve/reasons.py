@@ -24,11 +24,16 @@ def reasons(found: Study, report: Report) -> Iterator[str]:
         yield f"Nothing is pinned: {whole} of the freedoms move the rig as a whole."
     for m in found.motions:
         joints = listed([names[j] for j in m.piece.joints])
-        if m.structural:
-            yield (f"{joints}: over {DENSE} coordinates hang together, so motions are known to "
-                   "first order only, redundant lengths not at all.")
+        if m.unknown:
+            yield (f"{joints}: over {DENSE} coordinates hang together, and the order in which they "
+                   "can be placed does not tell how many freedoms they have.")
+        elif m.structural:
+            yield (f"{joints}: over {DENSE} coordinates hang together, so redundant lengths, "
+                   "which show to first order only, are not looked for.")
         elif m.first > m.finite:
             yield _first_order_only(m, names)
+    if report.freedoms is None:
+        return
     spare = [r for r in report.redundant if len(r.parts) > 1]
     if spare and report.freedoms > report.freedoms_counted:
         yield (f"Counting misses {report.freedoms - report.freedoms_counted}, as "

@@ -17,8 +17,8 @@ from rigpose.solve.reasons import reasons
 from rigpose.solve.redundant import redundant_sets
 from rigpose.solve.rest import Rest, find_rest
 from rigpose.solve.rounded import rounding_of
-from rigpose.solve.study import Study
-from rigpose.solve.suggest import suggestions
+from rigpose.solve.study import DENSE, Study
+from rigpose.solve.suggest import suggestion_of, suggestions
 
 __all__ = ["BranchGroup", "Moving", "Report", "check"]
 
@@ -84,10 +84,12 @@ def _freedoms(report: Report, found: Study) -> Report:
     rest = found.rest
     names = rest.rig.joint_names
     moving = tuple(Moving(tuple(names[j] for j in g.joints), g.freedoms) for g in found.groups)
+    unknown = any(m.unknown for m in found.motions)
     report = replace(
-        report, freedoms=sum(m.finite for m in found.motions),
-        freedoms_first_order=sum(m.first for m in found.motions),
-        freedoms_counted=counted_freedoms(rest.rig), moving=moving,
+        report, freedoms=None if unknown else sum(m.finite for m in found.motions),
+        freedoms_first_order=None if unknown else sum(m.first for m in found.motions),
+        freedoms_counted=counted_freedoms(rest.rig),
+        moving=() if unknown else moving,
         redundant=redundant_sets(found.system, found.cut, found.motions, rest.scaled),
         measured=not any(m.structural for m in found.motions))
     return replace(report, why=tuple(reasons(found, report)))
@@ -100,8 +102,11 @@ def _rounding(report: Report, found: Study) -> Report:
 
 
 def _suggestions(report: Report, found: Study) -> Report:
-    if not report.assembles or not report.measured:
+    if not report.assembles or report.freedoms is None:
         return report
+    if any(m.finite and len(m.piece.columns) > DENSE for m in found.motions):
+        found_one = suggestion_of(found.rest, found.order)
+        return replace(report, suggestions=() if found_one is None else (found_one,))
     if report.freedoms:
         loose = {found.rest.rig.index[j] for j in report.loose}
         groups = [g for g in found.groups if not set(map(int, g.joints)) <= loose]

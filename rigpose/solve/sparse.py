@@ -1,47 +1,25 @@
-"""First-order motions of pieces too large for dense algebra.
-
-The smallest eigenvalues of the slopes' normal matrix, by Lanczos iteration on its sparse inverse,
-shifted a little so that it has one (`scipy.sparse.linalg.eigsh` in shift-invert mode; Lehoucq,
-Sorensen and Yang 1998, from memory). Squaring halves the digits, so what is below 1e-7 counts as
-zero.
-"""
+"""Motions of pieces too large for dense algebra: how many there are, by structure."""
 
 from __future__ import annotations
 
 import numpy as np
-from scipy.sparse import csc_array, diags_array, eye_array
-from scipy.sparse.linalg import eigsh
 
 from rigpose.model.equations import Array
 from rigpose.solve.mobility import Motions
-from rigpose.solve.pieces import Piece, slopes_at
-
-ZERO = 1e-7
-SHIFT = -1e-9
-MOST = 64
+from rigpose.solve.pieces import Piece
+from rigpose.solve.structure import Order
 
 
-def large_motions(piece: Piece, rest: Array) -> Motions:
-    """First-order motions of a piece at ``rest (n, dim)``, at most 64 of them found.
+def large_motions(piece: Piece, rest: Array, order: Order) -> Motions:
+    """How many motions a piece has at rest ``(n, dim)``, or that this is not known.
 
-    Finite ones are not tried: where lengths are redundant the result is marked ``structural``.
+    Which motions they are is not worked out, nor which of the surplus rows are redundant: with
+    such rows the result is marked ``structural``.
     """
-    slopes = slopes_at(piece.system, rest)[piece.rows][:, piece.columns]
-    scaled = diags_array(piece.weight) @ slopes
-    count = len(piece.columns)
-    normal = csc_array(scaled.T @ scaled + SHIFT**2 * eye_array(count))
-    start = np.random.default_rng(5).normal(size=count)
-    some = 8
-    while True:
-        value, vector = eigsh(normal, k=some, sigma=SHIFT, v0=start)
-        singular = np.sqrt(np.maximum(value, 0.0))
-        free = int((singular < ZERO).sum())
-        if free < some or some >= MOST:
-            break
-        some *= 2
-    order = np.argsort(singular)
-    tangents = np.linalg.qr(vector[:, order[:free]])[0]
-    spare = len(piece.rows) - (count - free)
+    count, mine = len(piece.columns), set(piece.joints.tolist())
+    free = sum(s.free for s in order.starts if s.joint in mine)
     none: Array = np.zeros((count, 0))
-    return Motions(piece, free, free, 1, rest, tangents, none, np.zeros((len(piece.rows), 0)),
-                   structural=spare > 0 or free == some, singular=singular[order])
+    unknown = bool(order.doubt[piece.joints].any())
+    spare = len(piece.rows) > count - free
+    return Motions(piece, free, free, 1, rest, none, none, np.zeros((len(piece.rows), 0)),
+                   structural=spare or unknown, unknown=unknown)

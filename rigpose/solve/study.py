@@ -5,12 +5,15 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import cached_property
 
+import numpy as np
+
 from rigpose.model.system import System
 from rigpose.solve.mobility import Motions, motions
 from rigpose.solve.moving import Mover, movers
 from rigpose.solve.pieces import Cut, Piece, cut
 from rigpose.solve.rest import Rest
 from rigpose.solve.sparse import large_motions
+from rigpose.solve.structure import Order, groups_of, order_of
 
 DENSE = 600
 """Unknowns of one piece up to which its motions are tried by steps."""
@@ -46,9 +49,27 @@ class Study:
     @cached_property
     def groups(self) -> tuple[Mover, ...]:
         """All groups that move, in the joints' order."""
-        return tuple(g for m in self.motions for g in movers(m))
+        few = (g for m in self.motions if len(m.piece.columns) <= DENSE for g in movers(m))
+        return tuple(sorted((*few, *self._large), key=lambda g: int(g.joints[0])))
+
+    @cached_property
+    def order(self) -> Order:
+        """The order in which all joints are placed with nothing known; for large pieces."""
+        return order_of(self.rest)
+
+    @property
+    def _large(self) -> list[Mover]:
+        """The groups of large pieces that move; their motions themselves are not worked out."""
+        large = [m for m in self.motions if len(m.piece.columns) > DENSE and m.finite]
+        if not large:
+            return []
+        mine = np.zeros(self.rest.equations.n, dtype=bool)
+        mine[np.concatenate([m.piece.joints for m in large])] = True
+        none = np.zeros((0, 0))
+        return [Mover(np.array(joints), sum(s.free for s in starts), self.rest.scaled, none)
+                for joints, starts in groups_of(self.order) if mine[joints[0]]]
 
     def _motions(self, piece: Piece) -> Motions:
         if len(piece.columns) <= DENSE:
             return motions(piece, self.rest.scaled, self.zero, self.rest.reach)
-        return large_motions(piece, self.rest.scaled)
+        return large_motions(piece, self.rest.scaled, self.order)

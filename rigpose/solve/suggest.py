@@ -16,11 +16,14 @@ from rigpose.solve.moving import Mover
 from rigpose.solve.plan import Group, Plan
 from rigpose.solve.planner import plan_for
 from rigpose.solve.rest import Rest
+from rigpose.solve.structure import Order
 
 WEAK = 1e-2
 """A margin below this is told as weak and comes last."""
 AXES = "xyz"
 PER_KIND = 8
+MOST_NAMED = 64
+"""Drives and targets that a person would still read."""
 PLANS = 1500
 """Joints times plans: a larger rig gets fewer plans."""
 
@@ -31,7 +34,7 @@ class Suggestion:
 
     block : how many joints must be solved together at most (1: each has a closed form)
     branches : how many poses at most (None: no bound is known)
-    margin : the least margin that they give where the rig was tried, 0 to 1
+    margin : the least margin that they give where the rig was tried, 0 to 1 (None: not measured)
     """
 
     drives: tuple[str, ...]
@@ -39,7 +42,7 @@ class Suggestion:
     lengths: tuple[Pair, ...]
     block: int
     branches: int | None
-    margin: float
+    margin: float | None
 
     @property
     def names(self) -> tuple[str, ...]:
@@ -68,7 +71,7 @@ def _joined(parts: list[Suggestion]) -> Suggestion:
     return Suggestion(
         tuple(d for p in parts for d in p.drives), tuple(t for p in parts for t in p.targets),
         tuple(x for p in parts for x in p.lengths), max(p.block for p in parts), branches,
-        min(p.margin for p in parts))
+        min((p.margin for p in parts if p.margin is not None), default=None))
 
 
 def _for_group(rest: Rest, group: Mover) -> list[Suggestion]:
@@ -81,7 +84,8 @@ def _for_group(rest: Rest, group: Mover) -> list[Suggestion]:
 
 
 def _rank(s: Suggestion, place: int) -> tuple[bool, int, bool, int, int]:
-    return (s.margin < WEAK, s.block, s.branches is None, s.branches or 0, place)
+    weak = s.margin is not None and s.margin < WEAK
+    return (weak, s.block, s.branches is None, s.branches or 0, place)
 
 
 def _few(every: list[Choice], most: int) -> Iterator[tuple[int, Choice]]:
@@ -136,3 +140,21 @@ def _bound(plan: Plan, joints: set[int]) -> int | None:
         bound = branch_bound(group)
         total = None if total is None or bound is None else total * bound
     return total
+
+
+def suggestion_of(rest: Rest, order: Order) -> Suggestion | None:
+    """For a rig too large to try many: the joints that were taken as given, as drives where one
+    moves such a joint, else as targets."""
+    eqs = rest.equations
+    drives, targets = [], []
+    for start in order.starts:
+        if start.drive >= 0:
+            drives.append(eqs.values[start.drive])
+        elif start.free in (1, eqs.dim):
+            axes = range(eqs.dim) if start.free > 1 else (start.axis,)
+            targets += [(eqs.rig.joint_names[start.joint], axis) for axis in axes]
+        else:
+            return None
+    if len(drives) + len(targets) > MOST_NAMED:
+        return None
+    return Suggestion(tuple(drives), tuple(targets), (), 1, 1 << order.choices, None)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from math import log10
 
 SEVERAL = 8
 
@@ -24,7 +25,8 @@ def large(n: int) -> str:
     """
     if n < 10**7:
         return str(n)
-    power = len(str(n)) - 1
+    power = int(n.bit_length() * log10(2))  # str() refuses more than some thousand digits
+    power -= 10**power > n
     return f"{-(-n // 10**power)}e{power}"
 
 
