@@ -135,7 +135,7 @@ def test_a_plate_free_to_tilt_reaches_a_place_in_all_the_ways_that_scipy_finds()
                          for corner, side in ((left, "left"), (right, "right"))]) / 4900
 
     rng, seen = np.random.default_rng(3), set()
-    for _ in range(150):
+    for _ in range(100):
         unknowns = root(loops, rng.uniform(-3, 3, 6), tol=1e-13).x
         if np.abs(loops(unknowns)).max() > 1e-11:
             continue
@@ -144,7 +144,7 @@ def test_a_plate_free_to_tilt_reaches_a_place_in_all_the_ways_that_scipy_finds()
         gaps = np.abs(found.positions[:, 0, joints] - np.array(list(places.values())))
         assert gaps.max(axis=(1, 2)).min() < 1e-5
         seen.add(int(gaps.max(axis=(1, 2)).argmin()))
-    assert len(seen) > 25
+    assert len(seen) > 20
 
 
 # -- continua and dead centres --------------------------------------------------------------------

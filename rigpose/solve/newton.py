@@ -158,14 +158,12 @@ def _sort_in(block: Hung, sets: Sequence[_Poses], place: Array, owner: Ints, tur
         return
     inside, same = block.own.inside, SAME * block.reach
     flat = place[:, inside].reshape(len(place), -1)
-    left: Mask = np.ones(len(place), dtype=bool)
-    for mine, poses in enumerate(sets):
-        for number, old in enumerate(poses.known):
-            hit = left & _alike(flat, owner, old.ravel(), mine, same)
-            poses.seen[number] += int(hit.sum())
-            left &= ~hit
+    # Branch by branch, as there may be a thousand.
+    order = np.argsort(owner, kind="stable")
+    kinds = [_kinds(flat, mine, sets[owner[mine[0]]], same)
+             for mine in np.split(order, np.flatnonzero(np.diff(owner[order])) + 1)]
     # One of each kind is polished; those that are polished into one are one.
-    first, count = _kinds(flat, owner, left, same)
+    first, count = np.array([n for k in kinds for n in k], dtype=np.intp).reshape(-1, 2).T
     polished, good = _apart(block, place[first], owner[first], table)
     first, count, polished = first[good], count[good], polished[good]
     dead = block.margin(polished, owner[first]) == 0 if len(first) else first
@@ -174,21 +172,19 @@ def _sort_in(block: Hung, sets: Sequence[_Poses], place: Array, owner: Ints, tur
              block.reach)
 
 
-def _alike(flat: Array, owner: Ints, one: Array, mine: int, same: float) -> Mask:
-    alike: Mask = (owner == mine) & (np.abs(flat - one).max(axis=1, initial=0) < same)
-    return alike
-
-
-def _kinds(flat: Array, owner: Ints, left: Mask, same: float) -> tuple[Ints, Ints]:
-    """The first of every kind of solution among those left, and how many there are of it."""
-    first, count = [], []
-    rest = np.flatnonzero(left)
-    while len(rest):
-        hit = _alike(flat[rest], owner[rest], flat[rest[0]], int(owner[rest[0]]), same)
-        first.append(rest[0])
-        count.append(int(hit.sum()))
-        rest = rest[~hit]
-    return np.array(first, dtype=np.intp), np.array(count, dtype=np.intp)
+def _kinds(flat: Array, mine: Ints, poses: _Poses, same: float) -> list[tuple[int, int]]:
+    """Solutions ``mine`` of one branch, those that are known counted: the first of every new kind,
+    and how many there are of it."""
+    for number, old in enumerate(poses.known):
+        hit = np.abs(flat[mine] - old.ravel()).max(axis=1, initial=0.0) < same
+        poses.seen[number] += int(hit.sum())
+        mine = mine[~hit]
+    new = []
+    while len(mine):
+        hit = np.abs(flat[mine] - flat[mine[0]]).max(axis=1, initial=0.0) < same
+        new.append((int(mine[0]), int(hit.sum())))
+        mine = mine[~hit]
+    return new
 
 
 def _add(poses: _Poses, place: Array, dead: bool, count: int, turn: int, reach: float) -> None:
