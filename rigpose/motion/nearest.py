@@ -7,6 +7,8 @@ of it is worked on first (Hart, Nilsson and Raphael 1968, with no estimate of wh
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import fields
+from functools import cached_property
 from heapq import heappop, heappush
 from itertools import count
 
@@ -22,15 +24,17 @@ from rigpose.motion.branchset import Branches
 from rigpose.motion.naming import Names
 from rigpose.motion.product import kept
 from rigpose.motion.streaming import single_frame, whole_group
+from rigpose.solve.alone import search_alone
 from rigpose.solve.clock import Clock
 from rigpose.solve.flow import writes
 from rigpose.solve.knowns import Given, Wished
+from rigpose.solve.longchains import bring_back
 from rigpose.solve.plan import Fit, Group
 from rigpose.solve.rows import Rows
 from rigpose.solve.run import run_steps
 from rigpose.solve.search import Context, base_table, cells_of, group_table
 from rigpose.solve.stream import part_of, stream_cells
-from rigpose.solve.table import Table
+from rigpose.solve.table import Inputs, Table
 
 MOST_NODES = 2048
 """Nodes after which best-first gives way to looking at all branches in blocks."""
@@ -44,8 +48,10 @@ def nearest_branch(rig: Rig, drives: Given | None = None, targets: Wished | None
 
     near : joint name to (dim,) a place in the rig's frame; only these joints count then
 
-    Best-first, so that sets far too large to list are no trouble. No branches where nothing
-    assembles. Raises BadInput like `find_branches`, and for an unknown joint in ``near``.
+    Best-first, so that sets far too large to list are no trouble; chains of very many choices
+    depth-first along the nearer ways: where that has to stop before all others are excluded, the
+    best pose found is told as stopped at a budget. No branches where nothing assembles. Raises
+    BadInput like `find_branches`, and for an unknown joint in ``near``.
     """
     context, clock = single_frame(rig, drives, targets)
     goal = _goal(context, near)
@@ -54,10 +60,17 @@ def nearest_branch(rig: Rig, drives: Given | None = None, targets: Wished | None
     for rows in picks:
         found = weaker(found, rows.found)
     one = made(context, clock, np.zeros(1), [kept(context.rest, p) for p in picks], found)
-    # Alone in its set it would have nothing to be told from: it is named by all its bends.
-    told, none = range(one.signs.shape[1]), np.zeros(len(one), dtype=np.intp)
-    one.__dict__["names"] = Names(rig, one.signs, told, none, one.meets)
-    return one
+    return Lone(**{f.name: getattr(one, f.name) for f in fields(one)})
+
+
+class Lone(Branches):
+    """The only branch of its set: with nothing to be told from it is named by all its bends."""
+
+    @cached_property
+    def names(self) -> Names:
+        """Its one name."""
+        told, none = range(self.signs.shape[1]), np.zeros(len(self), dtype=np.intp)
+        return Names(self.rig, self.signs, told, none, self.meets)
 
 
 def _goal(context: Context, near: Mapping[str, npt.ArrayLike] | None) -> Array:
@@ -83,8 +96,10 @@ def nearest_rows(context: Context, group: Group, clock: Clock, most: int,
     aim = context.rest.scaled if goal is None else goal
     if not group.binary:
         return _nearest_of(whole_group(context, group, clock), aim, most)
-    base = base_table(context, clock.whole(slice(0, 1)), False)
-    straight = _straight_on(context, group, base, aim) if most == 1 else None
+    inputs = clock.whole(slice(0, 1))
+    base = base_table(context, inputs, False)
+    straight = _alone(context, group, base, inputs, aim) or _straight_on(
+        context, group, base, aim) if most == 1 else None
     if straight is not None:
         return straight
     tables = _best_first(context, group, group_table(base, None), aim, most)
@@ -97,6 +112,17 @@ def nearest_rows(context: Context, group: Group, clock: Clock, most: int,
     cells = [cells_of(group, t) for t in tables]
     rows = [Rows(group, c.codes, c.places, c.alive, c.margin, c.values) for c in cells]
     return rows[0] if len(rows) == 1 else _stacked(rows)
+
+
+def _alone(context: Context, group: Group, base: Table, inputs: Inputs, aim: Array) -> (
+        Rows | None):
+    """The nearest branch of a group of very many choices, depth first along the nearer ways."""
+    cells = search_alone(context, group, base, 1, aim)
+    if cells is None:
+        return None
+    bring_back(context.rest, context.plan, cells, base, inputs)
+    return Rows(group, cells.signs, cells.places, cells.alive, cells.margin, cells.values,
+                found=cells.found, turning=cells.turning)
 
 
 def _straight_on(context: Context, group: Group, base: Table, aim: Array) -> Rows | None:

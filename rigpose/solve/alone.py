@@ -7,10 +7,11 @@ while, so that crossings close to a dead centre need no second look.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
+from rigpose.ground.words import Found
 from rigpose.kernels.plain import Place
 from rigpose.model.equations import Array
 from rigpose.solve.flow import writes
@@ -23,6 +24,8 @@ LONG = 64
 """Choices one after another from which on a group is searched so."""
 MOST_TRIES = 16
 """Steps tried, as many times those of the plan, after which arrays do better."""
+MOST_MORE = 1 << 19
+"""Steps tried at most after the plan has been gone through once."""
 
 
 @dataclass
@@ -41,7 +44,8 @@ def search_alone(context: Context, group: Group, base: Table, most: int,
     """The branches of one frame, or None where this is not the way to find them: few choices, a
     step that has no plain form, more than ``most`` branches, too many tries.
 
-    aim : (n_joints, dim), NaN where a joint doesn't count: then only the branch nearest to it
+    aim : (n_joints, dim), NaN where a joint doesn't count: then only the branch nearest to it, or
+    the nearest found where the tries come to an end
     """
     if group.bits <= LONG or not group.binary or base.inputs.frames != 1 or (
             base.alive is not None and not base.alive.all()):
@@ -54,9 +58,11 @@ def search_alone(context: Context, group: Group, base: Table, most: int,
         takers.append(taker)
     walk = Walk(_state(base, context.plan.points), [0] * group.bits)
     costs = _goals(group, aim)
-    if not _run(walk, takers, costs, most, aim is not None):
+    ended = _run(walk, takers, costs, most, aim is not None)
+    if not ended and (aim is None or not walk.found):
         return None
-    return _cells(context, group, walk, base)
+    cells = _cells(context, group, walk, base)
+    return cells if ended else replace(cells, found=Found.BUDGET)
 
 
 def _state(base: Table, points: int) -> State:
@@ -84,7 +90,7 @@ def _run(walk: Walk, takers: list[Taker], costs: list[tuple[tuple[int, Place], .
          nearest: bool) -> bool:
     """Whether the search came to its end."""
     state, k, cost, least = walk.state, 0, 0.0, float("inf")
-    tries, place = MOST_TRIES * len(takers), walk.state.place
+    tries, place = min(MOST_TRIES * len(takers), len(takers) + MOST_MORE), walk.state.place
     while tries > 0:
         while k < len(takers):
             tries -= 1
@@ -109,15 +115,26 @@ def _run(walk: Walk, takers: list[Taker], costs: list[tuple[tuple[int, Place], .
             elif len(walk.found) == most:
                 return False
             walk.found.append((list(place), list(walk.signs), state.margin))
-        if not walk.waiting:
+        back = _back(walk, costs, least)
+        if back is None:
             return True
+        k, cost = back
+    return False
+
+
+def _back(walk: Walk, costs: list[tuple[tuple[int, Place], ...]], least: float) -> (
+        tuple[int, float] | None):
+    """Takes the last way not taken that costs less than the least so far; the step after it and
+    its cost, or None where there is none."""
+    while walk.waiting:
         k, other, sign, margin, cost = walk.waiting.pop()
-        state.margin = margin
+        walk.state.margin = margin
         _take(walk, other, sign)
         for p, goal in costs[k]:
-            cost += _gap(place[p], goal)
-        k += 1
-    return False
+            cost += _gap(walk.state.place[p], goal)
+        if cost < least:
+            return k + 1, cost
+    return None
 
 
 def _take(walk: Walk, choice: Choice, sign: int) -> None:

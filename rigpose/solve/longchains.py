@@ -41,18 +41,20 @@ def bring_back(rest: Rest, plan: Plan, cells: Cells, base: Table, inputs: Inputs
     goal = np.zeros((1, eqs.n, eqs.dim))
     for (j, axis), array in inputs.targets.items():
         goal[0, j, axis] = array[0]
-    places = [np.array(np.broadcast_to(p, (len(p), len(cells.codes), 1))) for p in cells.places]
+    shape = (eqs.dim, len(cells.codes), 1)
+    places = np.stack([np.broadcast_to(p, shape) for p in cells.places])[..., 0]
+    moved = False
     for row in live:
         x = eqs.at.copy()
         for j, place in base.points.items():
             if 0 <= j < eqs.n:
                 x[j] = place[:, 0, 0]
-        for j, place in zip(joints, places, strict=True):
-            x[j] = place[:, row, 0]
+        x[joints] = places[:, :, row]
         if _corrected(system, x, values, goal, columns, rest.reach):
-            for j, place in zip(joints, places, strict=True):
-                place[:, row, 0] = x[j]
-            cells.places = places
+            places[:, :, row] = x[joints]
+            moved = True
+    if moved:
+        cells.places = list(places[..., None])
 
 
 def _corrected(system: System, x: Array, values: Array, goal: Array, columns: Ints,
