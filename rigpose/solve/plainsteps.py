@@ -118,12 +118,13 @@ def _length(length: Length, table: Table) -> float | None:
 
 
 def _choice(step: Meet | Junction, crossing: Crossing, delta: float,
-            rate: tuple[float, float, float], limit: float, held: bool = False) -> Choice | bool:
+            rate: tuple[float, float, float], table: Table, held: bool = False) -> Choice | bool:
     """As `run.choose`: touching surfaces within their error bound hold both ways. Where a fit
     follows (``held``), that knows the margin."""
     base, side, sine2, sine = crossing
     per_place, radius, own = rate
-    if abs(sine2) <= min(per_place * delta + own, CAREFUL):
+    limit = FORGIVEN * table.reach
+    if abs(sine2) <= min(per_place * min(delta, table.sure) + own, CAREFUL):
         return Choice(step.dst, step.bit, base, base, min(sqrt(2 * radius * delta), limit),
                       1.0 if held else 0.0)
     if not sine2 > 0.0:
@@ -155,7 +156,7 @@ def _(step: Meet, table: Table) -> Taker | None:
 def _two_circles(step: Meet, table: Table, r1: float, r2: float) -> Taker:
     assert isinstance(step.first, Circle) and isinstance(step.second, Circle)
     a, b = step.first.centre, step.second.centre
-    rounding, limit, small = table.rounding, FORGIVEN * table.reach, min(r1, r2)
+    rounding, sure, small = table.rounding, table.sure, min(r1, r2)
     far, near, scale = (r1 + r2) ** 2, (r1 - r2) ** 2, EPS / (r1 * r2) ** 2
 
     def take(state: State) -> Choice | bool | None:
@@ -163,11 +164,11 @@ def _two_circles(step: Meet, table: Table, r1: float, r2: float) -> Taker:
         crossing = circle_circle(c1, r1, c2, r2)
         delta = rounding + state.bound[a] + state.bound[b]
         long = distance(c1, c2)
-        if crossing is None or long <= ONE_PLACE * delta:
+        if crossing is None or long <= ONE_PLACE * min(delta, sure):
             return None
         d2 = long * long
         own = (abs(far - d2) * (d2 + near) + abs(d2 - near) * (far + d2)) * scale
-        return _choice(step, crossing, delta, (2 * long / (r1 * r2), small, own), limit)
+        return _choice(step, crossing, delta, (2 * long / (r1 * r2), small, own), table)
 
     return take
 
@@ -177,7 +178,7 @@ def _line(step: Meet, table: Table, line: Line, radius: float) -> Taker | None:
     if line.moved is not None or line.kind not in ("fixed", "axis", "across"):
         return _by_arrays(step, table)
     assert isinstance(step.second, Circle)
-    centre, rounding, limit = step.second.centre, table.rounding, FORGIVEN * table.reach
+    centre, rounding = step.second.centre, table.rounding
     through, direction = line.through, line.direction
     if line.kind == "axis":
         given = float(table.inputs.targets[line.joint, line.axis][0])
@@ -192,7 +193,7 @@ def _line(step: Meet, table: Table, line: Line, radius: float) -> Taker | None:
         crossing = line_circle(through, direction, state.place[centre], radius)
         delta = rounding + state.bound[centre]
         return None if crossing is None else _choice(
-            step, crossing, delta, (2.0 / radius, radius, 16 * EPS), limit)
+            step, crossing, delta, (2.0 / radius, radius, 16 * EPS), table)
 
     return take
 
@@ -235,18 +236,18 @@ def _(step: Junction, table: Table) -> Taker | None:
     if len(circles) != 3 or not all(r is not None and r > 0.0 for r in radii):
         return _by_arrays(step, table)
     (a, b, c), (r1, r2, r3) = (c.centre for c in circles), (r for r in radii if r is not None)
-    rounding, limit, product = table.rounding, FORGIVEN * table.reach, r1 * r2 * r3
+    rounding, sure, product = table.rounding, table.sure, r1 * r2 * r3
 
     def take(state: State) -> Choice | bool | None:
         made = three_spheres(state.place[a], r1, state.place[b], r2, state.place[c], r3)
         delta = rounding + state.bound[a] + state.bound[b] + state.bound[c]
-        if made is None or made[1] <= (ONE_PLACE * delta) ** 2 * made[2]:
+        if made is None or made[1] <= (ONE_PLACE * min(delta, sure)) ** 2 * made[2]:
             return None
         crossing, area2, _, lever = made
         share = area2 / (product * product)
         rate = (2 * r1 * (1 + lever) * share, r1 * (1 + lever), 16 * EPS * r1 * r1 * (1 + lever)
                 * share)
-        return _choice(step, crossing, delta, rate, limit, step.fitted)
+        return _choice(step, crossing, delta, rate, table, step.fitted)
 
     return take
 

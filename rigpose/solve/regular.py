@@ -10,6 +10,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from rigpose.model.equations import Array, Ints
 from rigpose.model.system import System
@@ -29,8 +30,12 @@ FEW = 24
 MANY = 1 << 16
 LEAST = 1e-12
 """Squared singular values below this are rounding."""
+POOR = 1e9
+"""Condition of normal equations from which on they are looked at axis by axis."""
 WIDEST = 400
 """Coordinates of a group above which dense rows cost too much."""
+MOST = 1 << 31
+"""So many multiplications are spent on it at most."""
 BATCH = 256
 
 
@@ -74,14 +79,27 @@ def _least(jac: Array, dim: int) -> Array:
         return out
     a = jac[good]
     turned = a.transpose(0, 2, 1)
-    square, axes = np.linalg.eigh(turned @ a)
-    full = square[:, 0] > LEAST
-    inverse = (axes / np.maximum(square, LEAST)[:, None]) @ (axes.transpose(0, 2, 1) @ turned)
-    each = inverse.reshape(len(a), -1, dim, rows)
+    square = turned @ a
+    try:
+        own = np.linalg.inv(square)
+    except np.linalg.LinAlgError:
+        own = np.full(square.shape, np.inf)
+    full = np.abs(square).max(axis=(1, 2)) * np.abs(own).max(axis=(1, 2)) < POOR
+    poor = np.flatnonzero(~full)
+    if len(poor):
+        own[poor], full[poor] = _by_axes(square[poor])
+    each = (own @ turned).reshape(len(a), -1, dim, rows)
     moved = np.sqrt(np.einsum("mjdr,mjdr->mjr", each, each).max(axis=(1, 2)))
     least = np.minimum(1.0 / moved, 1.0)
     out[good] = np.where(full & (least > HELD), least, 0.0)
     return out
+
+
+def _by_axes(square: Array) -> tuple[Array, NDArray[np.bool_]]:
+    """Inverses of symmetric matrices through their own axes, and which have full rank."""
+    values, axes = np.linalg.eigh(square)
+    inverse = (axes / np.maximum(values, LEAST)[:, None]) @ axes.transpose(0, 2, 1)
+    return inverse, values[:, 0] > LEAST
 
 
 def poses_of(context: Context, base: Table, rows: Rows, row: Ints, frame: Ints,
@@ -119,7 +137,7 @@ def shown_margin(context: Context, rows: Rows, clock: Clock) -> Array:
     few = len(joints) * context.plan.eqs.dim <= FEW and rows.alive.size <= MANY
     with np.errstate(invalid="ignore"):
         row, frame = np.nonzero(rows.alive & (rows.margin < (1.0 if few else LOW)))
-    if not len(row):
+    if not len(row) or len(row) * (len(joints) * context.plan.eqs.dim) ** 3 > MOST:
         return rows.margin
     base = shared_base(context, clock.whole(slice(0, clock.count)))
     margin = np.array(rows.margin)

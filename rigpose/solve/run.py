@@ -178,7 +178,8 @@ def _without_free(step: Meet, table: Table, crossing: Crossing, way: Array,
                   difference: Array | float) -> Crossing:
     """Equal circles about one point meet everywhere: the joint turns freely, which is told."""
     assert isinstance(step.first, Circle) and isinstance(step.second, Circle)
-    room = ONE_PLACE * parents_bound(table, (step.first.centre, step.second.centre))
+    bound = parents_bound(table, (step.first.centre, step.second.centre))
+    room = ONE_PLACE * np.minimum(bound, table.sure)
     free = (np.sqrt(dot(way, way)) <= room) & (difference <= room)
     base, side, sine2, sine = crossing
     alive = free if table.alive is None else free & table.alive
@@ -218,7 +219,7 @@ def choose(
     if table.careful:
         per_place, radius, own = rate()
         delta = parents_bound(table, parents)
-        allowed = np.minimum(per_place * delta + own, CAREFUL)
+        allowed = np.minimum(per_place * np.minimum(delta, table.sure) + own, CAREFUL)
         touch = np.abs(sine2) <= allowed
         if touch.any():
             side = np.where(touch, 0.0, side)

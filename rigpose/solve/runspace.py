@@ -124,7 +124,7 @@ def _in_line(step: Junction, table: Table, crossing: Crossing,
     circle, on which the joint turns freely: that is told, and no pose is listed."""
     (c1, r1), (c2, r2) = spheres[:2]
     e = c2 - c1
-    room = ONE_PLACE * parents_bound(table, _points(step))
+    room = ONE_PLACE * np.minimum(parents_bound(table, _points(step)), table.sure)
     if sheets:
         through, n = sheets[0]
         off = dot(through - c1, n)

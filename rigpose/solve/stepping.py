@@ -177,7 +177,8 @@ def _empty(group: Group, start: Cells, frames: int) -> Rows:
     b = len(start.codes)
     return Rows(group, start.codes, [np.full((len(p), b, frames), np.nan) for p in start.places],
                 np.zeros((b, frames), dtype=bool), np.full((b, frames), np.nan),
-                {v: np.full((b, frames), np.nan) for v in start.values}, found=start.found)
+                {v: np.full((b, frames), np.nan) for v in start.values}, found=start.found,
+                turning=start.turning)
 
 
 def _write(rows: Rows, frame: int, cells: Cells) -> None:
@@ -226,4 +227,4 @@ def _stacked(a: Rows, b: Rows) -> Rows:
                 [np.concatenate([p, q], axis=1) for p, q in zip(a.places, b.places, strict=True)],
                 np.concatenate([a.alive, b.alive]), np.concatenate([a.margin, b.margin]),
                 {v: np.concatenate([a.values[v], b.values[v]]) for v in a.values},
-                found=weaker(a.found, b.found))
+                found=weaker(a.found, b.found), turning=a.turning | b.turning)

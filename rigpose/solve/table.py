@@ -18,6 +18,7 @@ from rigpose.model.equations import Array, Equations, Ints
 from rigpose.solve.plan import Point
 
 Number = TypeVar("Number", bound=np.generic)
+SURE = 1e-11
 
 
 @dataclass
@@ -77,6 +78,12 @@ class Table:
     heights_wanted: bool = True
     turning: set[tuple[int, tuple[str, ...]]] = field(default_factory=set)
     budget: Budget = field(default_factory=Budget)
+
+    @property
+    def sure(self) -> float:
+        """The most that an error bound may say of what touches or coincides: along a chain bounds
+        grow by one over every margin, as rounding itself hardly ever does."""
+        return max(SURE * self.reach, 64.0 * self.rounding)
 
     @property
     def level(self) -> int:
