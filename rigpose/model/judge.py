@@ -166,12 +166,12 @@ def _plate_table(rig: Rig) -> list[tuple[Ints, Ints, Ints, Array]]:
         some = [rig.plates[r] for r in rows]
         joints = np.array([[rig.index[j] for j in p.joints] for p in some], dtype=np.intp)
         shape = np.array([p.shape for p in some])
-        pairs = np.array(list(combinations(range(int(k)), 2)), dtype=np.intp)
         longest, far = np.full(len(rows), -1.0), np.zeros((len(rows), 2), dtype=np.intp)
-        for pair in pairs:
-            gap = np.linalg.norm(shape[:, pair[1]] - shape[:, pair[0]], axis=1)
-            far[gap > longest] = pair
-            longest = np.maximum(longest, gap)
+        for i in range(int(k)):
+            gap = np.linalg.norm(shape - shape[:, i:i + 1], axis=2)
+            more = np.flatnonzero(gap.max(axis=1) > longest)
+            longest[more] = gap[more].max(axis=1)
+            far[more] = np.column_stack([np.full(len(more), i), gap[more].argmax(axis=1)])
         table.append((rows, joints, far, shape))
     return table
 

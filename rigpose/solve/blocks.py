@@ -11,6 +11,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.linalg import qr
 from scipy.sparse import csr_array, csr_matrix
 from scipy.sparse.csgraph import (
     breadth_first_order,
@@ -76,6 +77,9 @@ def jacobian_near(system: System, poses: Array) -> Array:
 
 def determined(jacobian: Array, joints: Ints, dim: int) -> NDArray[np.bool_]:
     """Which joints no first-order motion moves; ``jacobian`` has just their columns."""
+    if len(jacobian) > jacobian.shape[1]:
+        triangle = qr(jacobian, mode="r", check_finite=False)[0]
+        jacobian = np.asarray(triangle[:jacobian.shape[1]], dtype=np.float64)
     _, s, vt = np.linalg.svd(jacobian, full_matrices=True)
     rank = int((s > DEPENDENT * max(1.0, s[0] if len(s) else 1.0)).sum())
     moves = np.abs(vt[rank:]).reshape(-1, len(joints), dim)

@@ -11,7 +11,6 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Iterator
 from dataclasses import dataclass, field
-from functools import lru_cache
 from itertools import count
 
 import numpy as np
@@ -68,8 +67,8 @@ class Planner:
         self.ground = kind(self.net, self.looks, set(self.drives), self.points.__next__,
                            targets=self.targets, surplus=self.surplus)
 
-    def run(self) -> tuple[list[Step], tuple[int, ...]]:
-        """Steps in order and the joints that stay loose."""
+    def run(self) -> None:
+        """Place what can be placed."""
         ground = self.ground
         self._ties()
         ground.begin_ground()
@@ -84,8 +83,6 @@ class Planner:
             if forced is None:
                 break
             self.forced.append(forced)
-        loose = tuple(j for j in range(self.eqs.n) if j not in ground.place)
-        return ground.steps, loose
 
     # -- ties -----------------------------------------------------------------------------------
 
@@ -238,17 +235,30 @@ class Planner:
         return True
 
 
+def planner_for(
+    rest: Rest, drives: frozenset[int], targets: frozenset[tuple[int, int]]
+) -> Planner:
+    """A planner that has not run yet, for value numbers and (joint, axis) pairs to be known."""
+    poses = nearby(rest)
+    return Planner(rest.equations, drives, targets, poses,
+                   rest.surplus or _last_of_sets(rest, poses))
+
+
 def make_plan(
     rest: Rest, drives: frozenset[int], targets: frozenset[tuple[int, int]]
 ) -> Plan:
     """Plan for value numbers and (joint, axis) pairs that will be known."""
-    eqs = rest.equations
-    poses = nearby(rest)
-    planner = Planner(eqs, drives, targets, poses, rest.surplus or _last_of_sets(rest, poses))
-    steps, loose = planner.run()
-    ground = planner.ground
+    planner = planner_for(rest, drives, targets)
+    planner.run()
+    return finished(rest, planner)
+
+
+def finished(rest: Rest, planner: Planner) -> Plan:
+    """The plan of a planner that has run."""
+    eqs, ground = planner.eqs, planner.ground
+    loose = tuple(j for j in range(eqs.n) if j not in ground.place)
     used = ground.settled() | {("tie", t) for t in planner.settled_ties}
-    steps = alive_steps(_with_solids(planner, steps), eqs.n)
+    steps = alive_steps(_with_solids(planner, ground.steps), eqs.n)
     checks = list(checks_for(eqs, planner.net, ground, frozenset(used)))
     if eqs.dim == 3 and rest.misfit < AGREE:
         steps = with_fits(steps, ground.loci)
@@ -256,8 +266,8 @@ def make_plan(
     rigid = ("distance", "body", "rail", "way", "angle", "target", "tie")
     redundant = tuple(dict.fromkeys(
         c.parts[0] for c in checks if c.kind in rigid and c.parts))
-    return Plan(eqs=eqs, drives=tuple(eqs.values[v] for v in sorted(drives)),
-                targets=tuple(sorted(targets)), base=base, groups=groups, loose=loose,
+    return Plan(eqs=eqs, drives=tuple(eqs.values[v] for v in sorted(planner.drives)),
+                targets=tuple(sorted(planner.targets)), base=base, groups=groups, loose=loose,
                 redundant=redundant, points=next(planner.points), forced=tuple(planner.forced))
 
 
@@ -291,17 +301,32 @@ def _with_solids(planner: Planner, steps: list[Step]) -> list[Step]:
     return out
 
 
-@lru_cache(maxsize=256)
+_plans: dict[tuple[Rig, frozenset[str], frozenset[tuple[str, int]]], Plan] = {}
+MOST_PLANS = 256
+
+
 def plan_for(
     rig: Rig, drives: frozenset[str], targets: frozenset[tuple[str, int]]
 ) -> Plan:
-    """The cached plan for drive names and (joint name, axis) pairs."""
-    rest = find_rest(rig)
-    eqs = rest.equations
-    with all_kept():
-        return make_plan(
-            rest,
-            frozenset(eqs.value_index[d] for d in drives),
-            frozenset((rig.index[j], axis) for j, axis in targets),
-        )
+    """The plan for drive names and (joint name, axis) pairs, kept for those used last."""
+    key = (rig, drives, targets)
+    plan = _plans.get(key)
+    if plan is None:
+        rest = find_rest(rig)
+        eqs = rest.equations
+        with all_kept():
+            plan = make_plan(
+                rest,
+                frozenset(eqs.value_index[d] for d in drives),
+                frozenset((rig.index[j], axis) for j, axis in targets),
+            )
+        keep_plan(rig, drives, targets, plan)
+    return plan
 
+
+def keep_plan(rig: Rig, drives: frozenset[str], targets: frozenset[tuple[str, int]],
+              plan: Plan) -> None:
+    """Keep a plan that was made on the way, for `plan_for` to find."""
+    _plans[rig, drives, targets] = plan
+    while len(_plans) > MOST_PLANS:
+        _plans.pop(next(iter(_plans)), None)

@@ -23,9 +23,8 @@ from rigpose.solve.checks import checks_for
 from rigpose.solve.flow import has_choice, on_curve, reads, writes
 from rigpose.solve.grouping import Sets
 from rigpose.solve.growth import PARALLEL, Locus
-from rigpose.solve.nearby import nearby
 from rigpose.solve.plan import Check, Given, Line, Point, Step
-from rigpose.solve.planner import Planner, plan_for
+from rigpose.solve.planner import Planner, finished, keep_plan, planner_for
 from rigpose.solve.rest import Rest
 
 Mask = NDArray[np.bool_]
@@ -57,15 +56,12 @@ class Order:
 
 def order_of(rest: Rest) -> Order:
     """The order of a whole rig with nothing known."""
-    eqs = rest.equations
-    plan = plan_for(rest.rig, frozenset(), frozenset())
-    if not plan.loose:
-        still = np.zeros(eqs.n, dtype=bool)
-        doubt = still.copy()
-        doubt[list(plan.forced)] = True
-        return Order((), still, doubt, 0, Sets())
+    nothing: tuple[frozenset[str], frozenset[tuple[str, int]]] = (frozenset(), frozenset())
     with all_kept():
-        planner = Planner(eqs, frozenset(), frozenset(), nearby(rest), rest.surplus)
+        planner = planner_for(rest, frozenset(), frozenset())
+        planner.run()
+        if len(planner.ground.place) == rest.equations.n:
+            keep_plan(rest.rig, *nothing, finished(rest, planner))
         return _Counting(planner).order()
 
 
@@ -83,9 +79,7 @@ class _Counting:
         self.driven += [j for v, k in eqs.ram_of.items() for j in planner.net.ends[k]]
 
     def order(self) -> Order:
-        planner, eqs = self.planner, self.planner.eqs
-        planner.run()
-        ground = planner.ground
+        eqs, ground = self.planner.eqs, self.planner.ground
         first = len(ground.steps)
         while len(ground.place) < eqs.n:
             self._give()
