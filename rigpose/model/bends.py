@@ -139,14 +139,15 @@ def side_of(rig: Rig, block: Places, bend: Bend) -> Signs:
     away = block[bend.joint] - block[bend.first]
     if bend.rail >= 0:
         e = _rail_direction(rig, block, bend.rail)
-        share = (away * e).sum(axis=0)
+        share = _dot(e, away)
     elif rig.dim == 3:
         e = _normal(rig, block, bend)
-        share = (away * e).sum(axis=0)
+        share = _dot(e, away)
     else:
         e = block[bend.second] - block[bend.first]
-        share = e[0] * away[1] - e[1] * away[0]
-    room = (e * e).sum(axis=0) * (away * away).sum(axis=0)
+        share = e[0] * away[1]
+        share = share - e[1] * away[0]
+    room = _dot(e, e) * _dot(away, away)
     sign: Signs = (share > 0).view(np.int8)
     sign += sign
     sign -= 1
@@ -156,6 +157,14 @@ def side_of(rig: Rig, block: Places, bend: Bend) -> Signs:
     if nowhere.any():
         sign[nowhere] = -2
     return sign
+
+
+def _dot(a: Array, b: Array) -> Array:
+    """Scalar products ``(m,)`` of vectors ``(dim, m)``."""
+    total: Array = a[0] * b[0]
+    for mine, theirs in zip(a[1:], b[1:], strict=True):
+        total = total + mine * theirs
+    return total
 
 
 def _normal(rig: Rig, block: Places, bend: Bend) -> Array:

@@ -16,7 +16,7 @@ from rigpose.model.bends import Bend, Signs, bends_of, joints_of, side_of
 from rigpose.model.equations import Array, Equations, Ints
 from rigpose.motion.product import Picks, Sorted
 from rigpose.solve.rest import Rest
-from rigpose.solve.tree import Tree
+from rigpose.solve.tree import Tree, up
 
 BLOCK = 1 << 18
 """Poses gathered in one go."""
@@ -34,7 +34,7 @@ class Level:
 
     joints: list[tuple[int | Ints, Array]]
     bends: list[tuple[int, Signs]]
-    before: Ints | None
+    before: Ints | int | None
 
 
 class Gathering:
@@ -83,7 +83,7 @@ def _fill(out: Array, signs: Signs, levels: Sequence[Level], index: Ints) -> Non
         for bend, sides in level.bends:
             _take(sides, index, signs[bend])
         if level.before is not None:
-            index = level.before.take(index)
+            index = up(level.before, index)
 
 
 def _take(values: NDArray[np.generic], index: Ints, out: NDArray[np.generic]) -> None:
@@ -135,15 +135,23 @@ def _sides(eqs: Equations, tree: Tree, own: Mapping[int, Array], base: Mapping[i
                    for j in joints}
         sign = np.empty(tree.size(level), dtype=np.int8)
         for start in range(0, len(sign), NODES):
-            part = slice(start, start + NODES)
+            part = slice(start, min(start + NODES, len(sign)))
             sign[part] = side_of(eqs.rig, {j: _part(*source, part)
                                            for j, source in sources.items()}, bend)
         out.append((level, sign))
     return out
 
 
-def _part(places: Array, index: Ints | None, part: slice) -> Array:
+def _part(places: Array, index: Ints | int | None, part: slice) -> Array:
     """Some nodes' places ``(dim, m)``, or ``(dim, 1)`` where all have the same."""
     if places.shape[1] == 1:
         return places
-    return places[:, part] if index is None else places.take(index[part], axis=1)
+    if index is None:
+        return places[:, part]
+    if not isinstance(index, int):
+        return places.take(index[part], axis=1)
+    count = part.stop - part.start
+    start = part.start % index
+    if start + count <= index:
+        return places[:, start:start + count]
+    return places.take(np.arange(start, start + count) % index, axis=1)

@@ -66,9 +66,10 @@ def name_rows(rig: Rig, signs: Signs, meets: NDArray[np.bool_], moved: NDArray[n
     varies = [k for k in range(signs.shape[1]) if len(signs) and np.ptp(signs[:, k])]
     varies.sort(key=lambda k: not moved[bends[k].joint])
     told, classes = _telling(signs, varies)
-    straight = (signs[meets] == 0).any(axis=0)
-    told += [k for k in np.flatnonzero(straight).tolist()
-             if k not in told and chosen[bends[k].joint]]
+    if meets.any():
+        straight = (signs[meets] == 0).any(axis=0)
+        told += [k for k in np.flatnonzero(straight).tolist()
+                 if k not in told and chosen[bends[k].joint]]
     return Names(rig, signs, told, _counts(classes), meets)
 
 

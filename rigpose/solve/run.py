@@ -261,24 +261,28 @@ def both(
         table.sines.append(sine2)
     table.kill(sine2 >= 0, number)
     table.narrow(sine)
-    index = np.arange(2 * b) % b
-    sign = np.ones(2 * b, dtype=np.int16)
-    sign[b:] = -1
+    sign = np.repeat(np.array([1, -1], dtype=np.int16), b)
     assert table.alive is not None  # killing has just made it
-    alive: NDArray[np.bool_] = np.asarray(table.alive.any(axis=1))
+    alive = _some(table.alive)
     if len(alive) != b:
         alive = np.broadcast_to(alive, (b,))
+    index: NDArray[np.intp] | int = b
     if not alive.all():
         keep = np.flatnonzero(np.concatenate([alive, alive]))
-        index, sign, place = index[keep], sign[keep], place[:, keep]
+        index, sign, place = keep % b, sign[keep], place[:, keep]
         if isinstance(bound, np.ndarray):
             bound = np.broadcast_to(bound, (b, bound.shape[-1]))[index]
     elif isinstance(bound, np.ndarray) and bound.shape[0] != 1:
-        bound = bound[index]
+        bound = np.concatenate([bound, bound])
     _widen(table, b)
     table.renumber(index)
     table.codes.append((sign, table.level))
     table.put(dst, place, bound)
+
+
+def _some(alive: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    """``(B or 1,)`` whether a branch lives in any frame."""
+    return alive[:, 0] if alive.shape[1] == 1 else np.asarray(alive.any(axis=1))
 
 
 def _widen(table: Table, b: int) -> None:

@@ -6,6 +6,7 @@ until it is read again: it is then spread over the branches that grew from it.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import TypeVar
 
@@ -19,6 +20,31 @@ from rigpose.solve.plan import Point
 
 Number = TypeVar("Number", bound=np.generic)
 SURE = 1e-11
+
+
+def composed(maps: Sequence[Ints | int]) -> Ints | int:
+    """One map for several after one another, the earliest first."""
+    index = maps[0]
+    for later in maps[1:]:
+        if isinstance(later, int):
+            # Of what doubled later both halves have grown from the same.
+            index = index if isinstance(index, int) else np.concatenate([index, index])
+        else:
+            index = around(later, index) if isinstance(index, int) else index[later]
+    return index
+
+
+def around(index: Ints, count: int) -> Ints:
+    """Numbers counted 0 … count-1 over and over."""
+    return index & (count - 1) if count & (count - 1) == 0 else index % count
+
+
+def spread_by(array: NDArray[Number], index: Ints | int, branches: int, axis: int) -> (
+        NDArray[Number]):
+    """An array of an earlier level over ``branches`` later ones."""
+    if not isinstance(index, int):
+        return array.take(index, axis=axis)
+    return np.concatenate([array] * (branches // index), axis=axis)
 
 
 @dataclass
@@ -44,6 +70,8 @@ class Inputs:
 class Table:
     """State of one run.
 
+    ``maps`` tell for each level but the last from which branch each of the next has grown; a
+    number n tells that all of n branches have doubled: 0 … n-1 and again.
     ``codes`` are the signs of every choice with the level at which it was made. ``turning`` holds
     joints, with the parts behind them, that turn freely in some cells: two equal circles about one
     point are free motion, and no pose is listed there.
@@ -61,7 +89,7 @@ class Table:
     made: dict[Point, tuple[Array, int]] = field(default_factory=dict)
     bounds: dict[Point, Array | float] = field(default_factory=dict)
     bound_level: dict[Point, int] = field(default_factory=dict)
-    maps: list[Ints] = field(default_factory=list)
+    maps: list[Ints | int] = field(default_factory=list)
     branches: int = 1
     alive: NDArray[np.bool_] | None = None
     margin: Array | None = None
@@ -94,10 +122,7 @@ class Table:
         """An array of an earlier level over today's branches."""
         if array.shape[axis] == 1 or level == self.level:
             return array
-        index = self.maps[level]
-        for later in self.maps[level + 1:]:
-            index = index[later]
-        return array.take(index, axis=axis)
+        return spread_by(array, composed(self.maps[level:]), self.branches, axis)
 
     def point(self, p: Point) -> Array:
         """A point over today's branches (or with a branch axis of one)."""
@@ -138,17 +163,22 @@ class Table:
         self.values[number] = array
         self.level_of["v", number] = self.level
 
-    def renumber(self, index: Ints) -> None:
-        """Branches are now ``index`` of the earlier ones; kept tables follow at once."""
+    def renumber(self, index: Ints | int) -> None:
+        """Branches are now ``index`` of the earlier ones; kept tables follow at once. A number
+        tells that all of so many have doubled."""
+        self.branches = 2 * index if isinstance(index, int) else len(index)
         self.maps.append(index)
-        self.branches = len(index)
-        if self.alive is not None and self.alive.shape[0] != 1:
-            self.alive = self.alive[index]
-        if self.margin is not None and self.margin.shape[0] != 1:
-            self.margin = self.margin[index]
-        if self.killer is not None and self.killer.shape[0] != 1:
-            self.killer = self.killer[index]
-        self.sines = [s[index] if len(s) != 1 else s for s in self.sines]
+
+        def grown(array: NDArray[Number]) -> NDArray[Number]:
+            return array if len(array) == 1 else spread_by(array, index, self.branches, 0)
+
+        if self.alive is not None:
+            self.alive = grown(self.alive)
+        if self.margin is not None:
+            self.margin = grown(self.margin)
+        if self.killer is not None:
+            self.killer = grown(self.killer)
+        self.sines = [grown(s) for s in self.sines]
 
     def kill(self, ok: NDArray[np.bool_], step: int) -> None:
         """Cells that are not ``ok`` die at ``step``."""

@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigpose.model.equations import Array, Ints
-from rigpose.solve.table import Table
+from rigpose.solve.table import Table, around, composed, spread_by
 
 Number = TypeVar("Number", bound=np.generic)
 
@@ -24,13 +24,14 @@ class Tree(Sequence[Array]):
     """Places of some joints; as a sequence, those of each joint spread over the branches.
 
     nodes : per joint ``(dim, nodes of its level or 1, 1)``; levels : the level of each
-    maps : for each level but the last ``(nodes of the next,)`` the node that each grew from
+    maps : for each level but the last ``(nodes of the next,)`` the node that each grew from, or
+    how many nodes it has where all of them doubled
     signs : of every choice ``(nodes,)``, with its level; branches : nodes of the last level
     """
 
     nodes: list[Array]
     levels: list[int]
-    maps: list[Ints]
+    maps: list[Ints | int]
     signs: list[tuple[NDArray[np.int16], int]]
     branches: int
     _wide: dict[int, Array] = field(default_factory=dict)
@@ -42,7 +43,10 @@ class Tree(Sequence[Array]):
 
     def size(self, level: int) -> int:
         """How many nodes a level has."""
-        return len(self.maps[level - 1]) if level else 1
+        if not level:
+            return 1
+        grown = self.maps[level - 1]
+        return 2 * grown if isinstance(grown, int) else len(grown)
 
     def __len__(self) -> int:
         return len(self.nodes)
@@ -58,31 +62,26 @@ class Tree(Sequence[Array]):
             self._wide[k] = self.spread(self.nodes[k], self.levels[k], self.last, 1)
         return self._wide[k]
 
-    def between(self, low: int, high: int) -> Ints | None:
-        """For each node of the level ``high`` the one of ``low`` that it grew from."""
-        if low == high:
-            return None
-        index = self.maps[low]
-        for later in self.maps[low + 1:high]:
-            index = index[later]
-        return index
+    def between(self, low: int, high: int) -> Ints | int | None:
+        """For each node of the level ``high`` the one of ``low`` that it grew from; a number n for
+        0 … n-1 over and over."""
+        return composed(self.maps[low:high]) if low < high else None
 
     def spread(self, array: NDArray[Number], low: int, high: int, axis: int) -> NDArray[Number]:
         """An array over the nodes of one level, over those of a later one."""
         index = None if array.shape[axis] == 1 else self.between(low, high)
-        return array if index is None else array.take(index, axis=axis)
+        return array if index is None else spread_by(array, index, self.size(high), axis)
 
     def codes(self) -> NDArray[np.int16]:
         """The signs of every choice ``(branches, choices)``."""
         out = np.empty((len(self.signs), self.branches), dtype=np.int16)
-        index: Ints | None = None
+        index = np.arange(self.branches)
         for level in range(self.last, -1, -1):
             for k, (sign, mine) in enumerate(self.signs):
                 if mine == level:
-                    out[k] = sign if index is None else sign.take(index)
+                    out[k] = sign.take(index)
             if level:
-                before = self.maps[level - 1]
-                index = before if index is None else before.take(index)
+                index = up(self.maps[level - 1], index)
         return out.T
 
     def total(self, each: Callable[[int, Array], Array]) -> Array:
@@ -91,11 +90,16 @@ class Tree(Sequence[Array]):
         out = np.zeros(1)
         for level in range(self.last + 1):
             if level and len(out) > 1:
-                out = out.take(self.maps[level - 1])
+                out = spread_by(out, self.maps[level - 1], self.size(level), 0)
             for k, mine in enumerate(self.levels):
                 if mine == level:
                     out = out + each(k, self.nodes[k][:, :, 0])
         return np.broadcast_to(out, (self.branches,))
+
+
+def up(grown: Ints | int, index: Ints) -> Ints:
+    """From nodes of a level to those that they grew from."""
+    return around(index, grown) if isinstance(grown, int) else grown.take(index)
 
 
 def tree_of(table: Table, joints: Sequence[int]) -> Tree:

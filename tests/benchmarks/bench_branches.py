@@ -13,7 +13,7 @@ import rigpose as rp
 
 
 def held() -> None:
-    """With names and margins; the copy is of positions and margins into fresh memory."""
+    """With names and margins; the copy is of all its arrays into fresh memory."""
     rig, budget = ladder(20), rp.Budget(poses=1 << 18)
 
     def work() -> rp.Branches:
@@ -23,7 +23,8 @@ def held() -> None:
 
     found = work()
     ours = timed(work, 5)
-    copy = timed(lambda: (found.positions.copy(order="K"), found.margin.copy()), 5)
+    copy = timed(lambda: [a.copy(order="K") for a in (found.positions, found.margin, found.state,
+                                                      found.signs, found.choice)], 5)
     print(f"2^18 branches of 20 joints: {ours:.3f} s; copying them {copy:.3f} s; "
           f"ratio {ours / copy:.1f}")
 
