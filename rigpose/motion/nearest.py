@@ -18,6 +18,7 @@ import numpy.typing as npt
 from rigpose.ground.errors import BadInput, Problem
 from rigpose.ground.words import Found, weaker
 from rigpose.model.equations import Array
+from rigpose.model.record import all_kept
 from rigpose.model.rig import Rig
 from rigpose.motion.branches import made
 from rigpose.motion.branchset import Branches
@@ -53,6 +54,12 @@ def nearest_branch(rig: Rig, drives: Given | None = None, targets: Wished | None
     best pose found is told as stopped at a budget. No branches where nothing assembles. Raises
     BadInput like `find_branches`, and for an unknown joint in ``near``.
     """
+    with all_kept():
+        return _nearest(rig, drives, targets, near)
+
+
+def _nearest(rig: Rig, drives: Given | None, targets: Wished | None,
+             near: Mapping[str, npt.ArrayLike] | None) -> Branches:
     context, clock = single_frame(rig, drives, targets)
     goal = _goal(context, near)
     picks = [nearest_rows(context, group, clock, 1, goal) for group in context.plan.groups]

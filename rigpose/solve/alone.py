@@ -8,6 +8,7 @@ while, so that crossings close to a dead centre need no second look.
 from __future__ import annotations
 
 from dataclasses import dataclass, field, replace
+from math import dist
 
 import numpy as np
 
@@ -153,7 +154,8 @@ def _nearer(choice: Choice, goals: tuple[tuple[int, Place], ...]) -> int:
 
 
 def _gap(a: Place, b: Place) -> float:
-    return sum((x - y) * (x - y) for x, y in zip(a, b, strict=True))
+    far = dist(a, b)
+    return far * far
 
 
 def _cells(context: Context, group: Group, walk: Walk, base: Table) -> Cells:

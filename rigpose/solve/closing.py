@@ -59,13 +59,12 @@ class Reach(NamedTuple):
 def open_gaps(rig: Rig, tolerance: float, pose: Array | None = None) -> tuple[Gap, ...]:
     """All that can never close by more than ``tolerance`` (rig's unit), widest first.
 
-    pose : (n_joints, dim) where one is known that keeps pins and rails, in the rig's frame: if it
-    keeps everything within its reach, then everything can close
+    pose : (n_joints, dim) where one is known that keeps all but the ranges of rams, in the rig's
+    frame: if it keeps those as well, then everything can close
     """
-    parts = list(_parts(rig))
-    if pose is not None and _hold(parts, pose, tolerance / (len(rig.joints) + 1)):
+    if pose is not None and _hold(list(_rams(rig)), pose, tolerance / (len(rig.joints) + 1)):
         return ()
-    reaches = [*parts, *_on_ground(rig)]
+    reaches = [*_parts(rig), *_on_ground(rig)]
     if not reaches:
         return ()
     best = _longest_ways(reaches)
@@ -124,11 +123,15 @@ def _parts(rig: Rig) -> Iterator[Reach]:
     at = rig.index
     for bone in rig.bones:
         yield Reach(bone.name, at[bone.ends[0]], at[bone.ends[1]], bone.length, bone.length)
-    for ram in rig.rams:
-        low, high = ram.range or (0.0, np.inf)
-        yield Reach(ram.name, at[ram.ends[0]], at[ram.ends[1]], low, high)
+    yield from _rams(rig)
     for plate in rig.plates:
         yield from _plate(rig, plate)
+
+
+def _rams(rig: Rig) -> Iterator[Reach]:
+    for ram in rig.rams:
+        low, high = ram.range or (0.0, np.inf)
+        yield Reach(ram.name, rig.index[ram.ends[0]], rig.index[ram.ends[1]], low, high)
 
 
 def _on_ground(rig: Rig) -> Iterator[Reach]:

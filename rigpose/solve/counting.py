@@ -53,6 +53,8 @@ def _hinges(rig: Rig, pinned: set[str]) -> int:
 
 def _plate(rig: Rig, plate: Plate, pinned: set[str]) -> int:
     inside = [k for k, j in enumerate(plate.joints) if j in pinned]
+    if rig.dim == 2:
+        return 2 * len(plate.joints) - 3 - max(2 * len(inside) - 3, 0)
     shape = np.array(plate.shape)
     return _conditions(shape) - _conditions(shape[inside])
 

@@ -16,12 +16,12 @@ Node = int
 
 
 class Sets:
-    """Union-find over points and values that depend on a choice."""
+    """Union-find over numbers."""
 
     def __init__(self) -> None:
-        self.parent: dict[Node, Node] = {}
+        self.parent: dict[int, int] = {}
 
-    def find(self, x: Node) -> Node:
+    def find(self, x: int) -> int:
         parent = self.parent
         above = parent.setdefault(x, x)
         while above != x:
@@ -30,7 +30,7 @@ class Sets:
             above = parent[x]
         return x
 
-    def join(self, nodes: list[Node]) -> None:
+    def join(self, nodes: list[int]) -> None:
         first = self.find(nodes[0])
         for x in nodes[1:]:
             self.parent[self.find(x)] = first
@@ -57,21 +57,24 @@ def grouped(
 ) -> tuple[tuple[Step, ...], tuple[Group, ...]]:
     """Base steps and groups, each with its checks as early as they can stand."""
     ordered = _interleave(eqs, steps, list(checks))
-    sets, many = Sets(), set[Node]()
-    owner: list[Node | None] = []
-    for step in ordered:
-        touched = [x for x in _read_fully(step, eqs) if x in many]
-        if touched or has_choice(step):
-            touched += _written(step)
-            many.update(touched)
-            sets.join(touched)
-            owner.append(touched[0])
-        else:
-            owner.append(None)
+    sets = Sets()
+    owner_of: dict[Node, int] = {}
+    owner: list[int] = []
+    for number, step in enumerate(ordered):
+        met = {owner_of[x] for x in _read_fully(step, eqs) if x in owner_of}
+        if not met and not has_choice(step):
+            owner.append(-1)
+            continue
+        first = min(met) if met else number
+        if len(met) > 1:
+            sets.join([first, *met])
+        for x in _written(step):
+            owner_of[x] = first
+        owner.append(first)
     base: list[Step] = []
-    members: dict[Node, list[Step]] = {}
-    for step, node in zip(ordered, owner, strict=True):
-        (base if node is None else members.setdefault(sets.find(node), [])).append(step)
+    members: dict[int, list[Step]] = {}
+    for step, mine in zip(ordered, owner, strict=True):
+        (base if mine < 0 else members.setdefault(sets.find(mine), [])).append(step)
     return tuple(base), tuple(_group(eqs, m) for m in members.values())
 
 

@@ -7,6 +7,7 @@ becomes a curve for its first joint, and two of them place it.
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from itertools import combinations, count
@@ -61,7 +62,11 @@ def turned_by_crank(ground: Growth, points: count[int]) -> bool:
 def turned_by_rails(ground: Growth, points: count[int]) -> bool:
     """Place a body two of whose joints slide on parallel rails; True where one was placed."""
     lines = ground.net.eqs.lines
-    for number, solid in enumerate(ground.net.solids):
+    guided: Counter[int] = Counter(number for j, on in zip(lines.joint, lines.along[:, 0],
+                                                           strict=True) if on == GROUND
+                                   for number in ground.net.solids_on.get(int(j), ()))
+    for number in sorted(k for k, rails in guided.items() if rails > 1):
+        solid = ground.net.solids[number]
         if any(j in ground.place for j in solid.local) or not any(
                 number in ground.net.solids_on[j] for j in solid.local):
             continue

@@ -42,7 +42,8 @@ def bring_back(rest: Rest, plan: Plan, cells: Cells, base: Table, inputs: Inputs
     for (j, axis), array in inputs.targets.items():
         goal[0, j, axis] = array[0]
     shape = (eqs.dim, len(cells.codes), 1)
-    places = np.stack([np.broadcast_to(p, shape) for p in cells.places])[..., 0]
+    places = np.stack([p if p.shape == shape else np.broadcast_to(p, shape)
+                       for p in cells.places])[..., 0]
     moved = False
     for row in live:
         x = eqs.at.copy()

@@ -8,7 +8,6 @@ Ait-Aoudia, Jegou and Michelucci 1993) with independence measured at the rest po
 
 from __future__ import annotations
 
-from collections import Counter
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 from itertools import count
@@ -160,21 +159,26 @@ class Planner:
 
     def _may_grow(self, solid: Solid) -> bool:
         """Whether a body's own joints give another joint curves enough for a first placing."""
-        net, local = self.net, solid.local
-        curves: Counter[int] = Counter()
+        net, local, dim = self.net, solid.local, self.eqs.dim
+        curves: dict[int, int] = {}
         met: set[int] = set()
         for j in local:
             if j in net.cranks_on or (net.slots and j in net.rails_on):
                 return True
-            curves.update(other for _, other in net.links.get(j, ()) if other not in local)
+            near = [other for _, other in net.links.get(j, ())]
             for number in net.solids_on.get(j, ()):
                 other = net.solids[number].local
                 if other is not local:
                     if number in met:
                         return True
                     met.add(number)
-                    curves.update(i for i in other if i not in local)
-        return max(curves.values(), default=0) >= self.eqs.dim
+                    near += other
+            for i in near:
+                if i not in local:
+                    curves[i] = curves.get(i, 0) + 1
+                    if curves[i] >= dim:
+                        return True
+        return False
 
     def _grow_from(self, number: int | None, solid: Solid) -> Solid | None:
         # Rigid groups have at least one more joint that two parts of them hold; look for one

@@ -6,6 +6,7 @@ from dataclasses import replace
 
 from rigpose.ground.budget import Watch, go_on
 from rigpose.model.judge import Verdict, judge
+from rigpose.model.record import all_kept
 from rigpose.model.rig import Rig
 from rigpose.solve.bounds import branch_bound
 from rigpose.solve.closing import open_gaps
@@ -38,6 +39,11 @@ def check(rig: Rig, *, watch: Watch | None = None) -> Report:
     >>> report.freedoms, report.moving[0].joints
     (1, ('tip',))
     """
+    with all_kept():
+        return _checked(rig, watch)
+
+
+def _checked(rig: Rig, watch: Watch | None) -> Report:
     rest = find_rest(rig)
     verdict = judge(rig, rest.equations.outward(rest.scaled), rest.size)
     report = _at_rest(rest, verdict)

@@ -84,6 +84,9 @@ class _Counting:
         while len(ground.place) < eqs.n:
             self._give()
             ground.run()
+        if not self.starts:
+            still = np.zeros(eqs.n, dtype=bool)
+            return Order((), still, self._doubt(still), 0, Sets())
         moves, sets = _moving(eqs, ground.steps, self.held)
         choices = sum(map(has_choice, ground.steps[first:]))
         return Order(tuple(self.starts), moves, self._doubt(moves), choices, sets)
@@ -94,6 +97,8 @@ class _Counting:
         planner, eqs, ground = self.planner, self.planner.eqs, self.planner.ground
         doubt = np.full(eqs.n, bool(eqs.tie_names))
         doubt[planner.forced] = True
+        if not self.starts:
+            return doubt
         used = ground.settled() | {("tie", t) for t in planner.settled_ties}
         for check in checks_for(eqs, planner.net, ground, frozenset(used)):
             joints = [p for p in check.points if p < eqs.n]
