@@ -161,7 +161,8 @@ def _check_values(step: Check, eqs: Equations) -> set[int]:
 
 def value_written(step: Step) -> int:
     """The value number that a step settles, -1 for none."""
-    return step.value if isinstance(step, (Gauge, Tied)) else -1
+    kind = type(step)
+    return step.value if kind is Gauge or kind is Tied else -1  # type: ignore[attr-defined]
 
 
 _TWO_WAY = frozenset({Meet, Junction, Swing, Level})

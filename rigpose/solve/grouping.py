@@ -60,15 +60,17 @@ def grouped(
     sets = Sets()
     owner_of: dict[Node, int] = {}
     owner: list[int] = []
+    plain = not eqs.values
     for number, step in enumerate(ordered):
-        met = {owner_of[x] for x in _read_fully(step, eqs) if x in owner_of}
+        read = reads(step) if plain and type(step) is not Cluster else _read_fully(step, eqs)
+        met = {owner_of[x] for x in read if x in owner_of}
         if not met and not has_choice(step):
             owner.append(-1)
             continue
         first = min(met) if met else number
         if len(met) > 1:
             sets.join([first, *met])
-        for x in _written(step):
+        for x in writes(step) if plain else _written(step):
             owner_of[x] = first
         owner.append(first)
     base: list[Step] = []
@@ -82,10 +84,13 @@ def _interleave(eqs: Equations, steps: list[Step], checks: list[Check]) -> list[
     """Every check right after the step that completes it."""
     if not checks:
         return steps
-    born = {x: k for k, step in enumerate(steps) for x in _written(step)}
+    plain = not eqs.values
+    born = {x: k for k, step in enumerate(steps)
+            for x in (writes(step) if plain else _written(step))}
     after: dict[int, list[Check]] = {}
     for check in checks:
-        last = max((born.get(x, -1) for x in _read(check, eqs)), default=-1)
+        read = check.points if plain else _read(check, eqs)
+        last = max([born.get(x, -1) for x in read], default=-1)
         after.setdefault(last, []).append(check)
     out: list[Step] = list(after.get(-1, []))
     for k, step in enumerate(steps):

@@ -7,6 +7,7 @@ placed; until then it is a check.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from itertools import combinations
 from math import hypot
@@ -273,6 +274,8 @@ class SpaceGrowth(Growth):
 
 def _few_volumes(loci: list[Locus], sets: list[tuple[int, ...]]) -> list[float]:
     """As `_volumes`, in plain numbers: quicker for a few sets."""
+    if len(sets[0]) == 3 and len(loci[0].normals) == 1:
+        return _single_volumes([x.normals[0] for x in loci], sets)
     found = []
     for chosen in sets:
         first, second, *third = (loci[k].normals for k in chosen)
@@ -285,6 +288,16 @@ def _few_volumes(loci: list[Locus], sets: list[tuple[int, ...]]) -> list[float]:
                 size = abs(a * d + b * e + c * f)
             best = max(best, float(size) if size == size else 0.0)  # noqa: PLR0124 - not a number
         found.append(best)
+    return found
+
+
+def _single_volumes(normals: list[Sequence[float]], sets: list[tuple[int, ...]]) -> list[float]:
+    """What triples of unit normals span in a single pose."""
+    found = []
+    for i, j, k in sets:
+        (a, b, c), (d, e, f), (p, q, r) = normals[i], normals[j], normals[k]
+        size = abs((b * f - c * e) * p + (c * d - a * f) * q + (a * e - b * d) * r)
+        found.append(float(size) if size == size else 0.0)  # noqa: PLR0124 - not a number
     return found
 
 
