@@ -147,16 +147,19 @@ def side_of(rig: Rig, block: Places, bend: Bend) -> Signs:
         e = block[bend.second] - block[bend.first]
         share = e[0] * away[1]
         share = share - e[1] * away[0]
-    room = _dot(e, e) * _dot(away, away)
     sign: Signs = (share > 0).view(np.int8)
     sign += sign
     sign -= 1
-    share *= share
-    sign *= (share > STRAIGHT * STRAIGHT * room).view(np.int8)
-    nowhere = np.isnan(share)
-    if nowhere.any():
-        sign[nowhere] = -2
+    if not np.abs(share).min(initial=np.inf) > STRAIGHT * _longest(e) * _longest(away):
+        straight = share * share <= STRAIGHT * STRAIGHT * (_dot(e, e) * _dot(away, away))
+        sign[straight] = 0
+        sign[np.isnan(share)] = -2
     return sign
+
+
+def _longest(v: Array) -> float:
+    """No less than the length of any of the vectors ``(dim, m)``; NaN where some are."""
+    return float(np.sqrt(len(v)) * max(v.max(initial=0.0), -v.min(initial=0.0)))
 
 
 def _dot(a: Array, b: Array) -> Array:

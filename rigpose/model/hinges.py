@@ -4,6 +4,7 @@ axis about which they turn, and a cross is a plate that has one axis in each of 
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 from rigpose.model.bench import Bench, Common
 from rigpose.model.bodies import Table
@@ -44,6 +45,17 @@ def axis_joint(name: str) -> str:
     return f"{name} axis"
 
 
+def add_helper(fit: Fittings, path: KeyPath, name: str, at: Coordinates, common: Common) -> (
+    str | None
+):
+    """A new joint that no file names, or None after noting that it can't have its name."""
+    made = fit.helper(path, name, at, common)
+    if made is not None:
+        joints = fit.bench.parts.joints
+        joints[made] = replace(joints[made], helper=True)
+    return made
+
+
 def add_hinges(fit: Fittings, table: Table) -> None:
     """Read all hinges."""
     for name, raw in table.items():
@@ -62,7 +74,7 @@ def _hinge(fit: Fittings, name: str, spec: HingeSpec) -> bool:
     if joined is None or axis is None:
         return False
     parts, joint, place = joined
-    helper = fit.helper(path, axis_joint(name), fit.reach(parts, place, axis), common)
+    helper = add_helper(fit, path, axis_joint(name), fit.reach(parts, place, axis), common)
     if helper is None:
         return False
     for part in parts:
@@ -113,7 +125,7 @@ def _universal(fit: Fittings, name: str, spec: UniversalSpec) -> bool:
         return False
     parts, joint, place = joined
     ends = [fit.reach([part], place, axis) for part, axis in zip(parts, axes, strict=True)]
-    helpers = [fit.helper(path, helper, end, common)
+    helpers = [add_helper(fit, path, helper, end, common)
                for helper, end in zip(_helpers(name), ends, strict=True)]
     if helpers[0] is None or helpers[1] is None:
         return False

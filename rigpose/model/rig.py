@@ -26,7 +26,7 @@ class Part(Record, frozen=True, kw_only=True):
     """What every part has. ``layer``, ``skin`` and ``note`` are carried along untouched."""
 
     unshown: ClassVar[frozenset[str]] = frozenset({
-        "note", "layer", "skin", "base_part", "first_part", "second_part"})
+        "note", "layer", "skin", "base_part", "first_part", "second_part", "helper"})
     name: str
     note: str = ""
     layer: float = 0.0
@@ -34,10 +34,14 @@ class Part(Record, frozen=True, kw_only=True):
 
 
 class Joint(Part, frozen=True, kw_only=True):
-    """A point; ``at`` is its place at rest as written, None where the file gives none."""
+    """A point; ``at`` is its place at rest as written, None where the file gives none.
+
+    A ``helper`` stands in no file: a hinge, a universal or a slider made it to hold an axis.
+    """
 
     at: Coordinates | None = None
     pin: bool = False
+    helper: bool = False
 
 
 class Bone(Part, frozen=True, kw_only=True):
@@ -184,8 +188,18 @@ class Rig:
 
     @cached_property
     def joint_names(self) -> tuple[str, ...]:
-        """The joints' names in the file's order."""
+        """The joints' names in the file's order, helpers too: the order of all arrays."""
         return tuple(j.name for j in self.joints)
+
+    @cached_property
+    def own_joints(self) -> tuple[str, ...]:
+        """The names of the joints that people know: all but helpers, in the same order."""
+        return tuple(j.name for j in self.joints if not j.helper)
+
+    @cached_property
+    def helper_joints(self) -> frozenset[str]:
+        """The names of the joints that hinges, universals and sliders made."""
+        return frozenset(j.name for j in self.joints if j.helper)
 
     @cached_property
     def index(self) -> Mapping[str, int]:

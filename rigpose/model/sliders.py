@@ -15,10 +15,15 @@ from rigpose.model.bodies import GROUND, Table
 from rigpose.model.decode import decode
 from rigpose.model.fittings import Fittings
 from rigpose.model.head import unit_vector
+from rigpose.model.hinges import add_helper
 from rigpose.model.names import KeyPath, shown
-from rigpose.model.rig import Coordinates, Pair, Rail, Span, Tie
+from rigpose.model.rig import Coordinates, Pair, Rail, Rig, Span, Tie
 from rigpose.model.spec import SliderSpec
 from rigpose.model.vectors import along, normal_to
+
+
+ENDS = ("axis", "side", "start", "end", "side start", "side end")
+"""What the names of a slider's helper joints end in."""
 
 
 @dataclass(frozen=True)
@@ -111,8 +116,8 @@ def _build(fit: Fittings, slider: _Slider, span: Span | None) -> bool:
     ahead = math.dist(far, s.place)
     beside = fit.reach(reach, along(s.place, s.axis, ahead / 2), normal_to(s.axis))
     path: KeyPath = s.path
-    axis = fit.helper(path, s.named("axis"), far, s.common)
-    side = fit.helper(path, s.named("side"), beside, s.common)
+    axis = add_helper(fit, path, s.named("axis"), far, s.common)
+    side = add_helper(fit, path, s.named("side"), beside, s.common)
     if axis is None or side is None:
         return False
     for joint in (s.joint, axis, side):
@@ -147,7 +152,7 @@ def _seat(fit: Fittings, s: _Slider, name: str, place: Coordinates, measured_fro
     own = fit.joint_at(s.carrier, place)
     if own is not None:
         return own
-    helper = fit.helper(s.path, name, place, s.common)
+    helper = add_helper(fit, s.path, name, place, s.common)
     if helper is not None:
         fit.carry(s.carrier, helper, measured_from)
     return helper
@@ -159,3 +164,20 @@ def _add_rail(fit: Fittings, s: _Slider, name: str, joint: str, line: _Line,
     fit.bench.parts.rails[name] = Rail(
         name=name, joint=joint, along=line.ends, through=line.through if fixed else None,
         direction=line.direction if fixed else None, range=span, **s.common)
+
+
+def stands_at(rig: Rig, helper: str) -> str:
+    """The rig's own joint at which a helper joint holds an axis; the helper where none can be
+    told, as on an axis that stands at another helper."""
+    rails = {r.name: r.joint for r in rig.rails}
+    for end in ENDS:
+        name = helper.removesuffix(f" {end}")
+        if name != helper and name in rails and f"{name} axis" in rails:
+            return rails[name]
+    # All parts that carry the axis of a hinge or a cross share the joint; on the ground it is
+    # pinned, and what a part has pinned besides its hinge lies on the axis as well.
+    pinned = rig.joints[rig.index[helper]].pin
+    plates = [p.joints for p in rig.plates if helper in p.joints]
+    shared = [j for j in (plates[0] if plates else ()) if all(j in p for p in plates)]
+    own = [j for j in shared if j not in rig.helper_joints]
+    return next((j for j in own if not pinned or rig.joints[rig.index[j]].pin), helper)

@@ -9,9 +9,9 @@ import numpy as np
 
 from rigpose.ground.budget import Budget, Watch, go_on
 from rigpose.ground.words import Found, State, weaker
-from rigpose.model.bends import Signs, measure_bends
+from rigpose.model.bends import measure_bends
 from rigpose.model.equations import Array
-from rigpose.model.rig import Rig
+from rigpose.model.rig import Joint, Rig
 from rigpose.motion.assembled import assembled
 from rigpose.motion.branchset import Branches
 from rigpose.motion.gathered import Gathering
@@ -22,7 +22,7 @@ from rigpose.motion.product import (
     base_places,
     combined,
     kept,
-    placed,
+    put,
     taken,
 )
 from rigpose.motion.refusals import refuse_loose, useless_targets
@@ -153,11 +153,11 @@ def made_from(context: Context, clock: Clock, frames: Array, picks: Sequence[Sor
     mixed = _shown(context, clock, picks, mixed)
     one = Gathering(rest, picks, base) if clock.count == 1 else None
 
-    def poses(some: Picks) -> tuple[Array, Signs | None]:
-        return one.poses(some) if one else (assembled(rest, picks, some, base, clock.count), None)
+    def poses(some: Picks) -> Array:
+        return one.poses(some) if one else assembled(rest, picks, some, base, clock.count)
 
-    mixed = _ties_by_bends(rest.rig, mixed, poses)
-    positions, signs = poses(mixed)
+    _ties_by_bends(rest.rig, mixed, poses)
+    positions = poses(mixed)
     state = np.where(mixed.alive, np.uint8(State.MET), np.uint8(State.NONE))
     groups = tuple(tuple(eqs.rig.joint_names[j] for j in p.rows.group.joints) for p in picks)
     for array in (positions, state, mixed.margin):
@@ -168,9 +168,7 @@ def made_from(context: Context, clock: Clock, frames: Array, picks: Sequence[Sor
         size=rest.size, meets=mixed.meets, values=_read_off(rest, picks, mixed),
         events=_events(eqs.rig, frames, picks, mixed),
         notes=(*_open_rest(rest), *useless_targets(rest, plan), *_turning(eqs.rig, picks)),
-        redundant=frozenset(plan.redundant))
-    if signs is not None:
-        branches.__dict__["signs"] = signs
+        redundant=frozenset(plan.redundant), sides=one.sides(mixed) if one else None)
     return Search(branches, tuple(picks), mixed)
 
 
@@ -185,22 +183,19 @@ def _shown(context: Context, clock: Clock, picks: Sequence[Sorted], mixed: Picks
     return replace(mixed, margin=np.where(mixed.alive, margin, np.float32(np.nan)))
 
 
-def _ties_by_bends(rig: Rig, mixed: Picks,
-                   posed: Callable[[Picks], tuple[Array, Signs | None]]) -> Picks:
-    """Branches equally far from rest (mirror images, say) in the order of their bends."""
+def _ties_by_bends(rig: Rig, mixed: Picks, posed: Callable[[Picks], Array]) -> None:
+    """Put branches equally far from rest (mirror images, say) in the order of their bends."""
     equal = mixed.steps[1:] == mixed.steps[:-1]
     if not equal.any():
-        return mixed
+        return
     member = np.flatnonzero(np.concatenate([[False], equal]) | np.concatenate([equal, [False]]))
     if len(member) > MOST_TIES:
-        return mixed
+        return
     some = taken(mixed, member)
-    poses, _ = posed(some)
     first = np.argmax(some.alive, axis=1)
-    signs = measure_bends(rig, poses[np.arange(len(member)), first])
+    signs = measure_bends(rig, posed(some)[np.arange(len(member)), first])
     # "left" and "after" come before "right" and "before", as names are read.
-    order = np.lexsort((*(-signs[:, ::-1].T), some.steps))
-    return placed(mixed, member, taken(some, order))
+    put(mixed, member, taken(some, np.lexsort((*(-signs[:, ::-1].T), some.steps))))
 
 
 def _open_rest(rest: Rest) -> tuple[str, ...]:
@@ -212,12 +207,17 @@ def _open_rest(rest: Rest) -> tuple[str, ...]:
 
 
 def _turning(rig: Rig, picks: Sequence[Sorted]) -> tuple[str, ...]:
-    """A sentence for each joint that turns freely where two others lie on each other."""
+    """A sentence for each joint that turns freely in poses of its own: where two others lie on
+    each other, or in space with a whole part that lies folded back."""
     found = sorted({t for p in picks for t in p.rows.turning})
-    return tuple(
-        f'where its neighbours lie on each other "{rig.joint_names[joint]}" turns freely '
-        f"({', '.join(parts)}): such poses are not listed"
-        for joint, parts in found if joint < len(rig.joints))
+    lines = [f"in some poses {_named(rig.joints[joint])} turns freely ({', '.join(parts)}): "
+             "they are not listed"
+             for joint, parts in found if joint < len(rig.joints)]
+    return tuple(dict.fromkeys(lines))
+
+
+def _named(joint: Joint) -> str:
+    return "a part" if joint.helper else f'"{joint.name}"'
 
 
 def _read_off(rest: Rest, picks: Sequence[Sorted], mixed: Picks) -> dict[str, Array]:

@@ -15,9 +15,10 @@ from rigpose.ground.words import Found, State
 from rigpose.model.bends import Signs, measure_bends
 from rigpose.model.equations import Array
 from rigpose.model.rig import Rig
+from rigpose.motion.gathered import Sides
 from rigpose.motion.mirrors import mirror_images
 from rigpose.motion.motion import Event, Motion
-from rigpose.motion.naming import Names, name_rows, wanted_signs
+from rigpose.motion.naming import Names, name_by_sides, name_rows, wanted_signs
 from rigpose.solve.knowns import Knowns
 
 SOON = 256
@@ -53,6 +54,7 @@ class Branches:
     events: tuple[tuple[Event, ...], ...] = ()
     notes: tuple[str, ...] = ()
     redundant: frozenset[str] = frozenset()
+    sides: Sides | None = None
 
     def __len__(self) -> int:
         return len(self.positions)
@@ -82,6 +84,8 @@ class Branches:
 
         A row that begins at a dead centre has those of the first frame in which it has left it.
         """
+        if self.sides is not None:
+            return self.sides.all()
         signs = measure_bends(self.rig, self.first_poses)
         if len(self.frames) > 1:
             for row in np.flatnonzero((signs == 0).any(axis=1)):
@@ -106,6 +110,10 @@ class Branches:
         """One name a branch: the bends that tell it from the others."""
         inside = {j for group in self.groups for j in group}
         chosen = np.array([j in inside for j in self.joints], dtype=bool)
+        if self.sides is not None:
+            names = name_by_sides(self.rig, self.sides, self.meets, self._moved)
+            if names is not None:
+                return names
         return name_rows(self.rig, self.signs, self.meets, self._moved, chosen)
 
     @property
@@ -133,7 +141,7 @@ class Branches:
         """Some of the branches, in the given order."""
         k = np.asarray(which, dtype=np.intp)
         taken = replace(
-            self, positions=_sealed(self.positions[k]), state=_sealed(self.state[k]),
+            self, sides=None, positions=_sealed(self.positions[k]), state=_sealed(self.state[k]),
             margin=_sealed(self.margin[k]), choice=self.choice[k], meets=self.meets[k],
             values={n: a if len(a) == 1 else a[k] for n, a in self.values.items()},
             events=tuple(self.events[i] for i in k) if self.events else ())

@@ -16,7 +16,8 @@ from rigpose.model.bends import Bend, Signs, bends_of, joints_of, side_of
 from rigpose.model.equations import Array, Equations, Ints
 from rigpose.motion.product import Picks, Sorted
 from rigpose.solve.rest import Rest
-from rigpose.solve.tree import Tree, up
+from rigpose.solve.table import spread_by
+from rigpose.solve.tree import Tree, grown, up
 
 BLOCK = 1 << 18
 """Poses gathered in one go."""
@@ -37,6 +38,58 @@ class Level:
     before: Ints | int | None
 
 
+@dataclass(frozen=True, eq=False)
+class Sides:
+    """Bends of many branches, kept at the nodes of the tree that they grew in.
+
+    levels : from the last to the first; index (n_branches,) the last level's nodes in the order of
+    the branches; count : how many bends there are
+    """
+
+    levels: Sequence[Level]
+    index: Ints
+    count: int
+
+    def all(self) -> Signs:
+        """``(n_branches, n_bends)``."""
+        out = np.empty((self.count, len(self.index)), dtype=np.int8)
+        index = self.index
+        for level in self.levels:
+            for bend, sides in level.bends:
+                _take(sides, index, out[bend])
+            if level.before is not None:
+                index = up(level.before, index)
+        return out.T
+
+    def of(self, row: int) -> Signs:
+        """``(n_bends,)`` of one branch."""
+        out = np.empty(self.count, dtype=np.int8)
+        node = self.index[row:row + 1]
+        for level in self.levels:
+            for bend, sides in level.bends:
+                out[bend] = sides[node[0] if len(sides) > 1 else 0]
+            if level.before is not None:
+                node = up(level.before, node)
+        return out
+
+    def codes(self) -> tuple[list[int], NDArray[np.int64]] | None:
+        """The bends that vary, and a number for each branch ``(n_branches,)`` that is made of
+        these; None where some are straight."""
+        varies: list[int] = []
+        code = np.zeros(1, dtype=np.int64)
+        for level in reversed(self.levels):
+            if level.before is not None and len(code) > 1:
+                code = spread_by(code, level.before, grown(level.before), 0)
+            for bend, sides in level.bends:
+                least = int(sides.min())
+                if least < -1 or not sides.all():
+                    return None
+                if least < int(sides.max()):
+                    varies.append(bend)
+                    code = 2 * code + (sides > 0)
+        return varies, code.take(self.index) if len(code) > 1 else np.repeat(code, len(self.index))
+
+
 class Gathering:
     """Poses of one frame by the rows that they are made of. ``base`` are places ``(dim, 1, 1)`` of
     joints that hang on what is known."""
@@ -50,29 +103,30 @@ class Gathering:
         self.bends = bends_of(eqs.rig) if isinstance(tree, Tree) else ()
         self.levels = [list(_levels(eqs, p, self.base, self.bends)) for p in picks]
 
-    def poses(self, mixed: Picks) -> tuple[Array, Signs | None]:
-        """``(n_branches, 1, n_joints, dim)`` in the rig's frame, and the bends where they come
-        cheap ``(n_branches, n_bends)``, else None."""
+    def poses(self, mixed: Picks) -> Array:
+        """``(n_branches, 1, n_joints, dim)`` in the rig's frame."""
         eqs, count = self.eqs, len(mixed.index)
         out = np.empty((eqs.n, count, eqs.dim))
         for j in self.others:
             place = self.base.get(j)
             out[j] = np.nan if place is None else _outward(eqs, place)
-        signs = np.empty((len(self.bends), count), dtype=np.int8)
         for start in range(0, count, BLOCK):
             part = slice(start, start + BLOCK)
             for g, levels in enumerate(self.levels):
-                _fill(out[:, part], signs[:, part], levels, mixed.index[part, g])
+                _fill(out[:, part], levels, mixed.index[part, g])
         if not mixed.alive.all():
             out[:, ~mixed.alive[:, 0]] = np.nan
-            signs[:, ~mixed.alive[:, 0]] = -2
         poses = out.transpose(1, 0, 2)[:, None]
-        if count <= FEW:
-            poses = np.ascontiguousarray(poses)
-        return poses, signs.T if self.bends else None
+        return np.ascontiguousarray(poses) if count <= FEW else poses
+
+    def sides(self, mixed: Picks) -> Sides | None:
+        """The bends of the same branches, None where they come no cheaper than from the poses."""
+        if not self.bends or not mixed.alive.all():
+            return None
+        return Sides(self.levels[0], np.ascontiguousarray(mixed.index[:, 0]), len(self.bends))
 
 
-def _fill(out: Array, signs: Signs, levels: Sequence[Level], index: Ints) -> None:
+def _fill(out: Array, levels: Sequence[Level], index: Ints) -> None:
     """A block of poses, from the level placed last to the first."""
     for level in levels:
         for joint, places in level.joints:
@@ -80,8 +134,6 @@ def _fill(out: Array, signs: Signs, levels: Sequence[Level], index: Ints) -> Non
                 _take(places, index, out[joint])
             else:
                 out[joint] = places.take(index, axis=1)
-        for bend, sides in level.bends:
-            _take(sides, index, signs[bend])
         if level.before is not None:
             index = up(level.before, index)
 

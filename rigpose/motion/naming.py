@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from rigpose.ground.errors import BadInput, Problem
 from rigpose.model.bends import ALONG, SIDES, Bend, Signs, bends_of
 from rigpose.model.rig import Rig
+from rigpose.motion.gathered import Sides
 
 
 class Names(Sequence[str]):
@@ -20,14 +21,14 @@ class Names(Sequence[str]):
     apart, 0 where there is nothing to tell
     """
 
-    def __init__(self, rig: Rig, signs: Signs, told: Sequence[int], count: NDArray[np.intp],
+    def __init__(self, rig: Rig, signs: Signs | Sides, told: Sequence[int], count: NDArray[np.intp],
                  meets: NDArray[np.bool_]) -> None:
         self._bends = bends_of(rig)
-        self._joints = rig.joint_names
+        self._joints, self._helpers = rig.joint_names, rig.helper_joints
         self._signs, self.told, self._count, self._meets = signs, tuple(told), count, meets
 
     def __len__(self) -> int:
-        return len(self._signs)
+        return len(self._meets)
 
     @overload
     def __getitem__(self, k: int) -> str: ...
@@ -42,35 +43,65 @@ class Names(Sequence[str]):
             return " = ".join(dict.fromkeys(self._text(row, side) for side in (1, -1)))
         return self._text(row, 0)
 
+    def _of(self, row: int) -> Signs:
+        return self._signs.of(row) if isinstance(self._signs, Sides) else self._signs[row]
+
     def _text(self, row: int, straight: int) -> str:
+        signs = self._of(row)
         words = [f"{self._joints[self._bends[b].joint]}:"
-                 f"{self._bends[b].word(self._signs[row, b] or straight)}" for b in self.told]
+                 f"{self._bends[b].word(signs[b] or straight)}" for b in self.told]
         count = int(self._count[row])
         return " ".join([*words, f"#{count}"] if count else words) or "only"
 
     def bends(self, row: int) -> dict[str, str]:
-        """Joint to its bend, all joints that have one."""
-        return {self._joints[b.joint]: b.word(self._signs[row, k])
-                for k, b in enumerate(self._bends)}
+        """Joint to its bend: the rig's own joints that have one, and what names tell."""
+        signs = self._of(row)
+        return {self._joints[b.joint]: b.word(signs[k])
+                for k, b in enumerate(self._bends)
+                if k in self.told or self._joints[b.joint] not in self._helpers}
 
 
 def name_rows(rig: Rig, signs: Signs, meets: NDArray[np.bool_], moved: NDArray[np.bool_],
               chosen: NDArray[np.bool_]) -> Names:
     """Names for rows with bends ``(n_branches, n_bends)``, in the order of the rows.
 
-    moved : (n_joints,) whether the joint's own place differs; such joints are told first
+    moved : (n_joints,) whether the joint's own place differs; such joints are told first, and
+    helper joints only where the rig's own leave branches alike
     chosen : (n_joints,) whether it hangs on a choice: where two branches meet, its straight bend
     is the one that they would have to either side
     """
     bends = bends_of(rig)
     varies = [k for k in range(signs.shape[1]) if len(signs) and np.ptp(signs[:, k])]
-    varies.sort(key=lambda k: not moved[bends[k].joint])
+    helper = np.array([rig.joints[b.joint].helper for b in bends], dtype=bool)
+    varies.sort(key=lambda k: (helper[k], not moved[bends[k].joint]))
     told, classes = _telling(signs, varies)
     if meets.any():
-        straight = (signs[meets] == 0).any(axis=0)
-        told += [k for k in np.flatnonzero(straight).tolist()
-                 if k not in told and chosen[bends[k].joint]]
+        hangs = np.array([chosen[b.joint] for b in bends], dtype=bool)
+        straight = (signs[meets] == 0) & hangs
+        told += _untold(straight & ~helper, told)
+        alike = ~straight[:, told].any(axis=1)  # both branches of these have one name yet
+        told += _untold(straight[alike], told)
     return Names(rig, signs, told, _counts(classes), meets)
+
+
+def _untold(straight: NDArray[np.bool_], told: Sequence[int]) -> list[int]:
+    """Bends that are ``straight (n_meets, n_bends)`` in some pose and aren't told yet."""
+    return [k for k in np.flatnonzero(straight.any(axis=0)).tolist() if k not in told]
+
+
+def name_by_sides(rig: Rig, sides: Sides, meets: NDArray[np.bool_],
+                  moved: NDArray[np.bool_]) -> Names | None:
+    """Names of many rows where every combination of the bends that vary is there just once, so
+    that all of these are told; else None."""
+    coded = None if meets.any() else sides.codes()
+    if coded is None:
+        return None
+    varies, codes = coded
+    if 2 ** len(varies) != len(codes) or not (np.bincount(codes, minlength=len(codes)) == 1).all():
+        return None
+    bends = bends_of(rig)
+    told = sorted(sorted(varies), key=lambda k: not moved[bends[k].joint])
+    return Names(rig, sides, told, np.zeros(len(codes), dtype=np.intp), meets)
 
 
 def _telling(signs: Signs, varies: Sequence[int]) -> tuple[list[int], NDArray[np.int64]]:
@@ -130,7 +161,8 @@ def wanted_signs(rig: Rig, bends: Mapping[str, str]) -> dict[int, int]:
     for joint, word in bends.items():
         part = f'branch "{joint}"'
         if joint not in number:
-            known = ", ".join(number) or "none"
+            own = [j for j in number if j not in rig.helper_joints]
+            known = ", ".join(own or number) or "none"
             problems.append(Problem(rig.source, part, "names a joint that has a bend",
                                     f'"{joint}"', f"joints with bends are {known}"))
             continue

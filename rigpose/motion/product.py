@@ -33,11 +33,13 @@ MANY = 1 << 14
 @dataclass(frozen=True)
 class Sorted:
     """A group's rows that live somewhere, nearest to rest first: ``order (k,)`` among them, and
-    ``gap (k,)`` their squared distances to rest in that order."""
+    in that order ``gap (k,)`` their squared distances to rest, ``steps (k,)`` the same as
+    distances in whole steps."""
 
     rows: Rows
     order: Ints
     gap: Array
+    steps: Array
 
 
 @dataclass(frozen=True)
@@ -85,8 +87,8 @@ def kept(rest: Rest, rows: Rows) -> Sorted:
         order = live[order]
     once = _once(rest, rows, order, steps)
     if once is not None:
-        order = order[once]
-    return Sorted(rows, order, gap[order])
+        order, steps = order[once], steps[once]
+    return Sorted(rows, order, gap[order], steps)
 
 
 def _once(rest: Rest, rows: Rows, order: Ints, steps: Array) -> Ints | None:
@@ -237,7 +239,7 @@ def _in_order(rest: Rest, picks: Sequence[Sorted], sizes: Sequence[int], count: 
         tuple[Ints, Array]):
     """Choices ``(count, n_groups)`` nearest to rest first, and their distances in steps."""
     if len(picks) == 1:
-        return np.arange(count)[:, None], _steps(rest, picks[0].gap[:count])
+        return np.arange(count)[:, None], picks[0].steps[:count].copy()
     choice = _mixed_radix(sizes, count)
     gap = np.zeros(len(choice))
     for g, p in enumerate(picks):
@@ -253,13 +255,10 @@ def taken(p: Picks, which: Ints) -> Picks:
                  p.margin[which], p.meets[which], p.count, p.cut)
 
 
-def placed(p: Picks, where: Ints, others: Picks) -> Picks:
-    """The same with ``others`` at some of the places."""
-    choice, index, steps = p.choice.copy(), p.index.copy(), p.steps.copy()
-    alive, margin, meets = p.alive.copy(), p.margin.copy(), p.meets.copy()
-    choice[where], index[where], steps[where] = others.choice, others.index, others.steps
-    alive[where], margin[where], meets[where] = others.alive, others.margin, others.meets
-    return Picks(choice, index, steps, alive, margin, meets, p.count, p.cut)
+def put(p: Picks, where: Ints, others: Picks) -> None:
+    """Write other branches to some of the places."""
+    p.choice[where], p.index[where], p.steps[where] = others.choice, others.index, others.steps
+    p.alive[where], p.margin[where], p.meets[where] = others.alive, others.margin, others.meets
 
 
 def _only_base(base_alive: NDArray[np.bool_]) -> Picks:

@@ -96,7 +96,7 @@ def _ahead(context: Context, clock: Clock, frame: int, rows: Sequence[tuple[Rows
     picks = []
     for (r, _), which in zip(rows, same, strict=True):
         followed = follow_from(context, r.group, part, r.take(which))
-        picks.append(Sorted(followed, np.arange(len(which)), np.zeros(len(which))))
+        picks.append(Sorted(followed, np.arange(len(which)), *np.zeros((2, len(which)))))
     return made_from(context, part, np.arange(part.count, dtype=float), picks, Found.COMPLETE)
 
 

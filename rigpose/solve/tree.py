@@ -43,10 +43,7 @@ class Tree(Sequence[Array]):
 
     def size(self, level: int) -> int:
         """How many nodes a level has."""
-        if not level:
-            return 1
-        grown = self.maps[level - 1]
-        return 2 * grown if isinstance(grown, int) else len(grown)
+        return grown(self.maps[level - 1]) if level else 1
 
     def __len__(self) -> int:
         return len(self.nodes)
@@ -97,9 +94,14 @@ class Tree(Sequence[Array]):
         return np.broadcast_to(out, (self.branches,))
 
 
-def up(grown: Ints | int, index: Ints) -> Ints:
+def grown(before: Ints | int) -> int:
+    """How many nodes have grown."""
+    return 2 * before if isinstance(before, int) else len(before)
+
+
+def up(before: Ints | int, index: Ints) -> Ints:
     """From nodes of a level to those that they grew from."""
-    return around(index, grown) if isinstance(grown, int) else grown.take(index)
+    return around(index, before) if isinstance(before, int) else before.take(index)
 
 
 def tree_of(table: Table, joints: Sequence[int]) -> Tree:
