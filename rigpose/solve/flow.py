@@ -113,7 +113,9 @@ def writes(step: Step) -> tuple[Point, ...]:
     return step.joints if isinstance(step, Cluster) else ()
 
 
-_WITHOUT_VALUES = frozenset({Given, Carry, Hang, Seat, Shift, Level, Fit, Swing, Cluster, Gauge})
+POINTS_ONLY = frozenset({Given, Carry, Hang, Seat, Shift, Level, Fit, Swing})
+"""Steps that neither read nor settle a value."""
+_WITHOUT_VALUES = POINTS_ONLY | {Cluster, Gauge}
 
 
 def values_read(step: Step, eqs: Equations) -> set[int]:

@@ -7,7 +7,7 @@ from collections.abc import Iterable
 from msgspec.structs import replace
 
 from rigpose.model.equations import Equations
-from rigpose.solve.flow import has_choice, reads, value_written, values_read, writes
+from rigpose.solve.flow import POINTS_ONLY, has_choice, reads, value_written, values_read, writes
 from rigpose.solve.plan import Check, Cluster, Group, Step
 from rigpose.solve.values import joints_of_value
 
@@ -62,7 +62,9 @@ def grouped(
     owner: list[int] = []
     plain = not eqs.values
     for number, step in enumerate(ordered):
-        read = reads(step) if plain and type(step) is not Cluster else _read_fully(step, eqs)
+        kind = type(step)
+        simple = kind in POINTS_ONLY or (plain and kind is not Cluster)
+        read = reads(step) if simple else _read_fully(step, eqs)
         met = {owner_of[x] for x in read if x in owner_of}
         if not met and not has_choice(step):
             owner.append(-1)
@@ -70,7 +72,7 @@ def grouped(
         first = min(met) if met else number
         if len(met) > 1:
             sets.join([first, *met])
-        for x in writes(step) if plain else _written(step):
+        for x in writes(step) if simple else _written(step):
             owner_of[x] = first
         owner.append(first)
     base: list[Step] = []

@@ -239,7 +239,7 @@ class Growth:
             self.held[number].add(joint)
         if not missing:
             return
-        if inside >= 2 and self._base(solid) is not None:
+        if inside >= 2:
             self._push(0, number, "solid")
         elif inside == 1:
             for j in missing:
