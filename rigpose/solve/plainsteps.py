@@ -200,16 +200,19 @@ def _line(step: Meet, table: Table, line: Line, radius: float) -> Taker | None:
 
 @taker_of.register
 def _(step: Carry, table: Table) -> Taker | None:
-    if not all(isinstance(x, tuple) for x in (*step.local, *step.base)):
+    base = step.base
+    if not isinstance(base[0], tuple) or not isinstance(base[1], tuple):
         return _by_arrays(step, table)
-    p, q = step.placed
-    a, b = (np.array(x) for x in step.base)
-    w = b - a
+    (p, q), (s, t) = step.placed, base[0]
+    g, h = base[1][0] - s, base[1][1] - t
+    square = g * g + h * h
     shares = []
     for dst, local in zip(step.dst, step.local, strict=True):
-        v = np.array(local) - a
-        shares.append((dst, float(v @ w / (w @ w)), float((w[0] * v[1] - w[1] * v[0]) / (w @ w))))
-    rounding, own = table.rounding, float(np.sqrt(w @ w))
+        if not isinstance(local, tuple):
+            return _by_arrays(step, table)
+        i, j = local[0] - s, local[1] - t
+        shares.append((dst, (i * g + j * h) / square, (g * j - h * i) / square))
+    rounding, own = table.rounding, sqrt(square)
     limit = FORGIVEN * table.reach
 
     def take(state: State) -> bool:
