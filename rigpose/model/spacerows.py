@@ -107,13 +107,13 @@ def by_frame_rows(x: Array, rows: BodyRows) -> Family:
     a, b, c, d = (x[:, rows.by_frame[:, k]] for k in range(4))
     u, v, w = (rows.weights[:, k][:, None] for k in range(3))
     e, f = b - a, c - a
-    normal = np.cross(e, f)
-    long = np.linalg.norm(normal, axis=-1, keepdims=True)
+    normal = _cross(e, f)
+    long = np.sqrt((normal * normal).sum(axis=-1, keepdims=True))
     n = normal / long
     residual = d - a - u * e - v * f - w * n
     m, eye = len(rows.weights), np.eye(3)
-    across = (eye - n[..., :, None] * n[..., None, :]) / long[..., None]
-    by_e, by_f = across @ -_cross_matrix(f), across @ _cross_matrix(e)
+    # The normal's slopes are (1 - n n') / long times a cross product's: n n' [v]x = n (n x v)'.
+    by_e, by_f = _across(n, f, -long), _across(n, e, long)
     slopes = np.zeros((len(x), m, 3, 4, 3))
     at_b = -u[..., None] * eye - w[..., None] * by_e
     at_c = -v[..., None] * eye - w[..., None] * by_f
@@ -121,6 +121,23 @@ def by_frame_rows(x: Array, rows: BodyRows) -> Family:
     slopes[:, :, :, 0] = -eye - at_b - at_c
     cols = np.repeat(columns(rows.by_frame), 3, axis=0)
     return residual.reshape(len(x), 3 * m), cols, slopes.reshape(len(x), 3 * m, 12)
+
+
+def _across(n: Array, v: Array, long: Array) -> Array:
+    """Matrices ``(..., 3, 3)`` of what the cross product with v leaves square to n, over long."""
+    out = _cross_matrix(v)
+    out -= n[..., :, None] * _cross(n, v)[..., None, :]
+    out /= long[..., None]
+    return out
+
+
+def _cross(a: Array, b: Array) -> Array:
+    """Vector products ``(..., 3)``."""
+    out = np.empty(np.broadcast_shapes(a.shape, b.shape))
+    for k in range(3):
+        i, j = (k + 1) % 3, (k + 2) % 3
+        out[..., k] = a[..., i] * b[..., j] - a[..., j] * b[..., i]
+    return out
 
 
 def _cross_matrix(v: Array) -> Array:

@@ -1,8 +1,8 @@
 """Frames between two that are solved, all at once: where blocks of several joints are followed.
 
-A cubic through the four nearest solved frames starts Newton's method; every round halves what is
-left. A pose farther from where the cubic puts it than a tenth of its margin is not trusted to be
-on the same row: such frames are left to be followed step by step.
+A polynomial through the six nearest solved frames starts Newton's method; every round halves what
+is left. A pose farther from where the polynomial puts it than a tenth of its margin is not trusted
+to be on the same row: such frames are left to be followed step by step.
 """
 
 from __future__ import annotations
@@ -22,6 +22,7 @@ from rigpose.solve.table import Inputs
 
 Mask = NDArray[np.bool_]
 TRUST = 0.1
+POINTS = 6
 CELLS = 1 << 12
 """Poses solved in one go."""
 
@@ -95,10 +96,10 @@ def _solved(context: Context, group: Group, clock: Clock, rows: Rows, known: Int
 
 
 def _weights(known: Ints, at: Ints, middle: Ints) -> tuple[Ints, Array]:
-    """Of the four nearest solved frames their places ``(m, 4)`` in ``known`` and Lagrange's
+    """Of the nearest solved frames their places ``(m, POINTS)`` in ``known`` and Lagrange's
     weights."""
-    count = min(4, len(known))
-    low = np.clip(at - 1, 0, len(known) - count)
+    count = min(POINTS, len(known))
+    low = np.clip(at + 1 - count // 2, 0, len(known) - count)
     index = low[:, None] + np.arange(count)
     times = known[index].astype(np.float64)
     weight = np.ones(index.shape)
@@ -112,13 +113,14 @@ def _weights(known: Ints, at: Ints, middle: Ints) -> tuple[Ints, Array]:
 def _mixed(values: Array, known: Ints, at: Ints, middle: Ints, index: Ints,
            weight: Array) -> Array:
     """Values ``(c, B, F)`` of rows at frames between, ``(c, B, m)``; straight on where one of the
-    four has none."""
-    some = values[:, :, known[index]]
-    cubic: Array = (some * weight).sum(axis=-1)
+    nearest has none."""
+    curved = values[:, :, known[index[:, 0]]] * weight[:, 0]
+    for k in range(1, weight.shape[1]):
+        curved += values[:, :, known[index[:, k]]] * weight[:, k]
     a, b = known[at], known[at + 1]
     share = (middle - a) / (b - a)
     straight = values[:, :, a] * (1 - share) + values[:, :, b] * share
-    return np.where(np.isnan(cubic), straight, cubic)
+    return np.where(np.isnan(curved), straight, curved)
 
 
 def write(rows: Rows, frames: Ints, cells: Cells, which: Ints, alive: Mask) -> None:

@@ -140,7 +140,7 @@ def _fall(own: OwnRows, best: Array, size: Array, active: Ints, given: tuple[Arr
         flat[active[falls]] = now[active[falls]]
         # Halving is what a step does at worst near a solution, a quarter of the residual.
         idle[active] = np.where(off < 0.7 * size[active], 0, idle[active] + 1)
-        going = (idle[active] < patience) & (off > 0)
+        going = (idle[active] < patience) & (off > FINE)
         size[active] = np.minimum(size[active], off)
         active = active[going]
         if not len(active):
