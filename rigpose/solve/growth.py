@@ -360,7 +360,7 @@ class Growth:
         if len(inside) > 12:
             inside = inside[:12]
         best, found = 1e-9, None
-        for a, b in combinations(inside, 2):
+        for a, b in combinations(inside, 2) if len(inside) > 1 else ():
             gap = max([dist(pose[a], pose[b]) for pose in self.views])
             if gap > best * (1 + 1e-9):
                 best, found = gap, (a, b)
@@ -368,25 +368,23 @@ class Growth:
 
     def _spread(self, joints: list[int], make: Callable[[tuple[Point, ...]], Step]) -> None:
         """Place several joints by one step."""
-        dst = tuple(j if self.ground else self.new_point() for j in joints)
+        dst = tuple(joints) if self.ground else tuple([self.new_point() for _ in joints])
         self.steps.append(make(dst))
-        for j, point in zip(joints, dst, strict=True):
-            self.place[j] = point
+        self.place.update(zip(joints, dst, strict=True))
         for j in joints:
             self._arrived(j)
 
     def _carry(self, number: int) -> None:
-        solid = self.net.solids[number]
-        missing = [j for j in solid.local if j not in self.place]
-        base = self._base(solid)
-        if not missing or base is None:
+        solid, place = self.net.solids[number], self.place
+        missing = [j for j in solid.local if j not in place]
+        base = self._base(solid) if missing else None
+        if base is None:
             return
         a, b = base
-        self._hold(number, missing)
-        local = tuple(solid.local[j] for j in missing)
-        placed, seat = (self.place[a], self.place[b]), (solid.local[a], solid.local[b])
-        self._spread(missing, lambda dst: Carry(
-            dst=dst, local=local, placed=placed, base=seat, parts=(solid.name,)))
+        self.held[number].update(missing)
+        local = tuple([solid.local[j] for j in missing])
+        placed, seat = (place[a], place[b]), (solid.local[a], solid.local[b])
+        self._spread(missing, lambda dst: Carry(dst, local, placed, seat, parts=(solid.name,)))
 
     def _slide(self, k: int) -> None:
         lines = self.net.eqs.lines
