@@ -136,7 +136,6 @@ def test_rigs_on_a_grid_where_a_joint_turns_freely_in_another_branch(seed: int) 
 PIN = {"pin": True}
 
 
-@pytest.mark.xfail(raises=rp.BadInput, reason="what is drawn at a dead centre is said to move")
 @pytest.mark.parametrize("rail", [
     {"through": [2, 0, 0], "direction": [0, 0, 1]}, {"through": [2, 0, 0], "normal": [1, 0, 0]}])
 def test_a_joint_drawn_where_its_rail_touches_its_ball(rail: dict[str, list[int]]) -> None:

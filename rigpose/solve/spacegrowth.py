@@ -7,14 +7,14 @@ placed; until then it is a check.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from itertools import combinations
 from math import hypot
 
 import numpy as np
 
-from rigpose.model.equations import GROUND
+from rigpose.model.equations import GROUND, Array
 from rigpose.solve.growth import APART, PARALLEL, Growth, Key, Locus
 from rigpose.solve.net import Solid
 from rigpose.solve.plan import Circle, Given, Hang, Hinge, Junction, Length, Line, Point, Sheet
@@ -140,16 +140,42 @@ class SpaceGrowth(Growth):
             self._join_at(joint, chosen)
 
     def force(self) -> int | None:
-        """As in the plane: spheres about three joints not in line meet in two points at most."""
+        """As in the plane: by surfaces that touch but can't have more than two points in common."""
         for joint in sorted(self.loci):
-            if joint in self.place:
-                continue
-            spheres = [x for x in self.loci[joint] if x.centre >= 0]
-            for three in combinations(spheres[:MOST_LOCI], 3):
-                a, b, c = (self.poses[:, x.centre] for x in three)
-                if float(np.nanmax(np.linalg.norm(np.cross(b - a, c - a), axis=1))) > APART:
-                    self._join_at(joint, three)
+            if joint not in self.place:
+                loci = self.loci[joint][:MOST_LOCI]
+                chosen = next(self._finite_sets(loci), None) or self._stretched(joint, loci)
+                if chosen is not None:
+                    self._join_at(joint, chosen)
                     return joint
+        return None
+
+    def _finite_sets(self, loci: Sequence[Locus]) -> Iterator[tuple[Locus, ...]]:
+        """A line and a sphere; a sphere and two planes, or two spheres and a plane, with no common
+        axis; spheres about three joints not in line."""
+        lines, sheets, spheres = ([x for x in loci if type(x.curve) is kind] for kind in ORDER)
+        yield from ((line, sphere) for line in lines for sphere in spheres)
+        for one, two in combinations(sheets, 2):
+            if _square(one.normals, two.normals) > APART:
+                yield from ((one, two, sphere) for sphere in spheres)
+        ways = {(a.centre, b.centre): self.poses[:, b.centre] - self.poses[:, a.centre]
+                for a, b in combinations(spheres, 2)}
+        for sheet in sheets:
+            yield from ((sheet, a, b) for a, b in combinations(spheres, 2)
+                        if _square(sheet.normals, ways[a.centre, b.centre]) > APART)
+        yield from ((a, b, c) for a, b, c in combinations(spheres, 3)
+                    if _square(ways[a.centre, b.centre], ways[a.centre, c.centre]) > APART)
+
+    def _stretched(self, joint: int, loci: Sequence[Locus]) -> tuple[Locus, ...] | None:
+        """Surfaces with a common axis on which the joint lies: they touch there, nowhere else."""
+        spheres = [x for x in loci if x.centre >= 0]
+        others = [x for x in loci if type(x.curve) is Sheet]
+        for a, b in combinations(spheres, 2):
+            way = self.poses[:, b.centre] - self.poses[:, a.centre]
+            mine = self.poses[:, joint] - self.poses[:, a.centre]
+            third = next((x for x in (*others, *spheres) if x is not a and x is not b), None)
+            if third is not None and _square(way, mine) <= PARALLEL < float(np.abs(way).max()):
+                return (third, a, b) if third in others else (a, b, third)
         return None
 
     def _join_at(self, joint: int, chosen: tuple[Locus, ...]) -> None:
@@ -270,6 +296,12 @@ class SpaceGrowth(Growth):
             long = hypot(x, y, z) or 1.0
             normals.append((x / long, y / long, z / long))
         self._offer(joint, Locus(Circle(self.place[centre], radius), uses, part, normals, centre))
+
+
+def _square(a: Array | Sequence[tuple[float, ...]], b: Array | Sequence[tuple[float, ...]]) -> (
+        float):
+    """The largest vector product of two directions, pose by pose."""
+    return float(np.nanmax(np.linalg.norm(np.cross(a, b), axis=1)))
 
 
 def _few_volumes(loci: list[Locus], sets: list[tuple[int, ...]]) -> list[float]:
