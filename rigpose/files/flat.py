@@ -26,10 +26,11 @@ Table = dict[str, object]
 
 
 def flat_text(rig: Rig) -> str:
-    """TOML that `load_rig` reads back to an equal rig, with the same fingerprint.
+    """TOML that `load_rig` reads back to the same parts, with the same fingerprint.
 
     Every length is written, in the rig's unit; floats have the shortest digits that read back
-    the same.
+    the same. What hinges, universals and sliders made is written as joints, plates and rails: so
+    their helper joints are the file's own.
     """
     return "\n".join([*_head(rig), *_sections(rig), ""])
 

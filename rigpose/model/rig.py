@@ -36,12 +36,23 @@ class Part(Record, frozen=True, kw_only=True):
 class Joint(Part, frozen=True, kw_only=True):
     """A point; ``at`` is its place at rest as written, None where the file gives none.
 
-    A ``helper`` stands in no file: a hinge, a universal or a slider made it to hold an axis.
+    A ``helper`` stands in no file: a hinge, a universal or a slider made it to hold an axis. Two
+    joints that say the same of a point are equal, whichever made them; rigs tell these apart.
     """
 
     at: Coordinates | None = None
     pin: bool = False
     helper: bool = False
+
+    @property
+    def _said(self) -> tuple[object, ...]:
+        return self.name, self.at, self.pin, self.note, self.layer, self.skin
+
+    def __eq__(self, other: object) -> bool:
+        return isinstance(other, Joint) and self._said == other._said
+
+    def __hash__(self) -> int:
+        return hash(self._said)
 
 
 class Bone(Part, frozen=True, kw_only=True):
@@ -157,7 +168,10 @@ class Stand:
 
 @dataclass(frozen=True)
 class Rig:
-    """A whole rig. Build it with `load_rig` or `make_rig`; both check everything."""
+    """A whole rig. Build it with `load_rig` or `make_rig`; both check everything.
+
+    helper_joints : the names of the joints that hinges, universals and sliders made
+    """
 
     name: str
     dim: int
@@ -181,6 +195,12 @@ class Rig:
     note: str = ""
     source: str = ""
     studio: Mapping[str, object] = field(default_factory=dict)
+    helper_joints: frozenset[str] = field(init=False, repr=False)
+
+    def __post_init__(self) -> None:
+        # Kept as a field, since rigs that differ in it alone are met in different words.
+        made = frozenset(j.name for j in self.joints if j.helper)
+        object.__setattr__(self, "helper_joints", made)
 
     def __hash__(self) -> int:
         # Cheap on purpose: caches ask for it often, and equality decides in the end.
@@ -195,11 +215,6 @@ class Rig:
     def own_joints(self) -> tuple[str, ...]:
         """The names of the joints that people know: all but helpers, in the same order."""
         return tuple(j.name for j in self.joints if not j.helper)
-
-    @cached_property
-    def helper_joints(self) -> frozenset[str]:
-        """The names of the joints that hinges, universals and sliders made."""
-        return frozenset(j.name for j in self.joints if j.helper)
 
     @cached_property
     def index(self) -> Mapping[str, int]:

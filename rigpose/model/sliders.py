@@ -21,7 +21,6 @@ from rigpose.model.rig import Coordinates, Pair, Rail, Rig, Span, Tie
 from rigpose.model.spec import SliderSpec
 from rigpose.model.vectors import along, normal_to
 
-
 ENDS = ("axis", "side", "start", "end", "side start", "side end")
 """What the names of a slider's helper joints end in."""
 
