@@ -10,8 +10,8 @@ import click
 
 from rigpose.cli.bakeall import bake_all, tell_files
 from rigpose.cli.given import Gathered, as_json, frame_options, keep_inputs, ratio, the_shot
-from rigpose.cli.show import meter, print_json, problem_dict
-from rigpose.files.csvfile import CsvWriter, Layout
+from rigpose.cli.show import event_dict, known_event, meter, print_json, problem_dict
+from rigpose.files.csvfile import Layout, RigWriter
 from rigpose.files.motionfile import save_values, to_file
 from rigpose.files.scene import Outlet, outlet
 from rigpose.ground.budget import Budget
@@ -88,8 +88,7 @@ def _bake(work: Baking, way: Outlet, out: str | None, layout: Layout) -> Motion:
         bar = stack.enter_context(meter("baking"))
         writer = None
         if out is not None:
-            writer = stack.enter_context(
-                CsvWriter(out, rig.joint_names, layout=layout, names=rig.names))
+            writer = stack.enter_context(RigWriter(out, rig, layout=layout))
         for piece in work.pieces():
             done.append(piece)
             if writer is not None:
@@ -100,7 +99,7 @@ def _bake(work: Baking, way: Outlet, out: str | None, layout: Layout) -> Motion:
     return work.motion(done)
 
 
-def _write(writer: CsvWriter, work: Baking, way: Outlet, piece: Piece) -> None:
+def _write(writer: RigWriter, work: Baking, way: Outlet, piece: Piece) -> None:
     frames = work.shot.numbers[piece.start:piece.stop]
     writer.block(way.number(frames), to_file(work.shot.rig, way, piece.positions))
 
@@ -109,12 +108,11 @@ def bake_dict(motion: Motion, out: str | None) -> Mapping[str, Any]:
     """What `--json` prints."""
     return {
         "frames": len(motion), "branch": motion.name, "bends": motion.bends,
-        "found": motion.found.value, "worst": motion.worst,
+        "found": motion.found.value, "worst": motion.worst if _measures(motion) else None,
         "worst_redundant": motion.worst_redundant,
         "spans": [{"first": s.first, "last": s.last, "parts": s.parts, "why": s.why}
                   for s in motion.spans],
-        "events": [{"frame": e.frame, "kind": e.kind, "joints": e.joints, "parts": e.parts}
-                   for e in motion.events],
+        "events": [event_dict(motion.rig, e) for e in motion.events],
         "notes": motion.notes, "problems": [problem_dict(p) for p in motion.problems],
         "out": out,
     }
@@ -129,14 +127,31 @@ def _tell(motion: Motion) -> None:
     click.echo(f"{motion.rig.name}: {branch}{state}")
     if not motion.found.whole or motion.found is Found.PROBABLY:
         click.echo(f"the branches to choose from are {motion.found.value}")
-    for line in (*motion.spans, *motion.problems, *motion.notes, *_events(motion.events)):
+    events = [known_event(motion.rig, e) for e in motion.events]
+    for line in (*motion.spans, *motion.problems, *motion.notes, *_events(events)):
         click.echo(f"  {line}")
     if missing < len(motion):
-        click.echo(f"lengths hold to {motion.worst:.1e} of the rig's size, "
-                   f"{motion.size:.4g} {motion.rig.unit}")
+        for line in _held(motion):
+            click.echo(line)
+
+
+def _measures(motion: Motion) -> bool:
+    """Whether the rig has a length that isn't surplus."""
+    rig = motion.rig
+    return any(p.name not in motion.redundant for p in (*rig.bones, *rig.plates))
+
+
+def _held(motion: Motion) -> Iterator[str]:
+    """How well lengths hold. Where all are surplus there is only how far they agree."""
+    size = f"{motion.size:.4g} {motion.rig.unit}"
+    surplus = f"surplus lengths ({', '.join(sorted(motion.redundant))})"
+    if not _measures(motion):
         if motion.redundant:
-            click.echo(f"surplus lengths ({', '.join(sorted(motion.redundant))}) are off by at "
-                       f"most {motion.worst_redundant:.1e} of it")
+            yield f"{surplus} agree to {motion.worst_redundant:.1e} of the rig's size, {size}"
+        return
+    yield f"lengths hold to {motion.worst:.1e} of the rig's size, {size}"
+    if motion.redundant:
+        yield f"{surplus} are off by at most {motion.worst_redundant:.1e} of it"
 
 
 def _events(events: Sequence[Event]) -> Iterator[str]:

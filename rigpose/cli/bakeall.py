@@ -3,14 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import asdict
 from typing import Any
 
 import click
 import numpy as np
 
-from rigpose.cli.show import counted, print_json
-from rigpose.files.csvfile import CsvWriter, Layout, ValuesWriter
+from rigpose.cli.show import counted, event_dict, print_json
+from rigpose.files.csvfile import Layout, RigWriter, ValuesWriter
 from rigpose.files.motionfile import to_file, values_table
 from rigpose.files.scene import Outlet
 from rigpose.ground.words import State
@@ -43,8 +42,7 @@ def _dead(found: Branches) -> int:
 
 
 def _write(found: Branches, way: Outlet, out: str, layout: Layout) -> None:
-    with CsvWriter(out, found.joints, layout=layout, branches=True,
-                   names=found.rig.names) as writer:
+    with RigWriter(out, found.rig, layout=layout, branches=True) as writer:
         for k, name in enumerate(found.names):
             places = to_file(found.rig, way, found.positions[k])
             writer.block(way.number(found.frames), places, name)
@@ -62,7 +60,8 @@ def _dict(found: Branches, why: Sequence[str], out: str | None) -> dict[str, Any
     """The keys of a bake of one row, and ``branches``; `branch` and `spans` speak of one only."""
     return {
         "frames": len(found.frames), "branch": None, "found": found.found.value, "spans": [],
-        "branches": [{"name": name, "living": living, "events": [asdict(e) for e in events]}
+        "branches": [{"name": name, "living": living,
+                      "events": [event_dict(found.rig, e) for e in events]}
                      for name, living, events in zip(found.names, _living(found), _events(found),
                                                      strict=True)],
         "notes": found.notes, "why": why, "problems": [], "out": out,

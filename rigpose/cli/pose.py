@@ -10,8 +10,8 @@ import click
 import numpy as np
 
 from rigpose.cli.given import as_json, frame_options, keep_inputs, read_given, the_rig
-from rigpose.cli.show import counted, print_json, print_table
-from rigpose.files.csvfile import CsvWriter
+from rigpose.cli.show import counted, known_joints, print_json, print_table
+from rigpose.files.csvfile import RigWriter, own_places
 from rigpose.files.motionfile import to_file
 from rigpose.files.scene import Outlet, outlet
 from rigpose.ground.budget import Budget
@@ -70,7 +70,7 @@ def pose_command(rig: str, out: str | None, as_json: bool, **asked: Any) -> int:
 
 
 def _write(found: Branches, out: str, way: Outlet) -> None:
-    with CsvWriter(out, found.joints, branches=True, names=found.rig.names) as writer:
+    with RigWriter(out, found.rig, branches=True) as writer:
         for k, name in enumerate(found.names):
             writer.block(found.frames, to_file(found.rig, way, found.positions[k]), name)
 
@@ -80,13 +80,14 @@ def pose_dict(found: Branches) -> Mapping[str, Any]:
     frames = slice(None) if len(found.frames) > 1 else 0
     mirrors = found.mirror_of if len(found) else ()
     return {
-        "found": found.found.value, "name": found.rig.name, "joints": found.joints,
-        "count": found.count, "groups": found.groups, "notes": found.notes,
+        "found": found.found.value, "name": found.rig.name, "joints": found.rig.own_joints,
+        "count": found.count, "groups": [known_joints(found.rig, g) for g in found.groups],
+        "notes": found.notes,
         "branches": [{
             "name": found.names[k], "bends": found.names.bends(k),
             "margin": found.margin[k, frames], "miss": _miss(found, k)[frames],
             "mirror_of": mirrors[k], "values": _values(found, k, frames),
-            "positions": found.positions[k, frames],
+            "positions": own_places(found.rig, found.positions[k, frames]),
         } for k in range(len(found))],
     }
 
@@ -138,7 +139,8 @@ def _gauges(found: Branches) -> list[str]:
 def _tell_more(found: Branches) -> None:
     if len(found.groups) > 1:
         click.echo("independent groups, each with branches of its own:")
-    for k, group in enumerate(found.groups if len(found.groups) > 1 else ()):
+    for k, every in enumerate(found.groups if len(found.groups) > 1 else ()):
+        group = known_joints(found.rig, every)
         joints = ", ".join(group[:6]) + (", …" if len(group) > 6 else "")
         ways = len(np.unique(found.choice[:, k])) if found.found.whole else 0
         click.echo(f"  {joints}" + (f": {counted(ways, 'branch', 'branches')}" if ways else ""))

@@ -7,7 +7,7 @@ import shutil
 import sys
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
-from dataclasses import asdict
+from dataclasses import asdict, replace
 from typing import TYPE_CHECKING, Any
 
 import click
@@ -15,6 +15,9 @@ import msgspec
 import numpy as np
 
 from rigpose.ground.errors import Problem
+from rigpose.model.rig import Rig
+from rigpose.model.sliders import stands_at
+from rigpose.motion.motion import Event
 
 if TYPE_CHECKING:
     from rich.progress import Progress, TaskID
@@ -44,6 +47,22 @@ def _plain(data: object) -> object:
 def problem_dict(problem: Problem) -> dict[str, Any]:
     """A problem's fields by name."""
     return asdict(problem)
+
+
+def known_joints(rig: Rig, joints: Sequence[str]) -> tuple[str, ...]:
+    """The joints with those at which helpers stand in the helpers' place, none twice."""
+    return tuple(dict.fromkeys(
+        stands_at(rig, j) if j in rig.helper_joints else j for j in joints))
+
+
+def known_event(rig: Rig, event: Event) -> Event:
+    """The event with joints that people know."""
+    return replace(event, joints=known_joints(rig, event.joints))
+
+
+def event_dict(rig: Rig, event: Event) -> dict[str, Any]:
+    """An event's fields by name."""
+    return asdict(known_event(rig, event))
 
 
 def counted(number: int, one: str, many: str = "") -> str:

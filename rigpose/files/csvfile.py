@@ -20,8 +20,9 @@ import numpy.typing as npt
 from rigpose.files.csvread import Table, read_positions
 from rigpose.files.disk import Beside
 from rigpose.ground.errors import BadInput, Problem
+from rigpose.model.rig import Rig
 
-__all__ = ["CsvWriter", "Layout", "Table", "ValuesWriter", "read_positions"]
+__all__ = ["CsvWriter", "Layout", "RigWriter", "Table", "ValuesWriter", "read_positions"]
 
 Floats = npt.NDArray[np.float64]
 Layout = Literal["tall", "wide"]
@@ -97,6 +98,31 @@ class CsvWriter(_Writer):
             self._add(at, self._joints, places, branch)
         else:
             self._add(at, [""], places.reshape(len(at), 1, -1), branch)
+
+
+class RigWriter(CsvWriter):
+    """Writes the joints that people know of a rig, without the helpers that hinges and the like
+    made: a studio has no such joints. ``block`` takes the places of all joints of the rig."""
+
+    def __init__(self, path: str | Path, rig: Rig, *, layout: Layout = "tall",
+                 branches: bool = False) -> None:
+        self._rig = rig
+        super().__init__(path, rig.own_joints, layout=layout, branches=branches, names=rig.names)
+
+    def block(self, frames: npt.ArrayLike, positions: npt.ArrayLike,
+              branch: str | None = None) -> None:
+        """As `CsvWriter.block`, with positions (n_frames, n_joints, 3) of `Rig.joint_names`."""
+        every = (len(self._rig.joints), 3)
+        at, places = _block(self._file.path.name, frames, positions, every)
+        super().block(at, own_places(self._rig, places), branch)
+
+
+def own_places(rig: Rig, positions: Floats) -> Floats:
+    """Of positions (..., n_joints, 3) those of the rig's own joints."""
+    if not rig.helper_joints:
+        return positions
+    kept: Floats = positions[..., [rig.index[j] for j in rig.own_joints], :]
+    return kept
 
 
 class ValuesWriter(_Writer):
