@@ -1,6 +1,9 @@
 """The rest pose written back into a rig file as the joints' `at`s, with all else untouched.
 
-Only joints that rest has moved are rewritten, so expressions and comments of the others stay.
+Only joints that rest has moved are rewritten, so expressions and comments of the others stay. The
+helper joints of hinges, universals and sliders stand in no file: they follow from a joint and a
+direction. Where rest turns the direction, or moves the joint from where a slider counts, new
+places alone would make another machine.
 """
 
 from __future__ import annotations
@@ -16,10 +19,17 @@ from tomlkit.items import InlineTable
 from rigpose.files.disk import read_text
 from rigpose.ground.errors import BadInput, Problem
 from rigpose.model.equations import Array
-from rigpose.model.rig import Rig
+from rigpose.model.names import path_text
+from rigpose.model.rig import Joint, Rig
+from rigpose.model.sliders import stands_at
+from rigpose.motion.gauges import read_value
 from rigpose.solve.rest import Rest
 
 Table = MutableMapping[str, object]
+
+TURN = 1e-9
+"""A smaller turn of an axis (radians) is what drawing and rest differ by in rounding: a thousandth
+of what `slack` lets lengths disagree."""
 
 
 def settle_text(path: Path, rig: Rig, rest: Rest) -> str:
@@ -28,14 +38,20 @@ def settle_text(path: Path, rig: Rig, rest: Rest) -> str:
     ``rig`` is what `load_rig` made of the file. A key `rest` (places from a CSV file) is taken
     out, as the places now stand in the file. Lengths that are measured from `at` stay what they
     were to rounding, redundant ones within `slack`. Raises BadInput where the rig doesn't
-    assemble, and where a joint that moves belongs to a copy, which has its places elsewhere.
+    assemble, where a joint that moves belongs to a copy, which has its places elsewhere, and
+    where an axis, or where a slider counts from, would have to change with the places.
     """
     if not rest.assembles:
         raise BadInput(Problem(
             str(path), rest.worst, "only a rig that assembles can be settled",
             f"a misfit of {rest.misfit:.3g} of the size", "mend its lengths first (see check)"))
     text = read_text(path)
-    places = _moved(rig, rest)
+    x: Array = rest.equations.outward(rest.scaled)
+    least = float(1e-12 * rest.size + 4 * np.spacing(np.abs(x).max(initial=0.0)))
+    problems = [*_turned(path, rig, x, least), *_slid(path, rig, x, least)]
+    if problems:
+        raise BadInput(problems)
+    places = _moved(rig, x, least)
     if path.suffix.lower() == ".json":
         data = json.loads(text)
         _write(data, path, rig, places)
@@ -45,12 +61,60 @@ def settle_text(path: Path, rig: Rig, rest: Rest) -> str:
     return tomlkit.dumps(document)
 
 
-def _moved(rig: Rig, rest: Rest) -> dict[str, list[float]]:
-    """New places of the joints that rest moves by more than rounding."""
-    x: Array = rest.equations.outward(rest.scaled)
-    least = 1e-12 * rest.size + 4 * np.spacing(np.abs(x).max(initial=0.0))
+def _moved(rig: Rig, x: Array, least: float) -> dict[str, list[float]]:
+    """New places of the rig's own joints that rest ``x (n, dim)`` moves by more than ``least``."""
     return {j.name: [float(v) for v in place] for j, place in zip(rig.joints, x, strict=True)
-            if j.at is None or np.linalg.norm(place - np.array(j.at)) > least}
+            if not j.helper and (j.at is None or np.linalg.norm(place - np.array(j.at)) > least)}
+
+
+def _turned(path: Path, rig: Rig, x: Array, least: float) -> Iterator[Problem]:
+    """The axes that rest turns."""
+    for joint in rig.joints:
+        key = _axis_key(rig, joint)
+        if not key or joint.at is None:
+            continue
+        start = rig.index[stands_at(rig, joint.name)]
+        drawn = np.subtract(joint.at, rig.joints[start].at or joint.at)
+        now = x[rig.index[joint.name]] - x[start]
+        long = float(np.linalg.norm(drawn))
+        if long and np.linalg.norm(now - drawn) > TURN * long + 2 * least:
+            yield Problem(
+                str(path), key, "settling writes places, and an axis keeps its direction",
+                f"a rest that turns {_direction(drawn)} to {_direction(now)}",
+                "draw the parts so that it stays, or settle the rig written out flat")
+
+
+def _axis_key(rig: Rig, joint: Joint) -> str:
+    """Where a file gives the direction that a helper joint holds; empty for all other joints."""
+    name, _, number = joint.name.rpartition(" axis")
+    if not joint.helper or number not in ("", " 1", " 2"):
+        return ""
+    if number:
+        return path_text(("universals", name, "axes", int(number) - 1))
+    return path_text(("sliders" if name in _sliders(rig) else "hinges", name, "axis"))
+
+
+def _direction(way: Array) -> str:
+    """A direction of length 1, to as many digits as rounding leaves."""
+    return str([round(float(v), 10) + 0.0 for v in way / np.linalg.norm(way)])
+
+
+def _sliders(rig: Rig) -> list[str]:
+    rails = {r.name for r in rig.rails}
+    return [r.name for r in rig.rails
+            if f"{r.name} axis" in rails and f"{r.name} axis" in rig.helper_joints]
+
+
+def _slid(path: Path, rig: Rig, x: Array, least: float) -> Iterator[Problem]:
+    """The sliders that rest moves from where they count."""
+    for name in _sliders(rig):
+        value = float(read_value(rig, x[None], name)[0])
+        if abs(value) > 2 * least:
+            yield Problem(
+                str(path), path_text(("sliders", name)), "a slider counts from its drawing",
+                f"a rest that moves it by {value:.6g} {rig.unit}",
+                f"draw it there, {value:.6g} {rig.unit} on, and count all its values from there, "
+                "or settle the rig written out flat")
 
 
 def _write(data: Table, path: Path, rig: Rig, places: dict[str, list[float]]) -> None:
