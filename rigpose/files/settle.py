@@ -9,7 +9,7 @@ places alone would make another machine.
 from __future__ import annotations
 
 import json
-from collections.abc import Iterator, MutableMapping
+from collections.abc import Container, Iterator, MutableMapping
 from pathlib import Path
 
 import numpy as np
@@ -21,7 +21,7 @@ from rigpose.ground.errors import BadInput, Problem
 from rigpose.model.equations import Array
 from rigpose.model.names import path_text
 from rigpose.model.rig import Joint, Rig
-from rigpose.model.sliders import stands_at
+from rigpose.model.sliders import sliders_of, stands_at
 from rigpose.motion.gauges import read_value
 from rigpose.solve.rest import Rest
 
@@ -48,16 +48,14 @@ def settle_text(path: Path, rig: Rig, rest: Rest) -> str:
     text = read_text(path)
     x: Array = rest.equations.outward(rest.scaled)
     least = float(1e-12 * rest.size + 4 * np.spacing(np.abs(x).max(initial=0.0)))
-    problems = [*_turned(path, rig, x, least), *_slid(path, rig, x, least)]
-    if problems:
-        raise BadInput(problems)
+    told = [*_turned(path, rig, x, least), *_slid(path, rig, x, least)]
     places = _moved(rig, x, least)
     if path.suffix.lower() == ".json":
         data = json.loads(text)
-        _write(data, path, rig, places)
+        _write(data, path, rig, places, told)
         return json.dumps(data, indent=2, ensure_ascii=False) + "\n"
     document = tomlkit.parse(text)
-    _write(document, path, rig, places)
+    _write(document, path, rig, places, told)
     return tomlkit.dumps(document)
 
 
@@ -69,8 +67,9 @@ def _moved(rig: Rig, x: Array, least: float) -> dict[str, list[float]]:
 
 def _turned(path: Path, rig: Rig, x: Array, least: float) -> Iterator[Problem]:
     """The axes that rest turns."""
+    sliders = sliders_of(rig)
     for joint in rig.joints:
-        key = _axis_key(rig, joint)
+        key = _axis_key(joint, sliders)
         if not key or joint.at is None:
             continue
         start = rig.index[stands_at(rig, joint.name)]
@@ -84,14 +83,14 @@ def _turned(path: Path, rig: Rig, x: Array, least: float) -> Iterator[Problem]:
                 "draw the parts so that it stays, or settle the rig written out flat")
 
 
-def _axis_key(rig: Rig, joint: Joint) -> str:
+def _axis_key(joint: Joint, sliders: Container[str]) -> str:
     """Where a file gives the direction that a helper joint holds; empty for all other joints."""
     name, _, number = joint.name.rpartition(" axis")
     if not joint.helper or number not in ("", " 1", " 2"):
         return ""
     if number:
         return path_text(("universals", name, "axes", int(number) - 1))
-    return path_text(("sliders" if name in _sliders(rig) else "hinges", name, "axis"))
+    return path_text(("sliders" if name in sliders else "hinges", name, "axis"))
 
 
 def _direction(way: Array) -> str:
@@ -99,15 +98,9 @@ def _direction(way: Array) -> str:
     return str([round(float(v), 10) + 0.0 for v in way / np.linalg.norm(way)])
 
 
-def _sliders(rig: Rig) -> list[str]:
-    rails = {r.name for r in rig.rails}
-    return [r.name for r in rig.rails
-            if f"{r.name} axis" in rails and f"{r.name} axis" in rig.helper_joints]
-
-
 def _slid(path: Path, rig: Rig, x: Array, least: float) -> Iterator[Problem]:
     """The sliders that rest moves from where they count."""
-    for name in _sliders(rig):
+    for name in sliders_of(rig):
         value = float(read_value(rig, x[None], name)[0])
         if abs(value) > 2 * least:
             yield Problem(
@@ -117,13 +110,14 @@ def _slid(path: Path, rig: Rig, x: Array, least: float) -> Iterator[Problem]:
                 "or settle the rig written out flat")
 
 
-def _write(data: Table, path: Path, rig: Rig, places: dict[str, list[float]]) -> None:
+def _write(data: Table, path: Path, rig: Rig, places: dict[str, list[float]],
+           told: list[Problem]) -> None:
     joints = data.get("joints")
     table: Table = joints if isinstance(joints, MutableMapping) else {}
     if "rest" in data:
         del data["rest"]
         places = {j.name: list(j.at) for j in rig.joints if j.at and j.name in table} | places
-    problems = list(_elsewhere(path, table, places))
+    problems = [*told, *_elsewhere(path, table, places)]
     if problems:
         raise BadInput(problems)
     for name, place in places.items():

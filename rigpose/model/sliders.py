@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import lru_cache
 
 from rigpose.model.bench import DRIVES, REST, Common
 from rigpose.model.bodies import GROUND, Table
@@ -168,15 +169,33 @@ def _add_rail(fit: Fittings, s: _Slider, name: str, joint: str, line: _Line,
 def stands_at(rig: Rig, helper: str) -> str:
     """The rig's own joint at which a helper joint holds an axis; the helper where none can be
     told, as on an axis that stands at another helper."""
+    return _stands(rig).get(helper, helper)
+
+
+def sliders_of(rig: Rig) -> dict[str, str]:
+    """The sliders of a rig, and the joint of each, told by the rails that a slider makes."""
     rails = {r.name: r.joint for r in rig.rails}
-    for end in ENDS:
-        name = helper.removesuffix(f" {end}")
-        if name != helper and name in rails and f"{name} axis" in rails:
-            return rails[name]
-    # All parts that carry the axis of a hinge or a cross share the joint; on the ground it is
-    # pinned, and what a part has pinned besides its hinge lies on the axis as well.
+    return {name: joint for name, joint in rails.items()
+            if f"{name} axis" in rails and f"{name} axis" in rig.helper_joints}
+
+
+@lru_cache(maxsize=16)
+def _stands(rig: Rig) -> dict[str, str]:
+    """Helper joint to the joint at which it stands."""
+    carriers: dict[str, list[tuple[str, ...]]] = {h: [] for h in rig.helper_joints}
+    for plate in rig.plates if carriers else ():
+        for joint in rig.helper_joints.intersection(plate.joints):
+            carriers[joint].append(plate.joints)
+    found = {h: _shared(rig, h, plates) for h, plates in carriers.items()}
+    for name, joint in sliders_of(rig).items():
+        found |= {f"{name} {end}": joint for end in ENDS if f"{name} {end}" in carriers}
+    return found
+
+
+def _shared(rig: Rig, helper: str, plates: list[tuple[str, ...]]) -> str:
+    """All parts that carry the axis of a hinge or a cross share its joint. On the ground that is
+    pinned, and what a part has pinned besides its hinge lies on the axis as well."""
     pinned = rig.joints[rig.index[helper]].pin
-    plates = [p.joints for p in rig.plates if helper in p.joints]
-    shared = [j for j in (plates[0] if plates else ()) if all(j in p for p in plates)]
-    own = [j for j in shared if j not in rig.helper_joints]
-    return next((j for j in own if not pinned or rig.joints[rig.index[j]].pin), helper)
+    return next((j for j in (plates[0] if plates else ())
+                 if all(j in p for p in plates) and j not in rig.helper_joints
+                 and (rig.joints[rig.index[j]].pin or not pinned)), helper)

@@ -211,7 +211,7 @@ def _turning(rig: Rig, picks: Sequence[Sorted]) -> tuple[str, ...]:
     each other, or in space with a whole part that lies folded back."""
     found = sorted({t for p in picks for t in p.rows.turning})
     lines = [f"in some poses {_named(rig.joints[joint])} turns freely ({', '.join(parts)}): "
-             "they are not listed"
+             "such poses are not listed"
              for joint, parts in found if joint < len(rig.joints)]
     return tuple(dict.fromkeys(lines))
 
