@@ -16,9 +16,10 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from rigpose.files.csvfile import CsvWriter, Layout, ValuesWriter, read_positions
+from rigpose.files.csvfile import CsvWriter, Layout, RigWriter, ValuesWriter, read_positions
 from rigpose.files.disk import Beside, read_text
 from rigpose.ground.errors import BadInput
+from rigpose.model.make import make_rig
 
 Floats = npt.NDArray[np.float64]
 LAYOUTS: tuple[Layout, ...] = ("tall", "wide")
@@ -143,6 +144,23 @@ def test_studio_names_go_out_and_come_in(file: Path, layout: Layout) -> None:
     assert "crane01:elbow" in file.read_text()
     assert read_positions(file).joints == ("crane01:elbow", "hook")
     assert read_positions(file, studio).joints == ("elbow", "hook")
+
+
+@pytest.mark.parametrize("layout", LAYOUTS)
+def test_a_rig_s_file_holds_the_joints_that_people_know(file: Path, layout: Layout) -> None:
+    rig = make_rig({"post": {"at": [0, 0, 0], "pin": True}, "edge": [3, 0, 0], "latch": [3, 0, 2]},
+                   dim=3, plates={"leaf": ["post", "edge", "latch"]}, names={"edge": "gate:edge"},
+                   hinges={"swing": {"parts": ["ground", "leaf"], "at": "post", "axis": [0, 0, 1]}})
+    assert rig.joint_names == ("post", "edge", "latch", "swing axis")
+    positions = some(5, 4)
+    with RigWriter(file, rig, layout=layout, branches=True) as out:
+        out.block(np.arange(5), positions, "only")
+        with pytest.raises(BadInput, match=r"numbers have the shape \(frames, \(4, 3\)\)"):
+            out.block([1], positions[:1, :3], "only")
+    got = read_positions(file, dict(rig.names))
+    assert (got.joints, got.branches) == (("post", "edge", "latch"), ("only",))
+    assert "gate:edge" in file.read_text()
+    np.testing.assert_array_equal(got.positions[0], positions[:, :3])
 
 
 def test_rows_come_in_any_order_with_gaps(file: Path) -> None:

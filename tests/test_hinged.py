@@ -383,3 +383,40 @@ def test_a_lamp_on_gimbals() -> None:
     tilt = np.array([[math.cos(p), 0, math.sin(p)], [0, 1, 0], [-math.sin(p), 0, math.cos(p)]])
     assert place(found, "wick")[:, 0] == pytest.approx(
         (turn @ tilt @ (0, 0, -2) + (0, 0, 5))[None], abs=1e-12)
+
+
+# written out flat
+
+@pytest.mark.parametrize("name", ["gull_leg", "lamplighter", "market_canopy", "weather_loop"])
+def test_a_rig_with_hinges_written_out_flat_is_the_same_machine(tmp_path: Path, name: str) -> None:
+    """The same parts, the same fingerprint and, in its shot's first frame, the same poses; what
+    hinges made is the flat file's own."""
+    shot = rp.load_shot(Path(__file__).resolve().parent.parent / "rigs" / f"{name}.shot.toml")
+    rig = shot.rig
+    assert rig.helper_joints
+    path = tmp_path / "flat.toml"
+    path.write_text(rp.flat_text(rig), encoding="utf-8")
+    flat = rp.load_rig(path)
+    kept = ("joints", "bones", "plates", "rails", "rams", "cranks", "limits", "ties", "planes",
+            "frozen", "fingerprint", "joint_names")
+    assert [k for k in kept if getattr(flat, k) != getattr(rig, k)] == []
+    assert rp.flat_text(flat) == rp.flat_text(rig)
+    assert (flat.helper_joints, flat.own_joints) == (frozenset(), rig.joint_names)
+    first = rp.bake(shot).knowns
+    drives = {n: float(v[0]) for n, v in first.drives.items()}
+    targets = {n: v[0] for n, v in first.targets.items()}
+    one, other = (rp.find_branches(r, drives, targets) for r in (rig, flat))
+    assert len(one) > 0
+    np.testing.assert_array_equal(one.positions, other.positions)
+
+
+def test_rigs_that_differ_in_their_helpers_alone_are_not_one(tmp_path: Path) -> None:
+    """Else what is kept of the one would be told in the words of the other."""
+    rig = rp.make_rig({"post": {"at": [0, 0, 0], **PIN}, "edge": [3, 0, 0], "latch": [3, 0, 2]},
+                      dim=3, plates={"leaf": ["post", "edge", "latch"]},
+                      hinges={"swing": {"parts": ["ground", "leaf"], "at": "post", "axis": Z}})
+    plain = rp.make_rig(**_sections(rig))
+    assert plain.joints == rig.joints
+    assert plain != rig
+    assert hash(plain.joints[-1]) == hash(rig.joints[-1])
+    assert plain.own_joints == (*rig.own_joints, "swing axis")

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import csv
 import json
+import re
 import shutil
 import tomllib
 from pathlib import Path
@@ -160,6 +161,14 @@ def test_a_wrong_name_is_answered_with_own_joints() -> None:
     found = rp.find_branches(parallel_four_bar(), {"input": 40.0})
     with pytest.raises(BadInput, match=r"joints with bends are tip, knee$"):
         found.pick(nee="left")
+
+
+def test_a_part_that_turns_freely_is_told() -> None:
+    """A leaf of the lift that lies folded back on itself turns about its own sill."""
+    found = rp.find_branches(rp.load_rig(ROOT / "rigs" / "beacon_lift.toml"), {"lift": 40.0})
+    (note,) = found.notes
+    assert re.fullmatch(r'in some poses "knee_y" turns freely \(.*upper_y.*\): such poses are not '
+                        r"listed", note)
 
 
 # files and JSON
