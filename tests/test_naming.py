@@ -223,6 +223,13 @@ def test_json_tells_own_joints_only(capsys: Capture) -> None:
     assert np.shape(frames["branches"][0]["positions"]) == (3, len(written("gull_leg")), 3)
 
 
+@pytest.mark.usefixtures("quay")
+def test_the_table_of_poses_tells_no_helper(capsys: Capture) -> None:
+    lines = said(capsys, "pose", "gull_leg.toml", "--drive", "fold=20", "--drive", "spring=0")
+    assert lines[1].split() == ["branch", "margin", "stay"]
+    assert not any("axis" in line or "spring" in line for line in lines)
+
+
 def test_events_tell_the_joint_at_which_a_helper_stands() -> None:
     rig = parallel_four_bar()
     event = Event(12.0, "passed", ("knee", "c axis", "b axis"), ("coupler", "follower"))

@@ -131,8 +131,11 @@ def _tell(found: Branches, out: str | None) -> None:
 
 
 def _gauges(found: Branches) -> list[str]:
-    """Drives that aren't driven: what a person wants to read off."""
-    free = [name for name in found.rig.drive_names if name not in found.knowns.drives]
+    """Drives that aren't driven: what a person wants to read off, so not the rails on which the
+    helper joints of a slider run."""
+    rig = found.rig
+    helpers = {r.name for r in rig.rails if r.joint in rig.helper_joints}
+    free = [name for name in rig.drive_names if name not in {*found.knowns.drives, *helpers}]
     return free[:MOST_GAUGES]
 
 
