@@ -33,7 +33,7 @@ def atoms() -> Array:
 
 
 def pairs_of(x: Array, near: float) -> list[tuple[int, int]]:
-    return sorted(map(tuple, cKDTree(x).query_pairs(near)))
+    return sorted(cKDTree(x).query_pairs(near))
 
 
 def chain(x: Array, pairs: list[tuple[int, int]]) -> rp.Rig:
@@ -71,7 +71,8 @@ def test_the_whole_backbone_is_recovered_up_to_its_mirror_image(near: float) -> 
 
 
 @pytest.mark.parametrize(("first", "count", "near"), [
-    (0, 30, 5.0), (60, 45, 4.6), (90, 45, 4.6), (0, 16, 4.2), (60, 40, 4.2), (120, 60, 5.0), (150, 78, 6.0)])
+    (0, 30, 5.0), (60, 45, 4.6), (90, 45, 4.6), (0, 16, 4.2), (60, 40, 4.2),
+    (120, 60, 5.0), (150, 78, 6.0)])
 def test_parts_of_it_have_as_many_poses_as_their_symmetries_say(first: int, count: int,
                                                                 near: float) -> None:
     """Distances to the three atoms before are always given, longer ones as far as ``near``."""

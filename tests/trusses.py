@@ -24,6 +24,7 @@ def bars(places: Places, edges: Edges, pins: Iterable[int] = (), **more: Any) ->
 
 
 def freedoms(report: Report) -> tuple[int, int, int]:
+    assert report.freedoms is not None and report.freedoms_first_order is not None
     return report.freedoms, report.freedoms_first_order, report.freedoms_counted
 
 

@@ -8,14 +8,16 @@ from pathlib import Path
 
 import numpy as np
 
-from rigpose.files.csvfile import CsvWriter, Layout, ValuesWriter, read_positions
+from rigpose.files.csvfile import Layout, RigWriter, ValuesWriter, read_positions
 from rigpose.files.scene import Outlet, from_scene, outlet, to_scene
 from rigpose.ground.errors import BadInput, Problem
 from rigpose.ground.words import Found, State
 from rigpose.model.equations import Array
 from rigpose.model.judge import size_of
 from rigpose.model.rig import Rig
+from rigpose.model.spacerows import third_of
 from rigpose.motion.motion import Motion
+from rigpose.solve.hanging import carried
 from rigpose.solve.knowns import Knowns
 
 
@@ -27,12 +29,13 @@ def save_motion(motion: Motion, path: str | Path, *, unit: str | None = None,
     unit, up, fps, offset : the file's; what isn't given stays as rig and shot have it
     layout : "tall" is frame,joint,x,y,z, "wide" one row a frame
 
-    Nothing is rounded but by the change of unit. The file appears whole or not at all. Raises
+    Helper joints of hinges and sliders are left out. Nothing is rounded but by the change of unit.
+    The file appears whole or not at all. Raises
     BadInput for an unknown unit, axis or layout and where the file can't be written.
     """
     way = outlet(motion.rig, motion.fps, unit=unit, up=up,
                  to_fps=None if fps is None else Fraction(fps), offset=Fraction(offset))
-    with CsvWriter(path, motion.joints, layout=layout, names=motion.rig.names) as writer:
+    with RigWriter(path, motion.rig, layout=layout) as writer:
         writer.block(way.number(motion.frames), to_file(motion.rig, way, motion.positions))
 
 
@@ -62,8 +65,9 @@ def load_motion(path: str | Path, rig: Rig, *, unit: str | None = None, up: str 
                 fps: Fraction | float = 24) -> Motion:
     """Read a CSV of joint positions, in either layout, as a motion of a rig.
 
-    unit, up : the file's (the rig's where not given). Joints that the file doesn't have are NaN;
-    so the state of a frame says only whether some joint has a place. Raises BadInput for a file
+    unit, up : the file's (the rig's where not given). Joints that the file doesn't have are NaN,
+    but for helper joints of a plate three of whose others, not in line, tell where they are; so
+    the state of a frame says only whether some joint has a place. Raises BadInput for a file
     that is no table of positions and for one with several branches.
     """
     table = read_positions(path, names=rig.names)
@@ -78,6 +82,7 @@ def load_motion(path: str | Path, rig: Rig, *, unit: str | None = None, up: str 
     places, _ = from_scene(rig, way.revert(table.positions[0]))
     positions = np.full((len(table.frames), len(rig.joints), rig.dim), np.nan)
     positions[:, [rig.index[table.joints[k]] for k in known]] = places[:, known]
+    _fill_helpers(rig, positions)
     alive = ~np.isnan(positions).all(axis=(1, 2))
     for array in (positions,):
         array.flags.writeable = False
@@ -87,6 +92,26 @@ def load_motion(path: str | Path, rig: Rig, *, unit: str | None = None, up: str 
                   margin=np.full(len(positions), np.nan, dtype=np.float32), name="", bends={},
                   knowns=Knowns(len(positions), {}, {}), size=size_of(first), found=Found.SOME,
                   fps=Fraction(fps), title=Path(path).stem)
+
+
+def _fill_helpers(rig: Rig, positions: Array) -> None:
+    """Put helper joints where their plates carry them, in place ``(n_frames, n_joints, dim)``."""
+    helpers = {rig.index[j] for j in rig.helper_joints}
+    if not helpers:
+        return
+    for plate in rig.plates:
+        joints = [rig.index[j] for j in plate.joints]
+        shape = np.array(plate.shape)
+        mine = [k for k, j in enumerate(joints) if j not in helpers]
+        three = third_of(shape[mine], 0, 1) if len(mine) > 2 else None
+        if three is None:
+            continue
+        base = [mine[0], mine[1], mine[three]]
+        placed = [positions[:, joints[k]].T for k in base]
+        for k in set(range(len(joints))) - set(mine):
+            gone = np.isnan(positions[:, joints[k], 0])
+            spot = carried(placed, [shape[b][:, None] for b in base], shape[k][:, None]).T
+            positions[gone, joints[k]] = spot[gone]
 
 
 @dataclass(frozen=True)

@@ -25,6 +25,7 @@ from rigpose.solve.plan import (
     Meet,
     Orient,
     Point,
+    Ride,
     Seat,
     Sheet,
     Shift,
@@ -86,6 +87,7 @@ _READS: dict[type[Step], Callable[[Any], set[Point]]] = {
     Slide: lambda step: set(step.line),
     Seat: lambda step: _points(*step.local),
     Shift: lambda step: {step.point, step.minus, step.plus},
+    Ride: lambda step: {step.pivot},
     Orient: lambda step: {*_heading(step.heading), *_points(*step.local, *step.line)},
     Level: lambda step: _points(*step.local, *step.pair),
     Junction: lambda step: set[Point]().union(*map(on_curve, step.curves)),
@@ -100,7 +102,7 @@ def reads(step: Step) -> set[Point]:
 
 
 _ONE = frozenset({Given, Meet, Junction, Fit, Slide, Shift})
-_SEVERAL = frozenset({Carry, Aim, Swing, Seat, Orient, Level, Hang, Hinge})
+_SEVERAL = frozenset({Carry, Aim, Swing, Seat, Orient, Level, Hang, Hinge, Ride})
 
 
 def writes(step: Step) -> tuple[Point, ...]:
@@ -113,7 +115,7 @@ def writes(step: Step) -> tuple[Point, ...]:
     return step.joints if isinstance(step, Cluster) else ()
 
 
-POINTS_ONLY = frozenset({Given, Carry, Hang, Seat, Shift, Level, Fit, Swing})
+POINTS_ONLY = frozenset({Given, Carry, Hang, Seat, Shift, Level, Fit, Swing, Ride})
 """Steps that neither read nor settle a value."""
 _WITHOUT_VALUES = POINTS_ONLY | {Cluster, Gauge}
 

@@ -41,6 +41,7 @@ from rigpose.solve.plan import (
     Line,
     Meet,
     Orient,
+    Ride,
     Seat,
     Shift,
     Slide,
@@ -72,7 +73,8 @@ class State:
 
 Taker = Callable[[State], "Choice | bool | None"]
 """Takes a step: its two ways, whether it can be taken, or None where plain numbers can't tell."""
-BY_ARRAYS = (Aim, Carry, Check, Given, Hang, Hinge, Meet, Junction, Orient, Seat, Shift, Slide)
+BY_ARRAYS = (Aim, Carry, Check, Given, Hang, Hinge, Meet, Junction, Orient, Ride, Seat, Shift,
+             Slide)
 """Steps that place each of their points in one way, or one point in two."""
 
 

@@ -201,6 +201,14 @@ class Hang(Step, frozen=True):
     base: tuple[Local, ...]
 
 
+class Ride(Step, frozen=True):
+    """Joints of a body that can only be shifted, ``ways`` from one of its joints that is placed."""
+
+    dst: tuple[Point, ...]
+    ways: tuple[tuple[float, ...], ...]
+    pivot: Point
+
+
 class Hinge(Step, frozen=True):
     """Joints of a body in space turned about an axis of two placed points by a driven angle.
 

@@ -17,7 +17,7 @@ from rigpose.kernels.space import (
     three_spheres,
 )
 from rigpose.solve.hanging import carried
-from rigpose.solve.plan import Circle, Hang, Hinge, Junction, Line, Point, Sheet
+from rigpose.solve.plan import Circle, Hang, Hinge, Junction, Line, Point, Ride, Sheet
 from rigpose.solve.run import (
     ONE_PLACE,
     Ways,
@@ -182,6 +182,14 @@ def _(step: Hang, table: Table, ways: Ways, number: int) -> None:
     bound = parents_bound(table, step.placed) * 2.0 if table.careful else 0.0
     for dst, place in zip(step.dst, step.local, strict=True):
         table.put(dst, carried(placed, base, local_of(table, place)), bound)
+
+
+@execute.register
+def _(step: Ride, table: Table, ways: Ways, number: int) -> None:
+    pivot = table.point(step.pivot)
+    bound = parents_bound(table, (step.pivot,)) if table.careful else 0.0
+    for dst, way in zip(step.dst, step.ways, strict=True):
+        table.put(dst, pivot + np.array(way).reshape(-1, 1, 1), bound)
 
 
 @execute.register

@@ -14,10 +14,21 @@ from math import hypot
 
 import numpy as np
 
-from rigpose.model.equations import GROUND, Array
+from rigpose.model.equations import GROUND, Array, Lines
 from rigpose.solve.growth import APART, PARALLEL, Growth, Key, Locus
-from rigpose.solve.net import Solid
-from rigpose.solve.plan import Circle, Given, Hang, Hinge, Junction, Length, Line, Point, Sheet
+from rigpose.solve.net import Net, Solid
+from rigpose.solve.plan import (
+    Circle,
+    Given,
+    Hang,
+    Hinge,
+    Junction,
+    Length,
+    Line,
+    Point,
+    Ride,
+    Sheet,
+)
 
 MOST_LOCI = 14
 FEW = 10
@@ -32,6 +43,7 @@ class SpaceGrowth(Growth):
     """A frame being grown in space."""
 
     lines: dict[Key, bool] = field(default_factory=dict)
+    riding: set[int] = field(default_factory=set)
 
     # -- what is known from the start ---------------------------------------------------------
 
@@ -60,6 +72,21 @@ class SpaceGrowth(Growth):
                 np.broadcast_to(normal, (len(self.poses), 3))))
         for k in map(int, np.flatnonzero(eqs.lines.along[:, 0] == GROUND)):
             self._fixed_rail(k)
+        for number, k in sliding(self.net):
+            self._ride_along(number, k)
+
+    def _ride_along(self, number: int, k: int) -> None:
+        """All joints of a body that can only be shifted keep to lines along its rail."""
+        solid, direction = self.net.solids[number], self.net.eqs.lines.direction[k]
+        if np.isnan(self.poses[0, list(solid.local)]).any():
+            return
+        self.riding.add(number)
+        normal = np.broadcast_to(direction, (len(self.poses), 3))
+        for joint in solid.local:
+            if joint not in self.place:
+                line = Line("fixed", tuple(map(float, self.poses[0, joint])),
+                            tuple(map(float, direction)))
+                self._offer(joint, Locus(line, ("ride", number), solid.name, normal))
 
     def _fixed_rail(self, k: int) -> None:
         lines = self.net.eqs.lines
@@ -88,7 +115,7 @@ class SpaceGrowth(Growth):
             self.held[number].add(joint)
         if not missing:
             return
-        if self._hooks(solid) is not None:
+        if number in self.riding or self._hooks(solid) is not None:
             self._push(0, number, "solid")
             return
         for j in missing:
@@ -237,6 +264,9 @@ class SpaceGrowth(Growth):
     def _carry(self, number: int) -> None:
         solid = self.net.solids[number]
         missing = [j for j in solid.local if j not in self.place]
+        if number in self.riding:
+            self._ride(number, missing)
+            return
         hooks = self._hooks(solid)
         if not missing or hooks is None:
             return
@@ -246,6 +276,19 @@ class SpaceGrowth(Growth):
         base = tuple(solid.local[j] for j in hooks)
         self._spread(missing, lambda dst: Hang(
             dst=dst, local=local, placed=placed, base=base, parts=(solid.name,)))
+
+    def _ride(self, number: int, missing: list[int]) -> None:
+        """Shift a body with one of its joints that is placed."""
+        solid = self.net.solids[number]
+        pivot = next((j for j in solid.local if j in self.place), None)
+        if pivot is None or not missing:
+            return
+        self._hold(number, missing)
+        x = self.poses[0]
+        ways = tuple(tuple(map(float, x[j] - x[pivot])) for j in missing)
+        here = self.place[pivot]
+        self._spread(missing, lambda dst: Ride(dst=dst, ways=ways, pivot=here,
+                                               parts=(solid.name,)))
 
     def _aim(self, k: int) -> None:
         """Turn a body about a placed axis by a driven angle."""
@@ -296,6 +339,34 @@ class SpaceGrowth(Growth):
             long = hypot(x, y, z) or 1.0
             normals.append((x / long, y / long, z / long))
         self._offer(joint, Locus(Circle(self.place[centre], radius), uses, part, normals, centre))
+
+
+def sliding(net: Net) -> Iterator[tuple[int, int]]:
+    """Bodies that two tied rails in one line and a third beside it leave only to shift, as a slider
+    on the ground does; each with one of its rails."""
+    lines, eqs = net.eqs.lines, net.eqs
+    tied = {frozenset(np.flatnonzero(row).tolist()) for row in eqs.ties
+            if np.count_nonzero(row) == 2 and row.sum() == 0}
+    for number, solid in enumerate(net.solids):
+        rails = [k for k in np.flatnonzero(lines.along[:, 0] == GROUND).tolist()
+                 if int(lines.joint[k]) in solid.local]
+        for a, b in combinations(rails, 2):
+            pair = frozenset((int(lines.value[a]), int(lines.value[b])))
+            if pair in tied and _beside(lines, a, b) < APART and any(
+                    _beside(lines, a, k) > APART and _parallel(lines, a, k) for k in rails):
+                yield number, a
+                break
+
+
+def _parallel(lines: Lines, a: int, b: int) -> bool:
+    turn = np.cross(lines.direction[a], lines.direction[b])
+    return float(np.linalg.norm(turn)) < PARALLEL
+
+
+def _beside(lines: Lines, a: int, b: int) -> float:
+    """How far the second rail's first point is from the first's line."""
+    way = lines.through[b] - lines.through[a]
+    return float(np.linalg.norm(np.cross(way, lines.direction[a])))
 
 
 def _square(a: Array | Sequence[tuple[float, ...]], b: Array | Sequence[tuple[float, ...]]) -> (

@@ -83,7 +83,7 @@ def shown(kind: str, joints: int, form: str) -> float:
           f"{told['parse']:.2f}), {told['peak']:.2f} GiB; freedoms {told['freedoms']}, "
           f"{told['poses']} pose, {told['found']}, lengths off by {told['worst']:.0e} of the size",
           flush=True)
-    return total
+    return float(total)
 
 
 if __name__ == "__main__":
