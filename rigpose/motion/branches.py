@@ -168,7 +168,7 @@ def made_from(context: Context, clock: Clock, frames: Array, picks: Sequence[Sor
         size=rest.size, meets=mixed.meets, values=_read_off(rest, picks, mixed),
         events=_events(eqs.rig, frames, picks, mixed),
         notes=(*_open_rest(rest), *useless_targets(rest, plan), *_turning(eqs.rig, picks)),
-        redundant=frozenset(plan.redundant), sides=one.sides(mixed) if one else None)
+        redundant=frozenset(plan.redundant), sides=one.sides(mixed, positions) if one else None)
     return Search(branches, tuple(picks), mixed)
 
 

@@ -15,10 +15,10 @@ from rigpose.ground.words import Found, State
 from rigpose.model.bends import Signs, measure_bends
 from rigpose.model.equations import Array
 from rigpose.model.rig import Rig
-from rigpose.motion.gathered import Sides
 from rigpose.motion.mirrors import mirror_images
 from rigpose.motion.motion import Event, Motion
 from rigpose.motion.naming import Names, name_by_sides, name_rows, wanted_signs
+from rigpose.motion.sides import Sides
 from rigpose.solve.knowns import Knowns
 
 SOON = 256
@@ -119,11 +119,13 @@ class Branches:
     @property
     def _moved(self) -> NDArray[np.bool_]:
         """(n_joints,) whether a joint's own place differs between branches."""
-        some = self.first_poses[:4096]
-        if not len(some):
-            return np.zeros(len(self.joints), dtype=bool)
-        apart = np.ptp(some, axis=0).max(axis=1)
-        moved: NDArray[np.bool_] = apart > 1e-9 * self.size
+        moved = np.zeros(len(self.joints), dtype=bool)
+        # Most that move do so within a few branches.
+        for count in (16, 4096):
+            still = np.flatnonzero(~moved)
+            some = self.first_poses[:count, still]
+            if some.size:
+                moved[still] = np.ptp(some, axis=0).max(axis=1) > 1e-9 * self.size
         return moved
 
     @cached_property

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from rigpose.ground.errors import BadInput, Problem
 from rigpose.model.bends import ALONG, SIDES, Bend, Signs, bends_of
 from rigpose.model.rig import Rig
-from rigpose.motion.gathered import Sides
+from rigpose.motion.sides import Sides
 
 
 class Names(Sequence[str]):
@@ -93,15 +93,12 @@ def name_by_sides(rig: Rig, sides: Sides, meets: NDArray[np.bool_],
                   moved: NDArray[np.bool_]) -> Names | None:
     """Names of many rows where every combination of the bends that vary is there just once, so
     that all of these are told; else None."""
-    coded = None if meets.any() else sides.codes()
-    if coded is None:
-        return None
-    varies, codes = coded
-    if 2 ** len(varies) != len(codes) or not (np.bincount(codes, minlength=len(codes)) == 1).all():
+    told = None if meets.any() else sides.told()
+    if told is None:
         return None
     bends = bends_of(rig)
-    told = sorted(sorted(varies), key=lambda k: not moved[bends[k].joint])
-    return Names(rig, sides, told, np.zeros(len(codes), dtype=np.intp), meets)
+    told.sort(key=lambda k: not moved[bends[k].joint])
+    return Names(rig, sides, told, np.zeros(len(meets), dtype=np.intp), meets)
 
 
 def _telling(signs: Signs, varies: Sequence[int]) -> tuple[list[int], NDArray[np.int64]]:

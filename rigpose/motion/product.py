@@ -32,14 +32,14 @@ MANY = 1 << 14
 
 @dataclass(frozen=True)
 class Sorted:
-    """A group's rows that live somewhere, nearest to rest first: ``order (k,)`` among them, and
-    in that order ``gap (k,)`` their squared distances to rest, ``steps (k,)`` the same as
-    distances in whole steps."""
+    """A group's rows that live somewhere, nearest to rest first: ``order (k,)`` among them, their
+    distances to rest in whole ``steps (k,)`` in that order; ``gaps`` are the squared distances of
+    all rows."""
 
     rows: Rows
     order: Ints
-    gap: Array
     steps: Array
+    gaps: Array
 
 
 @dataclass(frozen=True)
@@ -88,7 +88,7 @@ def kept(rest: Rest, rows: Rows) -> Sorted:
     once = _once(rest, rows, order, steps)
     if once is not None:
         order, steps = order[once], steps[once]
-    return Sorted(rows, order, gap[order], steps)
+    return Sorted(rows, order, steps, gap)
 
 
 def _once(rest: Rest, rows: Rows, order: Ints, steps: Array) -> Ints | None:
@@ -220,12 +220,15 @@ def combined(rest: Rest, picks: Sequence[Sorted], base_alive: NDArray[np.bool_],
     if not picks:
         return _only_base(base_alive)
     choice, steps = _in_order(rest, picks, sizes, min(count, most))
-    index = np.stack([p.order[choice[:, g]] for g, p in enumerate(picks)], axis=1)
-    first = picks[0].rows
-    alive, margin = first.alive[index[:, 0]], first.margin.astype(np.float32)[index[:, 0]]
+    if len(picks) == 1:
+        index = picks[0].order[:len(choice), None].copy()
+    else:
+        index = np.stack([p.order[choice[:, g]] for g, p in enumerate(picks)], axis=1)
+    alive, margin = _of(picks[0].rows, index[:, 0])
     for g, p in enumerate(picks[1:], 1):
-        alive &= p.rows.alive[index[:, g]]
-        margin = np.minimum(margin, p.rows.margin.astype(np.float32)[index[:, g]])
+        lives, its = _of(p.rows, index[:, g])
+        alive &= lives
+        margin = np.minimum(margin, its)
     if not alive.all():
         margin[~alive] = np.nan
     some = alive[:, 0] if alive.shape[1] == 1 else alive.any(axis=1)
@@ -233,6 +236,14 @@ def combined(rest: Rest, picks: Sequence[Sorted], base_alive: NDArray[np.bool_],
     keep &= some
     mixed = Picks(choice, index, steps, alive, margin, meets, count, count > most)
     return mixed if keep.all() else taken(mixed, np.flatnonzero(keep))
+
+
+def _of(rows: Rows, index: Ints) -> tuple[NDArray[np.bool_], NDArray[np.float32]]:
+    """Where some rows live, and their margins ``(n, n_frames)``."""
+    margin = rows.margin.astype(np.float32)
+    alive = np.ones((len(index), rows.alive.shape[1]), dtype=bool) if rows.alive.all() else (
+        rows.alive[index])
+    return alive, margin.take(index, axis=0)
 
 
 def _in_order(rest: Rest, picks: Sequence[Sorted], sizes: Sequence[int], count: int) -> (
@@ -243,7 +254,7 @@ def _in_order(rest: Rest, picks: Sequence[Sorted], sizes: Sequence[int], count: 
     choice = _mixed_radix(sizes, count)
     gap = np.zeros(len(choice))
     for g, p in enumerate(picks):
-        gap += p.gap[choice[:, g]]
+        gap += p.gaps[p.order[choice[:, g]]]
     steps = _steps(rest, gap)
     order, steps = _in_steps(steps)
     return choice[order], steps

@@ -99,9 +99,22 @@ def grown(before: Ints | int) -> int:
     return 2 * before if isinstance(before, int) else len(before)
 
 
-def up(before: Ints | int, index: Ints) -> Ints:
-    """From nodes of a level to those that they grew from."""
-    return around(index, before) if isinstance(before, int) else before.take(index)
+def up(before: Ints | int, index: Ints, owned: bool = False) -> Ints:
+    """From nodes of a level to those that they grew from; in place where ``owned`` and possible."""
+    if not isinstance(before, int):
+        return before.take(index)
+    if owned and before & (before - 1) == 0:
+        index &= before - 1
+        return index
+    return around(index, before)
+
+
+def taken_by(values: NDArray[np.generic], index: Ints, out: NDArray[np.generic]) -> None:
+    """Values of nodes ``(nodes, ...)``, or one of all, in the order of an index."""
+    if len(values) == 1:
+        out[:] = values[0]
+    else:
+        np.take(values, index, axis=0, out=out, mode="clip")
 
 
 def tree_of(table: Table, joints: Sequence[int]) -> Tree:
