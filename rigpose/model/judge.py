@@ -135,45 +135,62 @@ def _plates(rig: Rig, x: Array, out: Array) -> None:
     """How far all plates of the plane are off ``(plates, m)``: the largest distance of a joint
     from where the plate's two farthest joints carry it, and of these two from their own distance;
     a mirrored plate is far off."""
-    for rows, joints, far, shape in _plate_table(rig):
-        row = np.arange(len(rows))
-        w = shape[row, far[:, 1]] - shape[row, far[:, 0]]
-        long = np.hypot(w[:, 0], w[:, 1])
-        v = (shape - shape[row, far[:, 0]][:, None]) / (long**2)[:, None, None]
-        along = (v * w[:, None]).sum(axis=2)
-        across = w[:, None, 0] * v[..., 1] - w[:, None, 1] * v[..., 0]
-        first, last = joints[row, far[:, 0]], joints[row, far[:, 1]]
-        for some in _blocks(len(rows), x.shape[2]):
-            start = x[first[some]]
-            e = (x[last[some]] - start).transpose(1, 0, 2)
-            worst = np.abs(_long(e) - long[some, None])
-            for k in range(shape.shape[1]):
-                gap = (x[joints[some, k]] - start).transpose(1, 0, 2)
-                a, b = along[some, k, None], across[some, k, None]
-                np.maximum(worst, _long(np.stack([gap[0] - a * e[0] + b * e[1],
-                                                  gap[1] - b * e[0] - a * e[1]])), out=worst)
-            out[rows[some]] = worst
+    for kind in _plate_table(rig):
+        for some in _blocks(len(kind.rows), x.shape[2]):
+            start = x[kind.joints[some, 0]].transpose(1, 0, 2)
+            e = x[kind.joints[some, 1]].transpose(1, 0, 2) - start
+            worst = np.abs(_long(e) - kind.long[some, None])
+            for k in range(2, kind.joints.shape[1]):
+                gap = x[kind.joints[some, k]].transpose(1, 0, 2) - start
+                a, b = kind.along[some, k, None], kind.across[some, k, None]
+                gap[0] -= a * e[0] - b * e[1]
+                gap[1] -= b * e[0] + a * e[1]
+                np.maximum(worst, _long(gap), out=worst)
+            out[kind.rows[some]] = worst
+
+
+@dataclass(frozen=True)
+class _Kind:
+    """Plates with equally many joints: which they are ``(m,)``, their joints ``(m, k)`` with the
+    two farthest apart first, how far these are, and by what shares of their way ``along`` it and
+    ``across`` it the others lie ``(m, k)``."""
+
+    rows: Ints
+    joints: Ints
+    long: Array
+    along: Array
+    across: Array
 
 
 @lru_cache(maxsize=8)
-def _plate_table(rig: Rig) -> list[tuple[Ints, Ints, Ints, Array]]:
-    """Plates with equally many joints: which they are ``(m,)``, their joints ``(m, k)``, the two
-    of them farthest apart ``(m, 2)`` and their shapes ``(m, k, 2)``."""
+def _plate_table(rig: Rig) -> list[_Kind]:
+    """All plates by how many joints they have."""
     counts = np.array([len(p.joints) for p in rig.plates], dtype=np.intp)
-    table = []
-    for k in np.unique(counts):
-        rows = np.flatnonzero(counts == k)
-        some = [rig.plates[r] for r in rows]
-        joints = np.array([[rig.index[j] for j in p.joints] for p in some], dtype=np.intp)
-        shape = np.array([p.shape for p in some])
-        longest, far = np.full(len(rows), -1.0), np.zeros((len(rows), 2), dtype=np.intp)
-        for i in range(int(k)):
-            gap = np.linalg.norm(shape - shape[:, i:i + 1], axis=2)
-            more = np.flatnonzero(gap.max(axis=1) > longest)
-            longest[more] = gap[more].max(axis=1)
-            far[more] = np.column_stack([np.full(len(more), i), gap[more].argmax(axis=1)])
-        table.append((rows, joints, far, shape))
-    return table
+    return [_kind(rig, np.flatnonzero(counts == k)) for k in np.unique(counts)]
+
+
+def _kind(rig: Rig, rows: Ints) -> _Kind:
+    some = [rig.plates[r] for r in rows]
+    joints = np.array([[rig.index[j] for j in p.joints] for p in some], dtype=np.intp)
+    shape = np.array([p.shape for p in some])
+    longest, far = np.full(len(rows), -1.0), np.zeros((len(rows), 2), dtype=np.intp)
+    for i in range(shape.shape[1]):
+        gap = np.linalg.norm(shape - shape[:, i:i + 1], axis=2)
+        more = np.flatnonzero(gap.max(axis=1) > longest)
+        longest[more] = gap[more].max(axis=1)
+        far[more] = np.column_stack([np.full(len(more), i), gap[more].argmax(axis=1)])
+    # The farthest two come first, the others as they are.
+    rank = np.tile(np.arange(shape.shape[1]), (len(rows), 1))
+    np.put_along_axis(rank, far[:, :1], -2, axis=1)
+    np.put_along_axis(rank, far[:, 1:], -1, axis=1)
+    order = np.argsort(rank, axis=1)
+    joints = np.take_along_axis(joints, order, axis=1)
+    shape = np.take_along_axis(shape, order[..., None], axis=1)
+    v, w = shape - shape[:, :1], shape[:, 1] - shape[:, 0]
+    long = np.hypot(w[:, 0], w[:, 1])
+    v = v / (long**2)[:, None, None]
+    return _Kind(rows, joints, long, (v * w[:, None]).sum(axis=2),
+                 w[:, None, 0] * v[..., 1] - w[:, None, 1] * v[..., 0])
 
 
 def _departure(rig: Rig, x: Array, part: Plate | Rail | Plane) -> Array:
