@@ -61,7 +61,11 @@ def bends_of(rig: Rig) -> tuple[Bend, ...]:
     """
     rails = {r.joint: k for k, r in reversed(list(enumerate(rig.rails)))}
     ties = _ties(rig)
-    plates = [set(p.joints) for p in rig.plates]
+    plates_on: dict[str, list[set[str]]] = {}
+    for plate in rig.plates:
+        together = set(plate.joints)
+        for name in plate.joints:
+            plates_on.setdefault(name, []).append(together)
     found = []
     for joint in rig.joints:
         tied = ties.get(joint.name, [])
@@ -71,10 +75,10 @@ def bends_of(rig: Rig) -> tuple[Bend, ...]:
             found.append(Bend(rig.index[joint.name], rig.index[tied[0]], -1, rails[joint.name]))
             continue
         if rig.dim == 3:
-            found += _in_space(rig, joint.name, tied, plates)
+            found += _in_space(rig, joint.name, tied, plates_on.get(joint.name, []))
             continue
-        together = [p for p in plates if {joint.name, tied[0]} <= p]
-        second = next((t for t in tied[1:] if not any(t in p for p in together)), None)
+        shared = [p for p in plates_on.get(joint.name, ()) if tied[0] in p]
+        second = next((t for t in tied[1:] if not any(t in p for p in shared)), None)
         if second is not None:
             found.append(Bend(rig.index[joint.name], rig.index[tied[0]], rig.index[second]))
     return tuple(found)
