@@ -68,8 +68,8 @@ elbow = { parts = ["inner", "outer"], at = "elbow", axis = [0, -1, 0] }
 
 
 def rib(folder: Path) -> rp.Rig:
-    """A canopy's rib: all that it is named for lies in one plane, so no joint of its own has a
-    side that differs."""
+    """A canopy's rib: all that it is named for lies in one plane, so that sides of its own joints
+    differ only as seen from the tips of the hinges' axes."""
     (folder / "rib.toml").write_text(RIB, encoding="utf-8")
     return rp.load_rig(folder / "rib.toml")
 
@@ -150,7 +150,8 @@ def test_helpers_may_still_be_named(tmp_path: Path) -> None:
     found = rp.find_branches(rib(tmp_path), {"mast": 2.4})
     assert len(found) == 4
     assert len(found.pick(**{"elbow axis": "left"})) == 2
-    assert all("elbow axis:" in name for name in found.names)
+    assert sorted(found.names) == sorted(
+        f"pushed:{a} horn:{b}" for a in ("left", "right") for b in ("left", "right"))
     (tmp_path / "rib.toml").write_text(
         f'{RIB}[branches]\nup = {{ "elbow axis" = "left" }}\n', encoding="utf-8")
     named = rp.find_branches(rp.load_rig(tmp_path / "rib.toml"), {"mast": 2.4})

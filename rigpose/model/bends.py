@@ -85,20 +85,23 @@ def bends_of(rig: Rig) -> tuple[Bend, ...]:
 
 
 def _in_space(rig: Rig, joint: str, tied: list[str], plates: list[set[str]]) -> list[Bend]:
-    """To which side of the plane through its first three neighbours a joint lies; of a joint
-    that stays in a plane, to which side of its first two, seen from the tip of the normal."""
+    """To which side of the plane through its first three neighbours a joint lies (where one of
+    them is its hinge, through this axis and the other); of a joint that stays in a plane, to which
+    side of its first two, seen from the tip of the normal."""
     here = rig.index[joint]
     plane = next((k for k, p in enumerate(rig.planes) if joint in p.joints), -1)
     need = 2 if plane >= 0 else 3
-    chosen: list[str] = []
-    for other in tied:
-        if len(chosen) == need - 1 and any({joint, *chosen, other} <= p for p in plates):
-            continue  # all in one plate: that side can't differ
-        chosen.append(other)
-        if len(chosen) == need:
-            break
-    if len(chosen) < need:
+    if len(tied) < need:
         return []
+    chosen = tied[:need - 1]
+    # All in one plate: that side can't differ.
+    others = [t for t in tied[need - 1:] if not any({joint, *chosen, t} <= p for p in plates)]
+    if not others:
+        return []
+    # On the circle of a hinge a joint is seen from the tip of its axis: all else may lie flat.
+    axis = (t for t in others if t in rig.helper_joints and joint not in rig.helper_joints
+            and any({joint, t, c} <= p for p in plates for c in chosen))
+    chosen = [*chosen, next(axis, others[0])]
     a, b, *rest = (rig.index[c] for c in chosen)
     return [Bend(here, a, b, third=rest[0] if rest else -1, plane=plane)]
 
