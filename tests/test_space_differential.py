@@ -105,6 +105,11 @@ def test_rigs_with_a_block(first: int) -> None:
     all_compared("BLOCKS", range(first, first + 4), steps=1, count=60, share=0.7)
 
 
+def test_a_block_beside_a_group_that_reads_values_off() -> None:
+    """A sliding block's two rails are read off for their tie; the platform asks for neither."""
+    compared(random_space_case(1045, 3, random_space.EVERY), 60, 1045)
+
+
 def drawn_again(case: Case) -> bool:
     """Whether the rig was posed: then every pose is right, and the drawing is there."""
     c = conditions(case.rig, case.drives, case.targets)

@@ -117,7 +117,7 @@ def writes(step: Step) -> tuple[Point, ...]:
 
 POINTS_ONLY = frozenset({Given, Carry, Hang, Seat, Shift, Level, Fit, Swing, Ride})
 """Steps that neither read nor settle a value."""
-_WITHOUT_VALUES = POINTS_ONLY | {Cluster, Gauge}
+_WITHOUT_VALUES = POINTS_ONLY | {Gauge}
 
 
 def values_read(step: Step, eqs: Equations) -> set[int]:
@@ -141,7 +141,20 @@ def values_read(step: Step, eqs: Equations) -> set[int]:
         found |= {int(v) for v in eqs.ties[step.tie].nonzero()[0]} - {step.value}
     elif isinstance(step, Check):
         found |= _check_values(step, eqs)
+    elif isinstance(step, Cluster):
+        found |= _block_values(step, eqs)
     return found - {-1}
+
+
+def _block_values(step: Cluster, eqs: Equations) -> set[int]:
+    """Known values of the parts and ties behind a block's rows."""
+    names = {step.system.row_names[k] for k in step.rows}
+    found = {int(v) for part in (eqs.distances, eqs.lines, eqs.angles)
+             for name, v in zip(part.names, part.value, strict=True) if name in names}
+    for tie, row in zip(eqs.tie_names, eqs.ties, strict=True):
+        if tie in names:
+            found |= {int(v) for v in row.nonzero()[0]}
+    return found & step.system.drives
 
 
 def _curve_values(curve: Circle | Line | Sheet) -> set[int]:

@@ -91,7 +91,9 @@ def _block(step: Cluster, table: Table) -> Hung:
         x[:, at[j]] = np.broadcast_to(table.point(j), (eqs.dim, b, f)).reshape(eqs.dim, b * f).T
     values = np.full((b * f, len(eqs.values)), np.nan)
     for v in step.system.drives:
-        values[:, v] = np.broadcast_to(table.value(v), (b, f)).ravel()
+        # What another group reads off, none of the block's rows asks for.
+        if v in table.values or v in table.inputs.values:
+            values[:, v] = np.broadcast_to(table.value(v), (b, f)).ravel()
     goal = np.zeros_like(x)
     for (j, axis), given in table.inputs.targets.items():
         if j in at:
