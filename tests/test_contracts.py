@@ -17,6 +17,7 @@ import pytest
 from changed import Change, renamed, shuffled
 from numpy.typing import NDArray
 from random_rigs import ONE_BY_ONE, random_case
+from samples import MOST, Sample
 from scipy.spatial import cKDTree
 
 import rigpose as rp
@@ -29,27 +30,6 @@ SHOTS = sorted(p.name.removesuffix(".shot.toml") for p in RIGS.glob("*.shot.toml
                if rp.load_shot(p).rig.dim == 2)
 """Shots in the plane: those in space have contracts of their own."""
 SEEDS = [f"random {k}" for k in range(300, 306)]
-MOST = rp.Budget(poses=512)
-
-
-class Sample:
-    """A rig with the drives and targets of one pose, and its branches."""
-
-    def __init__(self, rig: rp.Rig, drives: Mapping[str, Array],
-                 targets: Mapping[str, Array]) -> None:
-        self.rig, self.drives, self.targets = rig, drives, targets
-        self.found = rp.find_branches(rig, drives, targets, budget=MOST)
-
-    @property
-    def poses(self) -> Array:
-        """``(n_branches, n_joints, 2)``."""
-        return self.found.positions[:, 0]
-
-    @property
-    def room(self) -> float:
-        """How far a place may be off when the numbers were rounded once: more near dead centres."""
-        margin = float(self.found.margin.min(initial=1.0))
-        return self.found.size * (1e-12 / margin if margin > 1e-6 else 1e-5)
 
 
 @cache

@@ -17,6 +17,7 @@ import pytest
 import random_space
 from changed import Change, renamed, shuffled
 from random_space import random_space_case
+from samples import MOST, Sample
 from scipy.spatial import cKDTree
 
 import rigpose as rp
@@ -26,33 +27,10 @@ from rigpose.motion.gauges import read_value
 
 RIGS = Path(__file__).parent.parent / "rigs"
 SHOTS = sorted(p.name.removesuffix(".shot.toml") for p in RIGS.glob("*.shot.toml")
-               if rp.load_shot(p).rig.dim == 3 and not p.name.startswith("beacon_lift"))
-"""Not the beacon lift: a leaf of it that lies folded back turns freely, so at one drive it has a
-continuum of poses beside its two branches, of which every search lists others."""
+               if rp.load_shot(p).rig.dim == 3)
 LARGE = ("letter_sorter", "market_canopy", "folding_gangway")
 QUICK = [pytest.param(n, marks=[pytest.mark.slow] if n in LARGE else []) for n in SHOTS]
 SEEDS = [*(f"ONE_BY_ONE {k}" for k in range(300, 305)), "PRUNED 310", "HINGED 320", "BLOCKS 330"]
-MOST = rp.Budget(poses=512)
-
-
-class Sample:
-    """A rig with the drives and targets of one pose, and its branches."""
-
-    def __init__(self, rig: rp.Rig, drives: Mapping[str, Array],
-                 targets: Mapping[str, Array]) -> None:
-        self.rig, self.drives, self.targets = rig, drives, targets
-        self.found = rp.find_branches(rig, drives, targets, budget=MOST)
-
-    @property
-    def poses(self) -> Array:
-        """``(n_branches, n_joints, 3)``."""
-        return self.found.positions[:, 0]
-
-    @property
-    def room(self) -> float:
-        """How far a place may be off when the numbers were rounded once: more near dead centres."""
-        margin = float(self.found.margin.min(initial=1.0))
-        return self.found.size * (1e-12 / margin if margin > 1e-6 else 1e-5)
 
 
 @cache

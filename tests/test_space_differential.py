@@ -129,7 +129,7 @@ def drawn_again(case: Case) -> bool:
 def test_rigs_on_a_grid(first: int) -> None:
     """Bars lie in line, balls touch, joints coincide: there too every answer is right."""
     posed = [drawn_again(lattice_space_case(seed, 1 + seed % 4))
-             for seed in range(first, first + 20) if seed != 55]
+             for seed in range(first, first + 20)]
     assert sum(posed) > 10
 
 

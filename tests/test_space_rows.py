@@ -23,8 +23,6 @@ from rigpose.motion.settle import pieces
 
 PIN = {"pin": True}
 COARSE, FINE = 41, 121
-DEAD_FRAMES = pytest.mark.filterwarnings("ignore:invalid value encountered in det")
-"""The judge warns where a plate has no pose: a test of its own, below, is marked for that."""
 
 
 def swept(case: Case, seed: int, count: int, back: bool = False) -> rp.Branches:
@@ -52,13 +50,11 @@ def rows_agree(case: Case, seed: int) -> int:
     return len(whole_rows(fine))
 
 
-@DEAD_FRAMES
 @pytest.mark.parametrize("seed", range(100, 116))
 def test_rows_do_not_depend_on_how_they_are_sampled(seed: int) -> None:
     rows_agree(random_space_case(seed, 3, MOVING), seed)
 
 
-@DEAD_FRAMES
 @pytest.mark.parametrize("seed", range(12))
 def test_rows_through_dead_centres_do_not_depend_on_how_they_are_sampled(seed: int) -> None:
     try:
@@ -67,7 +63,6 @@ def test_rows_through_dead_centres_do_not_depend_on_how_they_are_sampled(seed: i
         assert "still move" in str(refused)
 
 
-@DEAD_FRAMES
 def test_enough_rows_are_compared() -> None:
     assert sum(rows_agree(random_space_case(seed, 2, MOVING), seed) for seed in range(6)) > 6
 
@@ -94,7 +89,6 @@ def test_a_sweep_has_the_poses_of_its_frames(seed: int) -> None:
             assert apart.min(axis=0).max() < 1e-6 * found.size
 
 
-@DEAD_FRAMES
 @pytest.mark.slow
 def test_hundreds_of_sweeps() -> None:
     wrong = []
@@ -273,7 +267,6 @@ def test_a_baked_row_is_a_row_of_the_map(seed: int) -> None:
     assert np.abs(motion.positions[0] - start).max() < 1e-9 * motion.size
 
 
-@DEAD_FRAMES
 @pytest.mark.parametrize("seed", [215, 219])
 def test_a_shot_that_opens_has_a_span_and_the_poses_of_its_other_frames(seed: int) -> None:
     shot = shot_of(seed)

@@ -41,6 +41,7 @@ from rigpose.solve.plan import (
     Line,
     Meet,
     Orient,
+    Point,
     Ride,
     Seat,
     Shift,
@@ -88,10 +89,13 @@ def taker_of(step: Step, table: Table) -> Taker | None:
 def _by_arrays(step: Step, table: Table) -> Taker:
     """A step that has no plain form, run on arrays of one pose."""
     read, made = sorted(reads(step)), writes(step)
+    levels: dict[Point | tuple[str, int], int] = {
+        ("v", v): table.level_of["v", v] for v in table.values}
 
     def take(state: State) -> Choice | bool | None:
-        one = replace(table, points={}, made={}, maps=[], codes=[], alive=None, margin=None,
-                      turning=set(), careful=True)
+        one = replace(table, points={}, made={}, level_of=dict(levels), bounds={}, bound_level={},
+                      maps=[], codes=[], sines=[], sine_bounds=[], alive=None, margin=None,
+                      flagged=None, turning=set(), careful=True)
         for p in read:
             one.put(p, np.array(state.place[p]).reshape(-1, 1, 1), state.bound[p])
         run_steps((step,), one, None)
